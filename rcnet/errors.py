@@ -6,6 +6,7 @@
     │   ├── CircuitError     a circuit file, a netlist or a call describes no valid circuit
     │   └── ResultsError     a results file cannot be read, or is not about this circuit
     ├── UnsolvableError      the network has no unique solution
+    ├── UndecidedError       a measure does not exist for this network
     ├── SimulatorError       a simulator is missing, failed, or did something else than asked
     └── OutputError          a result cannot be written
 """
@@ -97,6 +98,10 @@ class ResultsError(InputError):
 
 class UnsolvableError(RcnetError):
     """The network has no unique solution, and the parts and nodes to blame are named."""
+
+
+class UndecidedError(RcnetError):
+    """A measure does not exist for this network (no such crossing, no dc gain), or cannot be computed yet."""
 
 
 class SimulatorError(RcnetError):

@@ -1,4 +1,4 @@
-"""What depends on the operating system: reading strangers' files, writing whole files, finding ngspice."""
+"""Files: strangers' ones read with care, our own written whole or not at all."""
 
 from __future__ import annotations
 
@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
 
-from .errors import InputError, OutputError
+from ..errors import InputError, OutputError
 
 # Limits on what is read, stated in the README. Text beyond the first is no circuit or netlist a person wrote;
 # results beyond the second do not fit the memory this tool promises to stay in.
@@ -31,12 +31,13 @@ def read_bytes(path: str | os.PathLike[str], limit: int = MAX_RESULTS_BYTES) -> 
         descriptor = os.open(name, flags)
     except (OSError, ValueError) as exc:
         raise InputError(_why_unreadable(exc), file=name, remedy=_remedy_unreadable(exc)) from exc
-    with os.fdopen(descriptor, "rb") as handle:
-        status = os.fstat(handle.fileno())
+    status = os.fstat(descriptor)
+    if not stat.S_ISREG(status.st_mode):
+        os.close(descriptor)
         if stat.S_ISDIR(status.st_mode):
             raise InputError("this is a folder, not a file.", file=name, remedy="Name a file inside it.")
-        if not stat.S_ISREG(status.st_mode):
-            raise InputError("this is a device, a pipe or a socket.", file=name, remedy="Only ordinary files are read.")
+        raise InputError("this is a device, a pipe or a socket.", file=name, remedy="Only ordinary files are read.")
+    with os.fdopen(descriptor, "rb") as handle:
         if status.st_size > limit:
             raise InputError(
                 f"the file has {status.st_size} bytes; at most {limit} are read.",

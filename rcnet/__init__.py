@@ -1,0 +1,99 @@
+"""rcnet: resistor-capacitor networks held to one exact answer.
+
+Everyday names
+  Network               a network built part by part; its methods answer for it
+  load                  read a circuit file or a netlist
+  check                 findings and verdicts
+  write_netlist, read_netlist, read_results, compare
+Building blocks
+  Circuit               a network with what is asked and claimed of it
+  Comparison, Curve, Curves, Finding
+Errors
+  RcnetError and its kinds, see `rcnet.errors`
+"""
+
+from __future__ import annotations
+
+import importlib
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from .api import compare, write_netlist
+    from .check import check
+    from .circuit import Circuit, Network
+    from .compare import Comparison
+    from .confirm import load
+    from .curves import Curve, Curves, read_results
+    from .errors import (
+        CircuitError,
+        InputError,
+        OutputError,
+        QuantityError,
+        RcnetError,
+        ResultsError,
+        SimulatorError,
+        UndecidedError,
+        UnsolvableError,
+    )
+    from .findings import Finding
+    from .netlist import read_netlist
+
+# Where each public name lives; a room is loaded when one of its names is first used.
+_HOMES = {
+    "Circuit": "circuit",
+    "CircuitError": "errors",
+    "Comparison": "compare",
+    "Curve": "curves",
+    "Curves": "curves",
+    "Finding": "findings",
+    "InputError": "errors",
+    "Network": "circuit",
+    "OutputError": "errors",
+    "QuantityError": "errors",
+    "RcnetError": "errors",
+    "ResultsError": "errors",
+    "SimulatorError": "errors",
+    "UndecidedError": "errors",
+    "UnsolvableError": "errors",
+    "check": "check",
+    "compare": "api",
+    "load": "confirm",
+    "read_netlist": "netlist",
+    "read_results": "curves",
+    "write_netlist": "api",
+}
+
+__all__ = [
+    "Circuit",
+    "CircuitError",
+    "Comparison",
+    "Curve",
+    "Curves",
+    "Finding",
+    "InputError",
+    "Network",
+    "OutputError",
+    "QuantityError",
+    "RcnetError",
+    "ResultsError",
+    "SimulatorError",
+    "UndecidedError",
+    "UnsolvableError",
+    "check",
+    "compare",
+    "load",
+    "read_netlist",
+    "read_results",
+    "write_netlist",
+]
+
+
+def __getattr__(name: str) -> Any:
+    home = _HOMES.get(name)
+    if home is None:
+        raise AttributeError(f"module 'rcnet' has no attribute {name!r}")
+    return getattr(importlib.import_module(f".{home}", __name__), name)
+
+
+def __dir__() -> list[str]:
+    return sorted([*globals(), *__all__])

@@ -1,0 +1,67 @@
+"""Checking one circuit: its findings and the verdicts on its claims."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+from .circuit import Circuit, Network, Place
+from .claims import ClaimResult, Verdict, judge, overall
+from .findings import Finding, findings
+from .netlist import network_of
+from .values import format_quantity
+
+
+@dataclass(frozen=True)
+class Check:
+    """What a check found. verdict: of all claims, and `fails` wherever a finding is an error."""
+
+    circuit: Circuit
+    findings: tuple[Finding, ...]
+    claims: tuple[ClaimResult, ...]
+
+    @cached_property
+    def errors(self) -> tuple[Finding, ...]:
+        """The findings of severity `error`."""
+        return tuple(finding for finding in self.findings if finding.severity == "error")
+
+    @cached_property
+    def warnings(self) -> tuple[Finding, ...]:
+        """The findings of severity `warning`."""
+        return tuple(finding for finding in self.findings if finding.severity == "warning")
+
+    @property
+    def verdict(self) -> Verdict:
+        """`holds`, `fails` or `undecided`."""
+        return "fails" if self.errors else overall(self.claims)
+
+    def passes(self, *, strict: bool = False) -> bool:
+        """True if every claim holds and nothing is an error (nor, where strict, a warning)."""
+        return self.verdict == "holds" and not (strict and self.warnings)
+
+
+def check(circuit: Circuit | Network) -> Check:
+    """Findings and verdicts of a circuit. Nothing is written and no simulator is asked."""
+    whole = network_of(circuit)
+    results = judge(whole)
+    found = [*findings(whole), *(remark for result in results for remark in _about_hand(whole, result))]
+    return Check(whole, tuple(sorted(found, key=lambda f: ("ewn".index(f.severity[0]), f.line or 0))), results)
+
+
+def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
+    """A warning where the hand formula leads to another verdict than the network does."""
+    claim = result.claim
+    place = claim.place or Place(circuit.file or circuit.name, None)
+    if result.hand_why is not None:
+        message = f"{claim.says!r}: the hand formula gives no number: {result.hand_why}"
+        return [Finding("hand-fails", "warning", message, place.file, place.line, "Mend the formula.", place.text)]
+    if not result.hand_misleads:
+        return []
+    assert result.hand is not None and result.exact is not None
+    unit = claim.measure.unit
+    message = (
+        f"{claim.says!r}: by hand {format_quantity(result.hand, unit)}, in the real network "
+        f"{format_quantity(result.exact, unit)}."
+    )
+    remedy = "Trust the exact value; the formula leaves out something this network does (often one stage loading another)."
+    return [Finding("hand-misleads", "warning", message, place.file, place.line, remedy, place.text)]

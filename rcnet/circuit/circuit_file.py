@@ -1,0 +1,533 @@
+"""The circuit file: a TOML text read into a Circuit, every mistake reported with its line."""
+
+from __future__ import annotations
+
+import difflib
+import math
+import re
+import tomllib
+from collections.abc import Iterable, Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+from ..errors import CircuitError, Problem, RcnetError
+from ..system.files import read_text
+from ..values import Expression, parse_expression, parse_quantity
+from .circuit import Analyses, Bound, Circuit, Claim, Conditions, Place, Sweep, TransientRun
+from .drive import parse_drive
+from .ladder import parse_part
+from .measure_table import MeasureSpec, measure_spec, parse_options
+from .network import GROUND, Network, check_node
+from .toml_lines import Path as KeyPath
+from .toml_lines import line_table
+
+SUFFIX = ".rc.toml"
+MAX_FILE_BYTES = 16 * 1024 * 1024
+MAX_PROBLEMS = 50
+
+_TOP = ("title", "output", "parts", "ladder", "sources", "analysis", "conditions", "claims")
+_CLAIM = ("says", "measure", "of", "equals", "within", "at_least", "at_most", "between", "hand", "over")
+
+
+def load_circuit_file(path: str | Path) -> Circuit:
+    """Read a circuit file. Raises InputError, or CircuitError carrying every mistake found."""
+    return parse_circuit_file(read_text(path, MAX_FILE_BYTES), str(path))
+
+
+def circuit_name(path: str | Path) -> str:
+    """The file's name without its suffixes: `float-gauge.rc.toml` is `float-gauge`."""
+    name = Path(path).name
+    return name[: -len(SUFFIX)] if name.endswith(SUFFIX) and name != SUFFIX else Path(name).stem or name
+
+
+def parse_circuit_file(text: str, file: str) -> Circuit:
+    """A circuit file given as text; `file` is its name in messages. Raises CircuitError with every mistake."""
+    if not text.strip():
+        raise CircuitError(
+            "the file is empty.", file=file, remedy="Copy a starter with `rcnet new` and edit it."
+        )
+    try:
+        table = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as exc:
+        raise _syntax_error(exc, text, file) from exc
+    except RecursionError as exc:
+        raise CircuitError("the file nests too deeply.", file=file, remedy="Flatten it.") from exc
+    return _Reader(table, text, file).circuit()
+
+
+def _syntax_error(exc: tomllib.TOMLDecodeError, text: str, file: str) -> CircuitError:
+    found = re.search(r"\(at line (\d+), column (\d+)\)", str(exc))
+    line = int(found[1]) if found else len(text.splitlines())
+    why = re.sub(r"\s*\(at .*\)$", "", str(exc))
+    return CircuitError(
+        f"this is not valid TOML: {why[:1].lower()}{why[1:]}.", file=file, line=line, remedy="Mend this line."
+    )
+
+
+class _Reader:
+    """Reads one file's tables, collecting problems instead of stopping at the first."""
+
+    def __init__(self, table: dict[str, Any], text: str, file: str) -> None:
+        self.table, self.file = table, file
+        self.source_lines = text.splitlines()
+        self.lines = line_table(text)
+        self.problems: list[Problem] = []
+        title = table.get("title", "")
+        self.network = Network(title if isinstance(title, str) else "")
+        self.places: dict[str, Place] = {}
+        self.failed: set[str] = set()  # parts that could not be read: no follow-up complaints about them
+
+    # -- places and problems
+
+    def line(self, *path: str | int) -> int | None:
+        """The line of a key, or of the nearest table around it."""
+        for depth in range(len(path), -1, -1):
+            if (line := self.lines.get(path[:depth])) is not None:
+                return line if depth or not path else None
+        return None
+
+    def complain(self, path: KeyPath, message: str, remedy: str) -> None:
+        self.problems.append(Problem(message, self.file, self.line(*path), remedy))
+
+    @contextmanager
+    def catching(self, *path: str | int, also: str | None = None) -> Iterator[None]:
+        try:
+            yield
+        except RcnetError as exc:
+            placed = exc.at(self.file, self.line(*path))
+            self.problems.extend(placed.problems)
+            if also is not None:
+                self.failed.add(also)
+
+    def known(self, table: Mapping[str, Any], allowed: Iterable[str], *path: str | int) -> None:
+        allowed = tuple(allowed)
+        for key in table:
+            if key not in allowed:
+                near = difflib.get_close_matches(key, allowed, n=1)
+                hint = f"Did you mean {near[0]!r}?" if near else f"Known here: {', '.join(allowed)}."
+                self.complain((*path, key), f"unknown key {key!r}.", hint)
+
+    def sub(self, key: str) -> dict[str, Any]:
+        """A table of that name; {} where there is none."""
+        value = self.table.get(key, {})
+        if isinstance(value, dict):
+            return value
+        self.complain((key,), f"{key!r} is {value!r}, not a table.", f"Write it as [{key}].")
+        return {}
+
+    # -- the whole
+
+    def circuit(self) -> Circuit:
+        self.known(self.table, _TOP)
+        if not isinstance(self.table.get("title", ""), str):
+            self.complain(("title",), "the title is not text.", 'Write title = "...".')
+        self.parts()
+        self.ladders()
+        self.sources()
+        self.sensed()
+        output = self.output()
+        self.grounded()
+        analyses = self.analyses()
+        conditions = self.conditions()
+        claims = self.claims(output)
+        if self.problems:
+            raise CircuitError(problems=self.ordered())
+        return Circuit(
+            self.network,
+            circuit_name(self.file),
+            self.file,
+            "circuit file",
+            output,
+            analyses,
+            conditions,
+            claims,
+            self.places,
+            lines=tuple(self.source_lines),
+        )
+
+    def ordered(self) -> list[Problem]:
+        found = sorted(self.problems, key=lambda problem: problem.line or 0)
+        if len(found) > MAX_PROBLEMS:
+            more = len(found) - MAX_PROBLEMS
+            found = found[:MAX_PROBLEMS] + [Problem(f"and {more} more problems.", self.file)]
+        return found
+
+    # -- the network
+
+    def place(self, name: str, *path: str | int) -> None:
+        line = self.line(*path)
+        text = self.source_lines[line - 1] if line is not None and line <= len(self.source_lines) else ""
+        self.places[name] = Place(self.file, line, text)
+
+    def parts(self) -> None:
+        for name, text in self.sub("parts").items():
+            with self.catching("parts", name, also=name):
+                if not isinstance(text, str):
+                    raise CircuitError(
+                        f"{name} is {text!r}, not text.", remedy=f'Write {name} = "node node value".'
+                    )
+                self.network.add_part(parse_part(name, text))
+                self.place(name, "parts", name)
+
+    def ladders(self) -> None:
+        value = self.table.get("ladder")
+        if value is None:
+            return
+        tables: list[tuple[KeyPath, Any]] = [(("ladder",), value)]
+        if isinstance(value, list):
+            tables = [(("ladder", number), item) for number, item in enumerate(value)]
+        for path, table in tables:
+            if not isinstance(table, dict):
+                self.complain(path, f"the ladder is {table!r}, not a table.", "Write it as [ladder].")
+                continue
+            self.known(table, ("path", "sections"), *path)
+            with self.catching(*path, "sections"):
+                self.ladder(path, table)
+
+    def ladder(self, path: KeyPath, table: dict[str, Any]) -> None:
+        ends = table.get("path", "").split("->") if isinstance(table.get("path"), str) else []
+        ends = [end.strip() for end in ends]
+        if len(ends) != 2 or not all(ends):
+            self.complain(
+                (*path, "path"), f"the ladder's path is {table.get('path')!r}.", 'Write path = "in -> out".'
+            )
+            return
+        sections = table.get("sections")
+        if not isinstance(sections, list) or not all(isinstance(text, str) for text in sections):
+            self.complain(
+                (*path, "sections"), "the ladder's sections are no list of texts.", 'Write ["series R1 1k"].'
+            )
+            return
+        for part in self.network.ladder_parts(ends[0], ends[1], self.readable(path, sections)):
+            line = self.section_line(path, part.name)
+            with self.catching(*path, "sections", also=part.name):
+                try:
+                    self.network.add_part(part)
+                except RcnetError as exc:
+                    raise exc.at(self.file, line) from exc
+                self.places[part.name] = Place(self.file, line, self.source_lines[line - 1] if line else "")
+
+    def readable(self, path: KeyPath, sections: list[str]) -> list[str]:
+        """The sections that can be read; a complaint about each other one, on its own line."""
+        from .ladder import parse_section
+
+        good = []
+        for text in sections:
+            try:
+                parse_section(text)
+                good.append(text)
+            except RcnetError as exc:
+                words = text.split()
+                line = self.section_line(path, words[1]) if len(words) > 1 else self.line(*path, "sections")
+                self.problems.extend(exc.at(self.file, line).problems)
+                self.failed.update(words[1:2])
+        return good
+
+    def section_line(self, path: KeyPath, name: str) -> int | None:
+        start = self.line(*path, "sections") or 1
+        pattern = re.compile(rf"""["'][^"']*\b{re.escape(name)}(?![\w.])""")
+        for number in range(start, len(self.source_lines) + 1):
+            if pattern.search(self.source_lines[number - 1]):
+                return number
+        return start
+
+    def sources(self) -> None:
+        tables = self.sub("sources")
+        if not tables and not self.problems:
+            self.complain(("sources",), "the circuit has no source.", "Add one, as [sources.Vin].")
+        for name, drive in tables.items():
+            with self.catching("sources", name, also=name):
+                if not isinstance(drive, dict):
+                    raise CircuitError(
+                        f"the source {name} is {drive!r}.", remedy=f"Write it as [sources.{name}]."
+                    )
+                self.source(name, drive)
+
+    def source(self, name: str, drive: dict[str, Any]) -> None:
+        nodes = drive.get("nodes")
+        if not isinstance(nodes, str) or len(nodes.split()) != 2:
+            raise CircuitError(f"{name}: nodes is {nodes!r}.", remedy='Write nodes = "in 0".').at(
+                self.file, self.line("sources", name, "nodes")
+            )
+        a, b = nodes.split()
+        rest = {key: value for key, value in drive.items() if key != "nodes"}
+        # A wrong key gets its own line: the whole is read once more without it to find what else is wrong.
+        for key in rest:
+            with self.catching("sources", name, key, also=name):
+                parse_drive(name, (a, b), {key: rest[key]})
+        if name not in self.failed:
+            self.network.add_source(parse_drive(name, (a, b), rest))
+            self.place(name, "sources", name)
+
+    def sensed(self) -> None:
+        for part in list(self.network.parts):
+            if part.senses is not None and part.senses not in self.failed:
+                with self.catching("parts", part.name):
+                    self.network.sensed_by(self.network.part_index(part.name))
+
+    def output(self) -> tuple[str, ...]:
+        value = self.table.get("output")
+        if value is None:
+            return ("out",) if self.network.has_node("out") else ()
+        nodes: tuple[str, ...] = ()
+        with self.catching("output"):
+            nodes = self.node_or_pair(value, "output")
+        return nodes
+
+    def node_or_pair(self, value: Any, what: str) -> tuple[str, ...]:
+        words = value.split() if isinstance(value, str) else []
+        if len(words) not in (1, 2):
+            raise CircuitError(
+                f"{what} is {value!r}.", remedy='Name one node, as "out", or a pair, as "a b".'
+            )
+        for word in words:
+            check_node(word)
+            # A part that could not be read may have been the one to touch the node: then its own message is
+            # enough.
+            if not self.network.has_node(word) and not self.failed:
+                self.network.node_index(word)
+        return tuple(words) if len(words) == 1 or words[1] != GROUND else (words[0],)
+
+    def grounded(self) -> None:
+        if self.failed or not len(self.network):
+            return
+        if not (self.network.arrays().nodes == 0).any():
+            self.complain(("parts",), "nothing is connected to ground.", "Call one node 0.")
+
+    # -- what is asked
+
+    def analyses(self) -> Analyses:
+        table = self.sub("analysis")
+        self.known(table, ("ac", "transient", "noise", "operating_point"), "analysis")
+        result = Analyses()
+        if "ac" in table:
+            with self.catching("analysis", "ac"):
+                result = replace(result, ac=_sweep("ac", table["ac"], 20))
+        if "noise" in table:
+            with self.catching("analysis", "noise"):
+                result = replace(result, noise=_sweep("noise", table["noise"], 10))
+        if "transient" in table:
+            with self.catching("analysis", "transient"):
+                result = replace(result, transient=_transient(table["transient"]))
+        point = table.get("operating_point", False)
+        if not isinstance(point, bool):
+            self.complain(
+                ("analysis", "operating_point"), f"operating_point is {point!r}.", "Write true or false."
+            )
+        return replace(result, operating_point=point is True)
+
+    def conditions(self) -> Conditions:
+        table = self.sub("conditions")
+        self.known(table, ("temperature",), "conditions")
+        result = Conditions()
+        if "temperature" in table:
+            with self.catching("conditions", "temperature"):
+                result = _temperature(table["temperature"])
+        return result
+
+    # -- claims
+
+    def claims(self, output: tuple[str, ...]) -> tuple[Claim, ...]:
+        tables = self.table.get("claims", [])
+        if not isinstance(tables, list) or not all(isinstance(table, dict) for table in tables):
+            self.complain(
+                ("claims",), "claims are not written as tables.", "Begin each claim with [[claims]]."
+            )
+            return ()
+        claims = []
+        for number, table in enumerate(tables):
+            with self.catching("claims", number):
+                if (claim := self.claim(number, table, output)) is not None:
+                    claims.append(claim)
+        return tuple(claims)
+
+    def claim(self, number: int, table: dict[str, Any], output: tuple[str, ...]) -> Claim | None:
+        before = len(self.problems)
+        path = ("claims", number)
+        spec = None
+        with self.catching(*path, "measure"):
+            if "measure" not in table:
+                raise CircuitError("the claim names no measure.", remedy='Add measure = "cutoff" or another.')
+            spec = measure_spec(table["measure"])
+        if spec is None:
+            return None
+        self.known(table, (*_CLAIM, *spec.needs, *spec.may), *path)
+        options: dict[str, float | str] = {}
+        for key in (*spec.needs, *spec.may):
+            with self.catching(*path, key):
+                options |= self.option(spec, key, table)
+        of = output
+        if "of" in table:
+            with self.catching(*path, "of"):
+                of = self.node_or_pair(table["of"], "of")
+        elif not output and "part" not in options and not self.failed:
+            self.complain(
+                path, "the claim is about no node.", 'Add of = "out", or output = "out" at the top.'
+            )
+        bound, hand = None, None
+        with self.catching(*path):
+            bound = _bound(spec, table)
+        if "hand" in table:
+            with self.catching(*path, "hand"):
+                hand = self.hand(table["hand"])
+        over = table.get("over")
+        if over not in (None, "tolerance"):
+            self.complain((*path, "over"), f"over is {over!r}.", 'Write over = "tolerance", or leave it out.')
+        says = table.get("says", "")
+        if not isinstance(says, str):
+            self.complain((*path, "says"), f"says is {says!r}, not text.", 'Write says = "...".')
+        if len(self.problems) > before or bound is None:
+            return None
+        line = self.line(*path)
+        text = self.source_lines[line - 1] if line else ""
+        place = Place(self.file, line, text)
+        return Claim(
+            says or _plain(spec, options, bound), spec, of, options, bound, hand, over is not None, place
+        )
+
+    def option(self, spec: MeasureSpec, key: str, table: dict[str, Any]) -> dict[str, float | str]:
+        if key not in table:
+            if key in spec.needs:
+                raise CircuitError(f"{spec.name} needs {key!r}.", remedy=f"Add {key} = ... to the claim.")
+            return {}
+        only = replace(spec, needs=(key,), may=())
+        options = parse_options(only, {key: table[key]})
+        if key == "part" and options["part"] not in self.failed:
+            self.network.part(str(options["part"]))
+        return options
+
+    def hand(self, text: Any) -> Expression:
+        if not isinstance(text, str):
+            raise CircuitError(f"hand is {text!r}, not text.", remedy='Write hand = "1/(2*pi*R1*C1)".')
+        formula = parse_expression(text)
+        for name in sorted(formula.names - {"T"} - self.failed):
+            self.network.part(name)
+        return formula
+
+
+def _plain(spec: MeasureSpec, options: Mapping[str, float | str], bound: Bound) -> str:
+    return f"{spec.name} {bound.text}"
+
+
+def _bound(spec: MeasureSpec, table: Mapping[str, Any]) -> Bound:
+    forms = [key for key in ("equals", "at_least", "at_most", "between") if key in table]
+    if len(forms) != 1:
+        given = " and ".join(forms) or "none of them"
+        raise CircuitError(
+            f"the claim has {given}.",
+            remedy="Give exactly one of equals (with within), at_least, at_most, between.",
+        )
+    form = forms[0]
+    if "within" in table and form != "equals":
+        raise CircuitError(f"within does not go with {form}.", remedy="Use within with equals only.")
+    if form == "equals":
+        return _equals(spec, table)
+    if form == "between":
+        pair = table["between"]
+        if not isinstance(pair, list) or len(pair) != 2:
+            raise CircuitError(f"between is {pair!r}.", remedy="Write between = [low, high].")
+        low, high = (parse_quantity(value, spec.unit, "between") for value in pair)
+        if not low <= high:
+            raise CircuitError(
+                f"between runs from {pair[0]!r} down to {pair[1]!r}.", remedy="Put the lower one first."
+            )
+        return Bound(low, high, f"between {pair[0]} and {pair[1]}")
+    value = parse_quantity(table[form], spec.unit, form)
+    if form == "at_least":
+        return Bound(value, math.inf, f"at least {table[form]}")
+    return Bound(-math.inf, value, f"at most {table[form]}")
+
+
+def _equals(spec: MeasureSpec, table: Mapping[str, Any]) -> Bound:
+    if "within" not in table:
+        raise CircuitError(
+            "equals stands without within.", remedy='Say how close is close enough, as within = "1 %".'
+        )
+    target, within = parse_quantity(table["equals"], spec.unit, "equals"), table["within"]
+    if isinstance(within, str) and within.strip().endswith("%"):
+        spread = abs(target) * parse_quantity(within, "%", "within") / 100
+    else:
+        spread = parse_quantity(within, spec.unit, "within")
+    if not (spread >= 0 and math.isfinite(target)):
+        raise CircuitError(
+            f"within is {within!r} around {table['equals']!r}.", remedy="Give zero or more, finite."
+        )
+    return Bound(target - spread, target + spread, f"{table['equals']} ± {within}")
+
+
+def _sweep(name: str, table: Any, per_decade: int) -> Sweep:
+    if not isinstance(table, dict):
+        raise CircuitError(f"{name} is {table!r}.", remedy=f'Write {name} = {{ from = "10", to = "1 MHz" }}.')
+    for key in table:
+        if key not in ("from", "to", "per_decade"):
+            raise CircuitError(f"{name}: unknown key {key!r}.", remedy="Known: from, to, per_decade.")
+    for key in ("from", "to"):
+        if key not in table:
+            raise CircuitError(f"{name}: {key!r} is missing.", remedy=f'Add {key} = "1 kHz" or the like.')
+    start, stop = (parse_quantity(table[key], "Hz", f"{name}: {key}") for key in ("from", "to"))
+    points = table.get("per_decade", per_decade)
+    if not isinstance(points, int) or isinstance(points, bool) or not 1 <= points <= 10_000:
+        raise CircuitError(
+            f"{name}: per_decade is {points!r}.", remedy="Give a whole number from 1 to 10000."
+        )
+    return checked_sweep(Sweep(start, stop, points), name)
+
+
+def checked_sweep(sweep: Sweep, name: str) -> Sweep:
+    """The sweep, if it has at least one step; ngspice never ends on one that rounds to none. Raises CircuitError."""
+    if not (0 < sweep.start < sweep.stop < math.inf):
+        raise CircuitError(
+            f"{name} runs from {sweep.start!r} Hz to {sweep.stop!r} Hz.",
+            remedy="Start above zero and end higher than the start.",
+        )
+    steps = math.log10(sweep.stop / sweep.start) * sweep.points
+    if math.floor(steps) < 1:
+        raise CircuitError(
+            f"{name} covers less than one step between {sweep.start!r} Hz and {sweep.stop!r} Hz.",
+            remedy="Widen it, or raise the points per decade.",
+        )
+    if steps > 1_000_000:
+        raise CircuitError(f"{name} has {steps:.0f} points.", remedy="Ask for at most a million.")
+    return sweep
+
+
+def _transient(table: Any) -> TransientRun:
+    if not isinstance(table, dict):
+        raise CircuitError(f"transient is {table!r}.", remedy='Write transient = { stop = "5 ms" }.')
+    for key in table:
+        if key not in ("stop", "step", "start", "max_step"):
+            raise CircuitError(
+                f"transient: unknown key {key!r}.", remedy="Known: stop, step, start, max_step."
+            )
+    if "stop" not in table:
+        raise CircuitError("transient: 'stop' is missing.", remedy='Add stop = "5 ms" or the like.')
+    read = {key: parse_quantity(value, "s", f"transient: {key}") for key, value in table.items()}
+    stop = read["stop"]
+    run = TransientRun(stop, read.get("step", stop / 500), read.get("start", 0.0), read.get("max_step"))
+    positive = [run.stop, run.step, *([run.max_step] if run.max_step is not None else [])]
+    if not all(0 < value < math.inf for value in positive) or not 0 <= run.start < run.stop:
+        raise CircuitError(
+            f"transient: {table!r} is no run over time.",
+            remedy="Let stop, step and max_step be above zero and start before stop.",
+        )
+    return run
+
+
+def _temperature(value: Any) -> Conditions:
+    if not isinstance(value, dict):
+        nominal = parse_quantity(value, "degC", "temperature")
+        limits = (nominal, nominal)
+    else:
+        if set(value) != {"from", "to"}:
+            raise CircuitError(f"temperature is {value!r}.", remedy="Write { from = -40, to = 85 }.")
+        limits = (
+            parse_quantity(value["from"], "degC", "temperature: from"),
+            parse_quantity(value["to"], "degC", "temperature: to"),
+        )
+        # 27 degrees is what simulators take unless told (TNOM); outside the range its nearer end stands in.
+        nominal = min(max(27.0, limits[0]), limits[1])
+    if not (-273.15 < limits[0] <= limits[1] < 1000):
+        raise CircuitError(f"temperature is {value!r}.", remedy="Give degrees Celsius, the lower one first.")
+    return Conditions(nominal, *limits)

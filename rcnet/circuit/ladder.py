@@ -1,0 +1,94 @@
+"""Reading one part from text: a line of `[parts]` or a section of a ladder."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from ..errors import CircuitError, QuantityError
+from ..values import classify_extra, parse_quantity, parse_rating, parse_tempco, parse_tolerance
+from .parts import KINDS, Part
+
+
+@dataclass(frozen=True, slots=True)
+class Section:
+    """One section of a ladder: a part along the way (`series`) or from here to ground."""
+
+    series: bool
+    part: Part
+
+
+def parse_section(text: str) -> Section:
+    """Read `"series R2 10k 1%"` or `"shunt C2 4n7 5%"`. The part has no nodes yet. Raises CircuitError."""
+    words = text.split() if isinstance(text, str) else []
+    if len(words) < 3 or words[0] not in ("series", "shunt"):
+        raise CircuitError(
+            f"the section {text!r} cannot be read.", remedy='Write "series R2 10k 1%" or "shunt C2 4n7 5%".'
+        )
+    letter = words[1][0].upper()
+    if letter not in "RCL":
+        raise CircuitError(
+            f"the section {text!r} holds no R, C or L.", remedy="Only those stand in a ladder."
+        )
+    return Section(words[0] == "series", read_value_and_extras(words[1], letter, (), None, words[2:]))
+
+
+def parse_part(name: str, text: str) -> Part:
+    """Read what stands behind `NAME =` in `[parts]`: nodes, value, then extras in any order.
+
+    Extras are a tolerance, a rating and a tempco, of R, C and L only. E and G take four nodes; F and H take two nodes and the voltage source they sense. Raises CircuitError.
+    """
+    letter = name[:1].upper()
+    kind = KINDS.get(letter)
+    if kind is None or kind.is_source:
+        where = (
+            "Put sources under [sources.NAME]." if kind else f"Known first letters: {' '.join('RCLEGFH')}."
+        )
+        raise CircuitError(f"{name!r} cannot stand in [parts].", remedy=where)
+    words = text.split()
+    lead = kind.nodes + (1 if kind.senses_branch else 0)
+    if len(words) < lead + 1:
+        raise CircuitError(
+            f"{name} = {text!r} is too short for a {kind.name}.", remedy=f"Write {_pattern(letter)}."
+        )
+    senses = words[kind.nodes] if kind.senses_branch else None
+    return read_value_and_extras(name, letter, tuple(words[: kind.nodes]), senses, words[lead:])
+
+
+def _pattern(letter: str) -> str:
+    middle = {"E": "a b control_a control_b gain", "G": "a b control_a control_b siemens"}
+    middle |= {"F": "a b Vsense gain", "H": "a b Vsense ohms"}
+    return f'{letter}1 = "{middle.get(letter, "node node value [tolerance] [rating] [tempco]")}"'
+
+
+def read_value_and_extras(
+    name: str, letter: str, nodes: tuple[str, ...], senses: str | None, words: list[str]
+) -> Part:
+    """A part from the words behind its nodes. A unit may stand apart from its number (`4.7 kohm`)."""
+    kind = KINDS[letter]
+    value, rest = _leading_quantity(words, kind.unit, name)
+    tolerance, rating, tempco = None, None, None
+    for word in rest:
+        what = classify_extra(word) if kind.is_passive else "nothing"
+        if what == "tolerance" and tolerance is None:
+            tolerance = parse_tolerance(word, kind=letter, nominal=value)
+        elif what == "rating" and rating is None:
+            rating = parse_rating(word)
+        elif what == "tempco" and tempco is None:
+            tempco = parse_tempco(word)
+        else:
+            why = f"{name} has {word!r} twice over." if what in ("tolerance", "rating", "tempco") else ""
+            raise CircuitError(
+                why or f"{name}: {word!r} means nothing after the value.",
+                remedy="After the value may stand a tolerance (1%), a rating (0.1W) and a tempco (100ppm).",
+            )
+    return Part(name, letter, nodes, value, senses, tolerance, rating, tempco)
+
+
+def _leading_quantity(words: list[str], unit: str, name: str) -> tuple[float, list[str]]:
+    # "4.7 kohm" is one quantity in two words; "10k 5%" is a value and a tolerance. Longest reading first.
+    if len(words) > 1:
+        try:
+            return parse_quantity(f"{words[0]} {words[1]}", unit, name), words[2:]
+        except QuantityError:
+            pass
+    return parse_quantity(words[0], unit, name), words[1:]

@@ -1,0 +1,42 @@
+"""`rcnet compare`: a results file held against the exact curves."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from .options import FAILED, OK, file_argument, json_option, print_json, quiet_option
+
+
+@click.command("compare")
+@file_argument
+@click.argument("results", type=click.Path(), metavar="RESULTS")
+@json_option
+@quiet_option
+@click.option("-o", "--output", type=click.Path(), help="Write the comparison there as JSON.")
+def command(file: str, results: str, as_json: bool, quiet: bool, output: str | None) -> int:
+    """Hold a results file (.raw, .csv) against the exact curves: where they differ, and by how much.
+
+    \b
+    ngspice -b -r results.raw noise-filter.cir
+    rcnet compare noise-filter.rc.toml results.raw
+    """
+    from ..compare import compare
+    from ..confirm import load
+    from ..curves import read_results
+    from ..report.document import comparison_document, to_json
+    from ..report.terminal import console, show_comparison
+    from ..system.files import write_file
+
+    comparison = compare(load(file), read_results(results), who=Path(results).name)
+    document = comparison_document(comparison)
+    if output is not None:
+        write_file(output, to_json(document))
+    if as_json:
+        print_json(document)
+    else:
+        out = console()
+        out.print(comparison.circuit.name, style="bold")
+        show_comparison(comparison, out, quiet=quiet)
+    return OK if comparison.verdict == "agree" else FAILED

@@ -1,0 +1,312 @@
+"""The exact response at frequencies in hertz, its derivative, its limits, and port impedances."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping, Sequence
+
+import numpy as np
+import numpy.typing as npt
+
+from ..circuit import KINDS, Network, floating_nodes, stiff_loops
+from ..errors import CircuitError, UndecidedError
+from ..values import parse_quantity
+from . import nodal
+from .solver import Drive, Solution, require_solvable, solver_for
+from .span import span_of
+
+Complex = npt.NDArray[np.complex128]
+Float = npt.NDArray[np.float64]
+
+
+def response(
+    network: Network,
+    frequency: npt.ArrayLike,
+    of: str | Sequence[str],
+    *,
+    values: Mapping[str, npt.ArrayLike] | None = None,
+) -> Complex:
+    """The exact complex response, per unit of the source where one source carries ac, in volts otherwise.
+
+    frequency: Hz, (frequencies,), zero or more; zero means the limit
+    of: a node, a pair `"a b"` (the difference), or a list of these
+    values: other part values by name, each (samples,) or a number, base units
+    Returns (frequencies,), or (of, frequencies) for a list; with arrays in `values` the samples come before
+    the frequencies. Raises CircuitError for unknown names, UnsolvableError where there is no unique solution.
+    """
+    require_solvable(network)
+    points = _frequencies(frequency)
+    single = isinstance(of, str)
+    pairs = [node_pair(network, text) for text in ([of] if isinstance(of, str) else of)]
+    drive = ac_drive(network)
+    table, samples = _value_table(network, values)
+    answer = np.empty((len(pairs), max(samples, 1) * len(points)), dtype=np.complex128)
+    s = np.tile(_s(network, 2 * math.pi * points), max(samples, 1))
+    solver = solver_for(network)
+    wanted = sorted({node for pair in pairs for node in pair})
+    step = solver.block()
+    for start in range(0, len(s), step):
+        part = slice(start, start + step)
+        numbers = None if table is None else _columns(table, np.arange(len(s))[part] // len(points))
+        voltages = solver.solve(s[part], drive, wanted, numbers).voltages
+        for row, (a, b) in enumerate(pairs):
+            answer[row, part] = voltages[a] - voltages[b] if b else voltages[a]
+    shape = (len(pairs), samples, len(points)) if samples else (len(pairs), len(points))
+    answer = answer.reshape(shape)
+    return np.asarray(answer[0]) if single else answer
+
+
+def _frequencies(frequency: npt.ArrayLike) -> Float:
+    try:
+        points = np.atleast_1d(np.asarray(frequency, dtype=np.float64))
+    except (TypeError, ValueError) as exc:
+        raise CircuitError(f"the frequencies are not numbers: {exc}.", remedy="Give hertz.") from exc
+    if points.ndim != 1 or not np.isfinite(points).all() or (points < 0).any():
+        raise CircuitError(
+            "the frequencies are no list of finite numbers from zero up.", remedy="Give hertz."
+        )
+    return points
+
+
+def _value_table(
+    network: Network, values: Mapping[str, npt.ArrayLike] | None
+) -> tuple[npt.NDArray[np.float64] | None, int]:
+    """The part values as (parts, samples), and how many samples there are (0: no arrays were given)."""
+    if not values:
+        return None, 0
+    given: dict[int, Float] = {}
+    for name, value in values.items():
+        part = network.part(name)
+        kind = KINDS[part.kind]
+        numbers = _numbers(name, kind.unit, value)
+        if numbers.ndim > 1 or not np.isfinite(numbers).all() or (kind.is_passive and (numbers <= 0).any()):
+            raise CircuitError(
+                f"the samples of {name} are not finite and positive.", remedy="Give (samples,) numbers."
+            )
+        if kind.is_source:
+            raise CircuitError(
+                f"{name} is a source.", remedy="Sample the parts; a response is per unit of the source."
+            )
+        given[network.part_index(name)] = numbers
+    sizes = {numbers.size for numbers in given.values() if numbers.ndim == 1}
+    if len(sizes) > 1:
+        raise CircuitError(
+            f"the samples come in different numbers: {sorted(sizes)}.", remedy="Give as many for each."
+        )
+    samples = sizes.pop() if sizes else 0
+    table = np.repeat(network.arrays().values[:, None], max(samples, 1), axis=1)
+    for row, numbers in given.items():
+        table[row] = numbers
+    return table, samples
+
+
+def _numbers(name: str, unit: str, value: npt.ArrayLike) -> Float:
+    try:
+        given = parse_quantity(value, unit, name) if isinstance(value, str) else value
+        return np.asarray(given, dtype=np.float64)
+    except (TypeError, ValueError) as exc:
+        raise CircuitError(
+            f"the samples of {name} are not numbers: {exc}.", remedy="Give base units."
+        ) from exc
+
+
+def _columns(table: Float, which: npt.NDArray[np.int64]) -> Float:
+    return np.ascontiguousarray(table[:, 0]) if table.shape[1] == 1 else table[:, which]
+
+
+def _s(network: Network, omega: Float) -> Complex:
+    """The points j omega; zero becomes a point far below every corner where s = 0 has no solution."""
+    if omega.all() or dc_solvable(network):
+        return np.asarray(1j * omega, dtype=np.complex128)
+    return np.asarray(np.where(omega == 0, span_of(network).far_below, 1j * omega), dtype=np.complex128)
+
+
+def node_pair(network: Network, text: str) -> tuple[int, int]:
+    """The two node indices of `"a"` or `"a b"`; the second is ground where one node is named."""
+    words = text.split() if isinstance(text, str) else []
+    if len(words) not in (1, 2):
+        raise CircuitError(f"{text!r} names no node.", remedy='Name one node, as "out", or a pair, as "a b".')
+    first = network.node_index(words[0])
+    return first, network.node_index(words[1]) if len(words) == 2 else 0
+
+
+def driving_sources(network: Network) -> tuple[str, ...]:
+    """The names of the sources that carry ac."""
+    return tuple(name for name, source in network.sources.items() if source.ac)
+
+
+def ac_drive(network: Network) -> Drive:
+    """The ac drive: one source as unity, its phase too; several as they are. Raises CircuitError for none."""
+    driving = driving_sources(network)
+    if not driving:
+        raise CircuitError("no source carries ac, so there is no response.", remedy="Give one source ac = 1.")
+    sources = np.zeros(len(network), dtype=np.complex128)
+    for name in driving:
+        sources[network.part_index(name)] = 1.0 if len(driving) == 1 else network.sources[name].phasor
+    return Drive(sources)
+
+
+def dc_solvable(network: Network) -> bool:
+    """True if every node has a path to ground for dc and no voltage sources and inductors form a loop."""
+    return not floating_nodes(network, dc=True) and not stiff_loops(network, dc=True)
+
+
+def limit(network: Network, of: tuple[int, int], *, high: bool) -> float:
+    """The response's limit at zero (or infinite) frequency: a signed real number, zero where it vanishes.
+
+    Raises UndecidedError where the response grows without bound.
+    """
+    require_solvable(network)
+    drive, span = _real(ac_drive(network)), span_of(network)
+    if not high and dc_solvable(network):
+        return float(_settled_difference(network, np.zeros(1), drive, of)[0])
+    # On the real axis the elimination loses no digit however far out; two points tell the power of s.
+    factor = 1e8
+    far = span.far_above if high else span.far_below
+    points = np.array([far, far * factor if high else far / factor])
+    near, further = _settled_difference(network, points, drive, of).tolist()
+    if near == 0 or further == 0:
+        return 0.0
+    power = round(math.log(abs(further / near)) / math.log(factor))
+    if power > 0:
+        raise UndecidedError(
+            f"the response grows without bound towards {'infinite' if high else 'zero'} frequency."
+        )
+    return 0.0 if power < 0 else float(near)
+
+
+def _settled_difference(network: Network, s: Float, drive: Drive, of: tuple[int, int]) -> Float:
+    """The response at real s; zero where it is no more than what rounding leaves of equal voltages."""
+    solver = solver_for(network)
+    v = solver.solve(s, drive, of).voltages.real
+    difference = v[of[0]] - v[of[1]]
+    # Elimination gives every voltage its own digits, pivoting those of the greatest one.
+    size = np.abs(v[list(of)]).min(axis=0) if solver.eliminates else np.abs(v).max(axis=0)
+    return np.where(np.abs(difference) <= 64 * np.finfo(float).eps * size, 0.0, difference)
+
+
+def _real(drive: Drive) -> Drive:
+    if drive.sources.imag.any():
+        raise UndecidedError(
+            "several sources drive the circuit with different phases, so a limit is not a real number."
+        )
+    return drive
+
+
+# ---------------------------------------------------------------------- derivative and impedances
+
+
+def response_and_slope(network: Network, omega: Float, of: tuple[int, int]) -> tuple[Complex, Complex]:
+    """H(j omega) and dH/ds there, each (points,).
+
+    (G + sC) v = b gives (G + sC) v' = -C v: one more solution with the currents -C v put into the nodes.
+    """
+    require_solvable(network)
+    solver, drive, s = solver_for(network), ac_drive(network), _s(network, omega)
+    arrays = network.arrays()
+    solution = solver.solve(s, drive, currents_too=True)
+    v = solution.voltages
+    response = np.asarray(v[of[0]] - v[of[1]])
+    if (arrays.kinds == ord("L")).any() or s.real.any():
+        return response, _slope_of_all(network, s, solution, of)
+    currents = np.zeros_like(v)
+    for row in np.flatnonzero(arrays.kinds == ord("C")):
+        a, b = arrays.nodes[row, :2]
+        flow = arrays.values[row] * (v[a] - v[b])
+        currents[a] -= flow
+        currents[b] += flow
+    dead = Drive(np.zeros(len(network), dtype=np.complex128), currents)
+    slope = solver.solve(s, dead, of).voltages
+    return response, np.asarray(slope[of[0]] - slope[of[1]])
+
+
+def _slope_of_all(network: Network, s: Complex, solution: Solution, of: tuple[int, int]) -> Complex:
+    """dH/ds from the full equations (A0 + s A1) x = b: (A0 + s A1) x' = -A1 x."""
+    eqs = nodal.equations(network)
+    assert solution.source_currents is not None
+    branches = solution.source_currents[list(eqs.branch_of)]
+    unknowns = np.concatenate([solution.voltages[1:], branches])
+    target = np.zeros((eqs.size, len(s)), dtype=np.complex128)
+    np.add.at(target, eqs.rows, -eqs.slope[:, None] * unknowns[eqs.columns])
+    # -A1 x = (A0 x - b)/s: zero in a row where A0 and b are, though rounding leaves something of A1 x.
+    settled = np.ones(eqs.size, dtype=bool)
+    settled[eqs.rows[eqs.constant != 0]] = False
+    b = nodal.right_hand_side(network, eqs, ac_drive(network).sources, None, 1)
+    target[settled & ~b.any(axis=1)] = 0
+    slope = np.concatenate([np.zeros((1, len(s))), nodal.solve(eqs, s, target)])
+    return np.asarray(slope[of[0]] - slope[of[1]])
+
+
+def input_impedance(network: Network, omega: Float) -> Complex:
+    """The impedance the one driving source sees, ohm, (points,).
+
+    Raises CircuitError unless one source carries ac, UndecidedError where the impedance is infinite.
+    """
+    driving = driving_sources(network)
+    if len(driving) != 1:
+        raise CircuitError(
+            f"{len(driving)} sources carry ac, so there is no one driven port.",
+            remedy="Give ac to one source.",
+        )
+    require_solvable(network)
+    row = network.part_index(driving[0])
+    a, b = network.arrays().nodes[row, :2]
+
+    def at(s: Complex) -> Complex:
+        solution = solver_for(network).solve(s, ac_drive(network), currents_too=True)
+        difference = solution.voltages[a] - solution.voltages[b]
+        if network.sources[driving[0]].kind == "I":
+            return np.asarray(-difference)
+        assert solution.source_currents is not None
+        current = -solution.source_currents[row]
+        if (current == 0).any():
+            raise UndecidedError("no current flows at the driven port, so its impedance is infinite.")
+        return np.asarray(difference / current)
+
+    return _impedance(network, omega, at)
+
+
+def output_impedance(network: Network, omega: Float, of: tuple[int, int]) -> Complex:
+    """The impedance between two nodes with every independent source dead, ohm, (points,).
+
+    Raises UndecidedError where it is infinite.
+    """
+    require_solvable(network)
+
+    def at(s: Complex) -> Complex:
+        currents = np.zeros((network.arrays().node_count, len(s)), dtype=np.complex128)
+        currents[of[0]] += 1
+        currents[of[1]] -= 1
+        dead = Drive(np.zeros(len(network), dtype=np.complex128), currents)
+        v = solver_for(network).solve(s, dead, of).voltages
+        return np.asarray(v[of[0]] - v[of[1]])
+
+    return _impedance(network, omega, at)
+
+
+def _impedance(network: Network, omega: Float, at: Callable[[Complex], Complex]) -> Complex:
+    s = _s(network, omega)
+    if s.real.any():
+        far = span_of(network).far_below
+        near, further = np.abs(at(np.array([far, far * 1e-8], dtype=np.complex128)))
+        if further > 1e4 * near:
+            raise UndecidedError("the impedance is infinite at zero frequency.")
+    return at(s)
+
+
+def natural_frequencies(network: Network) -> Complex:
+    """The natural frequencies, rad/s, of a network of moderate size, by a dense eigenproblem.
+
+    Good to about eight digits; it serves to place sample points, not to report numbers.
+    """
+    eqs = nodal.equations(network)
+    if not 0 < eqs.size <= 300:
+        return np.empty(0, dtype=np.complex128)
+    constant, slope = eqs.dense(eqs.constant), eqs.dense(eqs.slope)
+    shift = span_of(network).low
+    try:
+        inverse = np.linalg.eigvals(np.linalg.solve(constant + shift * slope, slope))
+    except np.linalg.LinAlgError:
+        return np.empty(0, dtype=np.complex128)
+    kept = inverse[np.abs(inverse) > 1e-12 * max(np.abs(inverse).max(initial=0.0), 1e-300)]
+    return np.asarray(shift - 1 / kept, dtype=np.complex128)

@@ -1,0 +1,1 @@
+"""Reports: results shown to people and to programs; nothing is computed here."""

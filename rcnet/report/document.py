@@ -1,0 +1,142 @@
+"""The JSON documents: plain dictionaries with the keys that other people's scripts rely on."""
+
+from __future__ import annotations
+
+import json
+import math
+from typing import Any
+
+from ..check import Check
+from ..claims import ClaimResult
+from ..compare import Comparison, CurveComparison, Difference
+from ..confirm import Confirmation
+from ..curves import Curve
+from ..findings import Finding
+
+
+def to_json(document: Any) -> str:
+    """A document as text, always valid JSON: a number that JSON cannot hold becomes null."""
+    return json.dumps(_finite(document), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def _finite(value: Any) -> Any:
+    if isinstance(value, float):
+        return value if math.isfinite(value) else None
+    if isinstance(value, dict):
+        return {key: _finite(item) for key, item in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [_finite(item) for item in value]
+    return value
+
+
+def check_document(check: Check) -> dict[str, Any]:
+    """The document of `check` for one circuit."""
+    return {
+        "circuit": check.circuit.name,
+        "verdict": check.verdict,
+        "findings": [finding_document(finding) for finding in check.findings],
+        "claims": [claim_document(result) for result in check.claims],
+    }
+
+
+def finding_document(finding: Finding) -> dict[str, Any]:
+    """One finding."""
+    return {
+        "code": finding.code,
+        "severity": finding.severity,
+        "message": finding.message,
+        "file": finding.file,
+        "line": finding.line,
+        "remedy": finding.remedy,
+    }
+
+
+def claim_document(result: ClaimResult) -> dict[str, Any]:
+    """One claim with what came of it."""
+    return {
+        "says": result.claim.says,
+        "measure": result.claim.measure.name,
+        "of": " ".join(result.claim.of),
+        "unit": result.claim.measure.unit,
+        "exact": result.exact,
+        "hand": result.hand,
+        "low": result.low,
+        "high": result.high,
+        "method": result.method,
+        "margin": result.margin,
+        "verdict": result.verdict,
+        "why": result.why,
+    }
+
+
+def comparison_document(comparison: Comparison) -> dict[str, Any]:
+    """The document of `compare`, also `comparison.json`."""
+    return {
+        "circuit": comparison.circuit.name,
+        "second_opinion": comparison.second_opinion,
+        "verdict": comparison.verdict,
+        "curves": [_curve(curve) for curve in comparison.curves],
+        "not_compared": [
+            {"name": curve.name, "analysis": curve.analysis, "why": curve.why} for curve in comparison.uncompared
+        ],
+        "causes": [],
+    }
+
+
+def _curve(curve: CurveComparison) -> dict[str, Any]:
+    look = curve.fsv
+    return {
+        "name": curve.name,
+        "analysis": curve.analysis,
+        "points": curve.points,
+        "verdict": curve.verdict,
+        "worst": _worst(curve.worst),
+        "spans": [
+            {
+                "from": span.start,
+                "to": span.stop,
+                "worst_at": span.worst.at,
+                "db": span.worst.db,
+                "deg": span.worst.deg,
+                "relative": span.worst.relative,
+            }
+            for span in curve.spans
+        ],
+        "fsv": None if look is None else {"adm": look.adm, "fdm": look.fdm, "gdm": look.gdm, "grade": look.grade},
+    }
+
+
+def _worst(worst: Difference) -> dict[str, Any]:
+    return {
+        "at": worst.at,
+        "exact": _number(worst.exact),
+        "other": _number(worst.other),
+        "db": worst.db,
+        "deg": worst.deg,
+        "relative": worst.relative,
+        "allowed": worst.allowed,
+    }
+
+
+def _number(value: complex | float) -> Any:
+    return [value.real, value.imag] if isinstance(value, complex) else value
+
+
+def response_document(curves: list[Curve]) -> dict[str, Any]:
+    """The document of `response`: curves of one axis."""
+    values = {
+        curve.name: {"real": curve.values.real.tolist(), "imag": curve.values.imag.tolist()} for curve in curves
+    }
+    return {"frequency": curves[0].axis.tolist() if curves else [], "curves": values}
+
+
+def confirmation_document(done: Confirmation) -> dict[str, Any]:
+    """The document of `confirm` for one circuit: its check, its comparison, and where the files stand."""
+    return {
+        "circuit": done.check.circuit.name,
+        "verdict": "passes" if done.passes() else "fails",
+        "check": check_document(done.check),
+        "comparison": None if done.comparison is None else comparison_document(done.comparison),
+        "folder": None if done.folder is None else str(done.folder),
+        "files": list(done.files),
+    }

@@ -1,0 +1,1 @@
+"""What depends on the operating system, kept in one place."""
