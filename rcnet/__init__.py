@@ -15,6 +15,8 @@ Errors
 from __future__ import annotations
 
 import importlib
+import sys
+from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -22,7 +24,6 @@ if TYPE_CHECKING:
     from .check import check
     from .circuit import Circuit, Network
     from .compare import Comparison
-    from .confirm import load
     from .curves import Curve, Curves, read_results
     from .errors import (
         CircuitError,
@@ -36,6 +37,7 @@ if TYPE_CHECKING:
         UnsolvableError,
     )
     from .findings import Finding
+    from .loading import load
     from .netlist import read_netlist
 
 # Where each public name lives; a room is loaded when one of its names is first used.
@@ -57,7 +59,7 @@ _HOMES = {
     "UnsolvableError": "errors",
     "check": "check",
     "compare": "api",
-    "load": "confirm",
+    "load": "loading",
     "read_netlist": "netlist",
     "read_results": "curves",
     "write_netlist": "api",
@@ -88,12 +90,26 @@ __all__ = [
 ]
 
 
+class _Package(ModuleType):
+    """The package, in which a public function keeps its name from a room or a module called the same."""
+
+    def __setattr__(self, name: str, value: Any) -> None:
+        # Python puts rcnet/compare into the package as `compare` once anything has imported it.
+        if name not in _HOMES or not isinstance(value, ModuleType):
+            super().__setattr__(name, value)
+
+
+sys.modules[__name__].__class__ = _Package
+
+
 def __getattr__(name: str) -> Any:
     home = _HOMES.get(name)
     if home is None:
         raise AttributeError(f"module 'rcnet' has no attribute {name!r}")
-    return getattr(importlib.import_module(f".{home}", __name__), name)
+    value = getattr(importlib.import_module(f".{home}", __name__), name)
+    globals()[name] = value
+    return value
 
 
 def __dir__() -> list[str]:
-    return sorted([*globals(), *__all__])
+    return sorted({*globals(), *__all__})

@@ -14,11 +14,13 @@ from .netlist import network_of, parse_netlist
 from .system.files import write_file
 
 
-def write_netlist(circuit: Circuit | Network, path: str | os.PathLike[str], *, anyway: bool = False) -> Circuit:
+def write_netlist(
+    circuit: Circuit | Network, path: str | os.PathLike[str], *, anyway: bool = False
+) -> Circuit:
     """Check a circuit, write its sealed netlist to `path`, and return it as the netlist holds it.
 
-    anyway: write although a finding is an error; the seal then says so. Raises CircuitError for such a finding
-    otherwise, UnsolvableError, and OutputError where the file cannot be written.
+    anyway: write although a finding is an error; the seal then says so. Raises CircuitError for such a
+    finding otherwise, UnsolvableError, and OutputError where the file cannot be written.
     """
     written = sealed_netlist(circuit, anyway=anyway)
     write_file(path, written.text)

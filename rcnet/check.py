@@ -45,7 +45,9 @@ def check(circuit: Circuit | Network) -> Check:
     whole = network_of(circuit)
     results = judge(whole)
     found = [*findings(whole), *(remark for result in results for remark in _about_hand(whole, result))]
-    return Check(whole, tuple(sorted(found, key=lambda f: ("ewn".index(f.severity[0]), f.line or 0))), results)
+    return Check(
+        whole, tuple(sorted(found, key=lambda f: ("ewn".index(f.severity[0]), f.line or 0))), results
+    )
 
 
 def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
@@ -54,7 +56,9 @@ def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
     place = claim.place or Place(circuit.file or circuit.name, None)
     if result.hand_why is not None:
         message = f"{claim.says!r}: the hand formula gives no number: {result.hand_why}"
-        return [Finding("hand-fails", "warning", message, place.file, place.line, "Mend the formula.", place.text)]
+        return [
+            Finding("hand-fails", "warning", message, place.file, place.line, "Mend the formula.", place.text)
+        ]
     if not result.hand_misleads:
         return []
     assert result.hand is not None and result.exact is not None
@@ -63,5 +67,8 @@ def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
         f"{claim.says!r}: by hand {format_quantity(result.hand, unit)}, in the real network "
         f"{format_quantity(result.exact, unit)}."
     )
-    remedy = "Trust the exact value; the formula leaves out something this network does (often one stage loading another)."
+    remedy = (
+        "Trust the exact value; the formula leaves out something this network does "
+        "(often one stage loading another)."
+    )
     return [Finding("hand-misleads", "warning", message, place.file, place.line, remedy, place.text)]

@@ -2,18 +2,32 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Literal
 
 from .check import Check, check
-from .circuit import SUFFIX, Circuit, load_circuit_file
+from .circuit import Circuit
 from .compare import Comparison, compare
-from .curves import write_csv
-from .errors import RcnetError
+from .curves import Curves, write_csv
 from .handover import sealed_netlist, with_analyses
-from .netlist import Written, read_netlist
+from .loading import load
+from .netlist import Written
 from .opinion import LibraryRunner, Opinion, RunFailed, Which, ask
 from .system.files import make_folder, remove_file, write_file
+
+__all__ = ["RESULT_FILES", "Confirmation", "confirm", "forget", "load", "simulate"]
+
+RESULT_FILES = (
+    "netlist.cir",
+    "results.raw",
+    "simulator.log",
+    "read-back.csv",
+    "comparison.json",
+    "report.html",
+)
 
 
 @dataclass(frozen=True)
@@ -32,16 +46,21 @@ class Confirmation:
     folder: Path | None
     files: tuple[str, ...] = ()
 
+    def verdict(self, *, strict: bool = False) -> Literal["passes", "fails", "undecided"]:
+        """Of all that was done: `passes` where every claim holds and the second opinion, if any, agrees."""
+        agrees = self.comparison is None or self.comparison.verdict == "agree"
+        if self.written is None or not agrees or (strict and self.check.warnings):
+            return "fails"
+        words: dict[str, Literal["passes", "fails", "undecided"]] = {
+            "holds": "passes",
+            "fails": "fails",
+            "undecided": "undecided",
+        }
+        return words[self.check.verdict]
+
     def passes(self, *, strict: bool = False) -> bool:
         """True if the circuit checks out and the second opinion agrees (or none was wanted)."""
-        agrees = self.comparison is None or self.comparison.verdict == "agree"
-        return self.check.passes(strict=strict) and self.written is not None and agrees
-
-
-def load(path: str | Path) -> Circuit:
-    """Read a circuit file (`*.rc.toml`, or any `.toml`) or a SPICE netlist. Raises InputError or CircuitError."""
-    name = str(path)
-    return load_circuit_file(path) if name.endswith((SUFFIX, ".toml")) else read_netlist(path)
+        return self.verdict(strict=strict) == "passes"
 
 
 def confirm(
@@ -56,91 +75,97 @@ def confirm(
     """Check a circuit, write its netlist, get a second opinion, compare; keep the files in `folder`.
 
     Files of an earlier run that this one does not write again are removed, so that a folder never tells two
-    stories. Raises RcnetError: UnsolvableError, SimulatorError (the netlist and the log are kept), OutputError.
+    stories. Raises RcnetError: UnsolvableError, SimulatorError (netlist and log are kept), OutputError.
     """
     whole = with_analyses(circuit)
-    done = check(whole)
-    kept = _Folder(folder)
-    if done.errors and not anyway:
-        kept.close()
-        return Confirmation(done, None, None, None, None)
-    written = sealed_netlist(whole, done, anyway=anyway)
-    kept.keep("netlist.cir", written.text)
+    with _kept_in(folder) as kept:
+        done = check(whole)
+        if done.errors and not anyway:
+            return Confirmation(done, None, None, None, None)
+        written = sealed_netlist(whole, done, anyway=anyway)
+        kept.keep("netlist.cir", written.text)
+        opinion = _asked(written, kept, which, timeout, runner)
+        comparison = None
+        if opinion is not None:
+            from .report.document import comparison_document, to_json
+
+            comparison = compare(whole, opinion.curves, written.names, opinion.who)
+            kept.keep("comparison.json", to_json(comparison_document(comparison)))
+        return Confirmation(done, written, opinion, comparison, kept.path, tuple(kept.names))
+
+
+def simulate(
+    circuit: Circuit, folder: Path, *, which: Which, timeout: float = 60.0, anyway: bool = False
+) -> Confirmation:
+    """Check a circuit, write its netlist, have a simulator run it, keep its results; nothing is compared.
+
+    Raises as `confirm` does.
+    """
+    whole = with_analyses(circuit)
+    with _kept_in(folder) as kept:
+        done = check(whole)
+        if done.errors and not anyway:
+            return Confirmation(done, None, None, None, None)
+        written = sealed_netlist(whole, done, anyway=anyway)
+        kept.keep("netlist.cir", written.text)
+        opinion = _asked(written, kept, which, timeout, None)
+        return Confirmation(done, written, opinion, None, kept.path, tuple(kept.names))
+
+
+def forget(folder: Path) -> None:
+    """Remove what an earlier run left in a results folder, if there is one."""
+    if folder.is_dir():
+        for name in RESULT_FILES:
+            remove_file(folder / name)
+
+
+def _asked(
+    written: Written, kept: _Folder, which: Which, timeout: float, runner: LibraryRunner | None
+) -> Opinion | None:
+    """The second opinion, its results and its log kept; the log also where the run failed."""
     try:
         opinion = ask(written, which, timeout=timeout, runner=runner)
-        comparison = None if opinion is None else _compared(whole, written, opinion)
     except RunFailed as exc:
         kept.keep("simulator.log", exc.log)
-        kept.close()
         raise
-    except RcnetError:
+    if opinion is None:
+        return None
+    if opinion.raw is not None:
+        kept.keep("results.raw", opinion.raw)
+        kept.keep("simulator.log", opinion.log)
+    elif ac := opinion.curves.of("ac"):
+        kept.keep("read-back.csv", write_csv(Curves(opinion.curves.source, ac)))
+    return opinion
+
+
+@contextmanager
+def _kept_in(path: Path | None) -> Iterator[_Folder]:
+    """A results folder for one run; whatever ends the run, nothing of an earlier one is left in it."""
+    kept = _Folder(path)
+    try:
+        yield kept
+    finally:
         kept.close()
-        raise
-    if opinion is not None:
-        keep_results(kept, opinion)
-    if comparison is not None:
-        from .report.document import comparison_document, to_json
-
-        kept.keep("comparison.json", to_json(comparison_document(comparison)))
-    kept.close()
-    return Confirmation(done, written, opinion, comparison, kept.path, tuple(kept.names))
-
-
-def _compared(circuit: Circuit, written: Written, opinion: Opinion) -> Comparison:
-    return compare(circuit, opinion.curves, written.names, opinion.who)
-
-
-RESULT_FILES = ("netlist.cir", "results.raw", "simulator.log", "read-back.csv", "comparison.json", "report.html")
 
 
 class _Folder:
-    """The files of one run: each is written whole, and what an earlier run left over is removed at the end."""
+    """The files of one run, each written whole; the folder is made when the first is."""
 
     def __init__(self, path: Path | None) -> None:
         self.path = path
         self.names: list[str] = []
-        if path is not None:
-            make_folder(path)
+        if path is not None and path.is_dir():
             # The verdict of an earlier run must not stand beside a netlist that it is not about.
             remove_file(path / "comparison.json")
 
     def keep(self, name: str, data: str | bytes) -> None:
         if self.path is not None:
+            make_folder(self.path)
             write_file(self.path / name, data)
             self.names.append(name)
 
     def close(self) -> None:
-        if self.path is not None:
+        if self.path is not None and self.path.is_dir():
             for name in RESULT_FILES:
                 if name not in self.names:
                     remove_file(self.path / name)
-
-
-def keep_results(kept: _Folder, opinion: Opinion) -> None:
-    """The results and the log of a second opinion."""
-    if opinion.raw is not None:
-        kept.keep("results.raw", opinion.raw)
-        kept.keep("simulator.log", opinion.log)
-        return
-    ac = opinion.curves.of("ac")
-    if ac:
-        kept.keep("read-back.csv", write_csv(type(opinion.curves)(opinion.curves.source, ac)))
-
-
-def simulate(circuit: Circuit, folder: Path, *, which: Which, timeout: float, anyway: bool = False) -> Confirmation:
-    """Write the netlist, have a simulator run it, keep its results; nothing is compared. Raises as `confirm`."""
-    whole = with_analyses(circuit)
-    done = check(whole)
-    written = sealed_netlist(whole, done, anyway=anyway)
-    kept = _Folder(folder)
-    kept.keep("netlist.cir", written.text)
-    try:
-        opinion = ask(written, which, timeout=timeout)
-    except RunFailed as exc:
-        kept.keep("simulator.log", exc.log)
-        kept.close()
-        raise
-    if opinion is not None:
-        keep_results(kept, opinion)
-    kept.close()
-    return Confirmation(done, written, opinion, None, kept.path, tuple(kept.names))

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-import difflib
+import bisect
 import math
 import re
 import tomllib
+from collections import deque
 from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import replace
@@ -17,9 +18,11 @@ from ..system.files import read_text
 from ..values import Expression, parse_expression, parse_quantity
 from .circuit import Analyses, Bound, Circuit, Claim, Conditions, Place, Sweep, TransientRun
 from .drive import parse_drive
-from .ladder import parse_part
-from .measure_table import MeasureSpec, measure_spec, parse_options
-from .network import GROUND, Network, check_node
+from .ladder import parse_part, parse_section
+from .measure_table import MeasureSpec, check_band, measure_spec, parse_options
+from .names import check_name, check_node
+from .network import GROUND, Network
+from .shown import nearest, shown
 from .toml_lines import Path as KeyPath
 from .toml_lines import line_table
 
@@ -28,7 +31,11 @@ MAX_FILE_BYTES = 16 * 1024 * 1024
 MAX_PROBLEMS = 50
 
 _TOP = ("title", "output", "parts", "ladder", "sources", "analysis", "conditions", "claims")
-_CLAIM = ("says", "measure", "of", "equals", "within", "at_least", "at_most", "between", "hand", "over")
+_STRING = re.compile(r""" "([^"\\]*)" | '([^']*)' """, re.VERBOSE)
+_SWEEP = ("from", "to", "per_decade")
+_RUN = ("stop", "step", "start", "max_step")
+_FORMS = ("equals", "at_least", "at_most", "between")
+_CLAIM = ("says", "measure", "of", *_FORMS, "within", "hand", "over")
 
 
 def load_circuit_file(path: str | Path) -> Circuit:
@@ -43,7 +50,7 @@ def circuit_name(path: str | Path) -> str:
 
 
 def parse_circuit_file(text: str, file: str) -> Circuit:
-    """A circuit file given as text; `file` is its name in messages. Raises CircuitError with every mistake."""
+    """A circuit file given as text, called `file` in messages. Raises CircuitError with every mistake."""
     if not text.strip():
         raise CircuitError(
             "the file is empty.", file=file, remedy="Copy a starter with `rcnet new` and edit it."
@@ -54,12 +61,14 @@ def parse_circuit_file(text: str, file: str) -> Circuit:
         raise _syntax_error(exc, text, file) from exc
     except RecursionError as exc:
         raise CircuitError("the file nests too deeply.", file=file, remedy="Flatten it.") from exc
+    except ValueError as exc:  # a number of thousands of digits
+        raise CircuitError(f"a number cannot be read: {exc}.", file=file, remedy="Shorten it.") from exc
     return _Reader(table, text, file).circuit()
 
 
 def _syntax_error(exc: tomllib.TOMLDecodeError, text: str, file: str) -> CircuitError:
     found = re.search(r"\(at line (\d+), column (\d+)\)", str(exc))
-    line = int(found[1]) if found else len(text.splitlines())
+    line = int(found[1]) if found else len(text.rstrip().split("\n"))
     why = re.sub(r"\s*\(at .*\)$", "", str(exc))
     return CircuitError(
         f"this is not valid TOML: {why[:1].lower()}{why[1:]}.", file=file, line=line, remedy="Mend this line."
@@ -71,12 +80,14 @@ class _Reader:
 
     def __init__(self, table: dict[str, Any], text: str, file: str) -> None:
         self.table, self.file = table, file
-        self.source_lines = text.splitlines()
+        self.source_lines = text.replace("\r\n", "\n").removesuffix("\n").split("\n")
         self.lines = line_table(text)
+        self.begins = sorted(set(self.lines.values()))
         self.problems: list[Problem] = []
         title = table.get("title", "")
         self.network = Network(title if isinstance(title, str) else "")
         self.places: dict[str, Place] = {}
+        self.analysis_places: dict[str, Place] = {}
         self.failed: set[str] = set()  # parts that could not be read: no follow-up complaints about them
 
     # -- places and problems
@@ -105,16 +116,16 @@ class _Reader:
         allowed = tuple(allowed)
         for key in table:
             if key not in allowed:
-                near = difflib.get_close_matches(key, allowed, n=1)
-                hint = f"Did you mean {near[0]!r}?" if near else f"Known here: {', '.join(allowed)}."
-                self.complain((*path, key), f"unknown key {key!r}.", hint)
+                # Looking for the nearest word is slow, and past the limit nobody reads it.
+                remedy = nearest(key, allowed) if len(self.problems) < MAX_PROBLEMS else ""
+                self.complain((*path, key), f"unknown key {shown(key)}.", remedy)
 
     def sub(self, key: str) -> dict[str, Any]:
         """A table of that name; {} where there is none."""
         value = self.table.get(key, {})
         if isinstance(value, dict):
             return value
-        self.complain((key,), f"{key!r} is {value!r}, not a table.", f"Write it as [{key}].")
+        self.complain((key,), f"{shown(key)} is {shown(value)}, not a table.", f"Write it as [{key}].")
         return {}
 
     # -- the whole
@@ -144,6 +155,7 @@ class _Reader:
             conditions,
             claims,
             self.places,
+            analysis_places=self.analysis_places,
             lines=tuple(self.source_lines),
         )
 
@@ -151,25 +163,25 @@ class _Reader:
         found = sorted(self.problems, key=lambda problem: problem.line or 0)
         if len(found) > MAX_PROBLEMS:
             more = len(found) - MAX_PROBLEMS
-            found = found[:MAX_PROBLEMS] + [Problem(f"and {more} more problems.", self.file)]
+            found = [*found[:MAX_PROBLEMS], Problem(f"and {more} more problems.", self.file)]
         return found
 
     # -- the network
 
-    def place(self, name: str, *path: str | int) -> None:
+    def place(self, *path: str | int) -> Place:
         line = self.line(*path)
-        text = self.source_lines[line - 1] if line is not None and line <= len(self.source_lines) else ""
-        self.places[name] = Place(self.file, line, text)
+        return Place(self.file, line, self.source_lines[line - 1] if line is not None else "")
 
     def parts(self) -> None:
         for name, text in self.sub("parts").items():
             with self.catching("parts", name, also=name):
+                check_name(name, "part name")
                 if not isinstance(text, str):
                     raise CircuitError(
-                        f"{name} is {text!r}, not text.", remedy=f'Write {name} = "node node value".'
+                        f"{name} is {shown(text)}, not text.", remedy=f'Write {name} = "node node value".'
                     )
                 self.network.add_part(parse_part(name, text))
-                self.place(name, "parts", name)
+                self.places[name] = self.place("parts", name)
 
     def ladders(self) -> None:
         value = self.table.get("ladder")
@@ -180,7 +192,7 @@ class _Reader:
             tables = [(("ladder", number), item) for number, item in enumerate(value)]
         for path, table in tables:
             if not isinstance(table, dict):
-                self.complain(path, f"the ladder is {table!r}, not a table.", "Write it as [ladder].")
+                self.complain(path, f"the ladder is {shown(table)}, not a table.", "Write it as [ladder].")
                 continue
             self.known(table, ("path", "sections"), *path)
             with self.catching(*path, "sections"):
@@ -191,47 +203,54 @@ class _Reader:
         ends = [end.strip() for end in ends]
         if len(ends) != 2 or not all(ends):
             self.complain(
-                (*path, "path"), f"the ladder's path is {table.get('path')!r}.", 'Write path = "in -> out".'
+                (*path, "path"),
+                f"the ladder's path is {shown(table['path'])}."
+                if "path" in table
+                else "the ladder has no path.",
+                'Write path = "in -> out".',
             )
             return
         sections = table.get("sections")
         if not isinstance(sections, list) or not all(isinstance(text, str) for text in sections):
             self.complain(
-                (*path, "sections"), "the ladder's sections are no list of texts.", 'Write ["series R1 1k"].'
+                (*path, "sections"),
+                f"the ladder's sections are {'not a list of texts' if 'sections' in table else 'missing'}.",
+                'Write sections = ["series R1 1k", "shunt C1 1n"].',
             )
             return
-        for part in self.network.ladder_parts(ends[0], ends[1], self.readable(path, sections)):
-            line = self.section_line(path, part.name)
-            with self.catching(*path, "sections", also=part.name):
-                try:
-                    self.network.add_part(part)
-                except RcnetError as exc:
-                    raise exc.at(self.file, line) from exc
-                self.places[part.name] = Place(self.file, line, self.source_lines[line - 1] if line else "")
-
-    def readable(self, path: KeyPath, sections: list[str]) -> list[str]:
-        """The sections that can be read; a complaint about each other one, on its own line."""
-        from .ladder import parse_section
-
-        good = []
-        for text in sections:
+        places = self.section_lines((*path, "sections"), sections)
+        good = [number for number, text in enumerate(sections) if self.readable(text, places[number])]
+        if len(good) < len(sections) and not any(sections[number].split()[0] == "series" for number in good):
+            return  # the series part missing now is one that could not be read
+        parts = self.network.ladder_parts(ends[0], ends[1], [sections[number] for number in good])
+        for part, line in zip(parts, (places[number] for number in good), strict=True):
             try:
-                parse_section(text)
-                good.append(text)
+                self.network.add_part(part)
+                self.places[part.name] = Place(self.file, line, self.source_lines[line - 1])
             except RcnetError as exc:
-                words = text.split()
-                line = self.section_line(path, words[1]) if len(words) > 1 else self.line(*path, "sections")
                 self.problems.extend(exc.at(self.file, line).problems)
-                self.failed.update(words[1:2])
-        return good
+                self.failed.add(part.name)
 
-    def section_line(self, path: KeyPath, name: str) -> int | None:
-        start = self.line(*path, "sections") or 1
-        pattern = re.compile(rf"""["'][^"']*\b{re.escape(name)}(?![\w.])""")
-        for number in range(start, len(self.source_lines) + 1):
-            if pattern.search(self.source_lines[number - 1]):
-                return number
-        return start
+    def readable(self, text: str, line: int) -> bool:
+        """True for a section that can be read; a complaint on its line for another one."""
+        try:
+            parse_section(text)
+        except RcnetError as exc:
+            self.problems.extend(exc.at(self.file, line).problems)
+            self.failed.update(text.split()[1:2])
+            return False
+        return True
+
+    def section_lines(self, path: KeyPath, sections: list[str]) -> list[int]:
+        """The line of each section; that of the key where a section's text is written with escapes."""
+        start = self.line(*path) or 1
+        after = bisect.bisect_right(self.begins, start)
+        end = self.begins[after] if after < len(self.begins) else len(self.source_lines) + 1
+        found: dict[str, deque[int]] = {}
+        for number in range(start, end):
+            for match in _STRING.finditer(self.source_lines[number - 1]):
+                found.setdefault(match[1] if match[1] is not None else match[2], deque()).append(number)
+        return [found[text].popleft() if found.get(text) else start for text in sections]
 
     def sources(self) -> None:
         tables = self.sub("sources")
@@ -239,27 +258,30 @@ class _Reader:
             self.complain(("sources",), "the circuit has no source.", "Add one, as [sources.Vin].")
         for name, drive in tables.items():
             with self.catching("sources", name, also=name):
+                check_name(name, "source name")
                 if not isinstance(drive, dict):
                     raise CircuitError(
-                        f"the source {name} is {drive!r}.", remedy=f"Write it as [sources.{name}]."
+                        f"the source {name} is {shown(drive)}.", remedy=f"Write it as [sources.{name}]."
                     )
                 self.source(name, drive)
 
     def source(self, name: str, drive: dict[str, Any]) -> None:
         nodes = drive.get("nodes")
         if not isinstance(nodes, str) or len(nodes.split()) != 2:
-            raise CircuitError(f"{name}: nodes is {nodes!r}.", remedy='Write nodes = "in 0".').at(
+            what = f"nodes is {shown(nodes)}." if "nodes" in drive else "'nodes' is missing."
+            raise CircuitError(f"{name}: {what}", remedy='Write nodes = "in 0".').at(
                 self.file, self.line("sources", name, "nodes")
             )
         a, b = nodes.split()
         rest = {key: value for key, value in drive.items() if key != "nodes"}
-        # A wrong key gets its own line: the whole is read once more without it to find what else is wrong.
-        for key in rest:
+        parse_drive(name, (a, b), {})
+        # Each key is read alone first, so that every wrong one is told on its own line.
+        for key, value in rest.items():
             with self.catching("sources", name, key, also=name):
-                parse_drive(name, (a, b), {key: rest[key]})
+                parse_drive(name, (a, b), {key: value})
         if name not in self.failed:
             self.network.add_source(parse_drive(name, (a, b), rest))
-            self.place(name, "sources", name)
+            self.places[name] = self.place("sources", name)
 
     def sensed(self) -> None:
         for part in list(self.network.parts):
@@ -271,21 +293,19 @@ class _Reader:
         value = self.table.get("output")
         if value is None:
             return ("out",) if self.network.has_node("out") else ()
-        nodes: tuple[str, ...] = ()
         with self.catching("output"):
-            nodes = self.node_or_pair(value, "output")
-        return nodes
+            return self.node_or_pair(value, "output")
+        return ()
 
     def node_or_pair(self, value: Any, what: str) -> tuple[str, ...]:
         words = value.split() if isinstance(value, str) else []
         if len(words) not in (1, 2):
             raise CircuitError(
-                f"{what} is {value!r}.", remedy='Name one node, as "out", or a pair, as "a b".'
+                f"{what} is {shown(value)}.", remedy='Name one node, as "out", or a pair, as "a b".'
             )
         for word in words:
             check_node(word)
-            # A part that could not be read may have been the one to touch the node: then its own message is
-            # enough.
+            # A part that could not be read may be the one that touches the node; its own message is enough.
             if not self.network.has_node(word) and not self.failed:
                 self.network.node_index(word)
         return tuple(words) if len(words) == 1 or words[1] != GROUND else (words[0],)
@@ -301,6 +321,8 @@ class _Reader:
     def analyses(self) -> Analyses:
         table = self.sub("analysis")
         self.known(table, ("ac", "transient", "noise", "operating_point"), "analysis")
+        # Named as the netlist reader names them, where the word has a blank.
+        self.analysis_places = {key.replace("_", " "): self.place("analysis", key) for key in table}
         result = Analyses()
         if "ac" in table:
             with self.catching("analysis", "ac"):
@@ -314,7 +336,7 @@ class _Reader:
         point = table.get("operating_point", False)
         if not isinstance(point, bool):
             self.complain(
-                ("analysis", "operating_point"), f"operating_point is {point!r}.", "Write true or false."
+                ("analysis", "operating_point"), f"operating_point is {shown(point)}.", "Write true or false."
             )
         return replace(result, operating_point=point is True)
 
@@ -358,6 +380,8 @@ class _Reader:
         for key in (*spec.needs, *spec.may):
             with self.catching(*path, key):
                 options |= self.option(spec, key, table)
+        with self.catching(*path, "to"):
+            check_band(spec, options)
         of = output
         if "of" in table:
             with self.catching(*path, "of"):
@@ -366,31 +390,58 @@ class _Reader:
             self.complain(
                 path, "the claim is about no node.", 'Add of = "out", or output = "out" at the top.'
             )
-        bound, hand = None, None
-        with self.catching(*path):
-            bound = _bound(spec, table)
+        bound, hand = self.bound(path, spec, table), None
         if "hand" in table:
             with self.catching(*path, "hand"):
                 hand = self.hand(table["hand"])
         over = table.get("over")
         if over not in (None, "tolerance"):
-            self.complain((*path, "over"), f"over is {over!r}.", 'Write over = "tolerance", or leave it out.')
+            self.complain(
+                (*path, "over"), f"over is {shown(over)}.", 'Write over = "tolerance", or leave it out.'
+            )
         says = table.get("says", "")
         if not isinstance(says, str):
-            self.complain((*path, "says"), f"says is {says!r}, not text.", 'Write says = "...".')
+            self.complain((*path, "says"), f"says is {shown(says)}, not text.", 'Write says = "...".')
         if len(self.problems) > before or bound is None:
             return None
-        line = self.line(*path)
-        text = self.source_lines[line - 1] if line else ""
-        place = Place(self.file, line, text)
+        place = self.place(*path)
         return Claim(
             says or _plain(spec, options, bound), spec, of, options, bound, hand, over is not None, place
         )
 
+    def bound(self, path: KeyPath, spec: MeasureSpec, table: dict[str, Any]) -> Bound | None:
+        forms = [key for key in _FORMS if key in table]
+        if len(forms) != 1:
+            self.complain(
+                path,
+                f"the claim has {' and '.join(forms) or 'no bound'}.",
+                "Give exactly one of equals (with within), at_least, at_most, between.",
+            )
+            return None
+        if "within" in table and forms[0] != "equals":
+            self.complain(
+                (*path, "within"), f"within does not go with {forms[0]}.", "Use it with equals only."
+            )
+            return None
+        with self.catching(*path, forms[0]):
+            if forms[0] != "equals":
+                return _bound(spec, forms[0], table[forms[0]])
+            if "within" not in table:
+                raise CircuitError(
+                    "equals stands without within.",
+                    remedy='Say how close is close enough, as within = "1 %".',
+                )
+            target = parse_quantity(table["equals"], spec.unit, "equals")
+            with self.catching(*path, "within"):
+                return _around(spec, target, table)
+        return None
+
     def option(self, spec: MeasureSpec, key: str, table: dict[str, Any]) -> dict[str, float | str]:
         if key not in table:
             if key in spec.needs:
-                raise CircuitError(f"{spec.name} needs {key!r}.", remedy=f"Add {key} = ... to the claim.")
+                raise CircuitError(
+                    f"{spec.name} needs {shown(key)}.", remedy=f"Add {key} = ... to the claim."
+                )
             return {}
         only = replace(spec, needs=(key,), may=())
         options = parse_options(only, {key: table[key]})
@@ -400,7 +451,7 @@ class _Reader:
 
     def hand(self, text: Any) -> Expression:
         if not isinstance(text, str):
-            raise CircuitError(f"hand is {text!r}, not text.", remedy='Write hand = "1/(2*pi*R1*C1)".')
+            raise CircuitError(f"hand is {shown(text)}, not text.", remedy='Write hand = "1/(2*pi*R1*C1)".')
         formula = parse_expression(text)
         for name in sorted(formula.names - {"T"} - self.failed):
             self.network.part(name)
@@ -411,72 +462,60 @@ def _plain(spec: MeasureSpec, options: Mapping[str, float | str], bound: Bound) 
     return f"{spec.name} {bound.text}"
 
 
-def _bound(spec: MeasureSpec, table: Mapping[str, Any]) -> Bound:
-    forms = [key for key in ("equals", "at_least", "at_most", "between") if key in table]
-    if len(forms) != 1:
-        given = " and ".join(forms) or "none of them"
-        raise CircuitError(
-            f"the claim has {given}.",
-            remedy="Give exactly one of equals (with within), at_least, at_most, between.",
-        )
-    form = forms[0]
-    if "within" in table and form != "equals":
-        raise CircuitError(f"within does not go with {form}.", remedy="Use within with equals only.")
-    if form == "equals":
-        return _equals(spec, table)
+def _bound(spec: MeasureSpec, form: str, given: Any) -> Bound:
     if form == "between":
-        pair = table["between"]
-        if not isinstance(pair, list) or len(pair) != 2:
-            raise CircuitError(f"between is {pair!r}.", remedy="Write between = [low, high].")
-        low, high = (parse_quantity(value, spec.unit, "between") for value in pair)
+        if not isinstance(given, list) or len(given) != 2:
+            raise CircuitError(f"between is {shown(given)}.", remedy="Write between = [low, high].")
+        low, high = (parse_quantity(value, spec.unit, "between") for value in given)
         if not low <= high:
             raise CircuitError(
-                f"between runs from {pair[0]!r} down to {pair[1]!r}.", remedy="Put the lower one first."
+                f"between runs from {shown(given[0])} down to {shown(given[1])}.",
+                remedy="Put the lower one first.",
             )
-        return Bound(low, high, f"between {pair[0]} and {pair[1]}")
-    value = parse_quantity(table[form], spec.unit, form)
+        return Bound(low, high, f"between {given[0]} and {given[1]}")
+    value = parse_quantity(given, spec.unit, form)
     if form == "at_least":
-        return Bound(value, math.inf, f"at least {table[form]}")
-    return Bound(-math.inf, value, f"at most {table[form]}")
+        return Bound(value, math.inf, f"at least {given}")
+    return Bound(-math.inf, value, f"at most {given}")
 
 
-def _equals(spec: MeasureSpec, table: Mapping[str, Any]) -> Bound:
-    if "within" not in table:
-        raise CircuitError(
-            "equals stands without within.", remedy='Say how close is close enough, as within = "1 %".'
-        )
-    target, within = parse_quantity(table["equals"], spec.unit, "equals"), table["within"]
+def _around(spec: MeasureSpec, target: float, table: Mapping[str, Any]) -> Bound:
+    within = table["within"]
     if isinstance(within, str) and within.strip().endswith("%"):
         spread = abs(target) * parse_quantity(within, "%", "within") / 100
     else:
         spread = parse_quantity(within, spec.unit, "within")
     if not (spread >= 0 and math.isfinite(target)):
         raise CircuitError(
-            f"within is {within!r} around {table['equals']!r}.", remedy="Give zero or more, finite."
+            f"within is {shown(within)} around {shown(table['equals'])}.", remedy="Give zero or more, finite."
         )
     return Bound(target - spread, target + spread, f"{table['equals']} ± {within}")
 
 
 def _sweep(name: str, table: Any, per_decade: int) -> Sweep:
     if not isinstance(table, dict):
-        raise CircuitError(f"{name} is {table!r}.", remedy=f'Write {name} = {{ from = "10", to = "1 MHz" }}.')
+        raise CircuitError(
+            f"{name} is {shown(table)}.", remedy=f'Write {name} = {{ from = "10", to = "1 MHz" }}.'
+        )
     for key in table:
-        if key not in ("from", "to", "per_decade"):
-            raise CircuitError(f"{name}: unknown key {key!r}.", remedy="Known: from, to, per_decade.")
+        if key not in _SWEEP:
+            raise CircuitError(f"{name}: unknown key {shown(key)}.", remedy=nearest(key, _SWEEP))
     for key in ("from", "to"):
         if key not in table:
-            raise CircuitError(f"{name}: {key!r} is missing.", remedy=f'Add {key} = "1 kHz" or the like.')
+            raise CircuitError(
+                f"{name}: {shown(key)} is missing.", remedy=f'Add {key} = "1 kHz" or the like.'
+            )
     start, stop = (parse_quantity(table[key], "Hz", f"{name}: {key}") for key in ("from", "to"))
     points = table.get("per_decade", per_decade)
     if not isinstance(points, int) or isinstance(points, bool) or not 1 <= points <= 10_000:
         raise CircuitError(
-            f"{name}: per_decade is {points!r}.", remedy="Give a whole number from 1 to 10000."
+            f"{name}: per_decade is {shown(points)}.", remedy="Give a whole number from 1 to 10000."
         )
     return checked_sweep(Sweep(start, stop, points), name)
 
 
 def checked_sweep(sweep: Sweep, name: str) -> Sweep:
-    """The sweep, if it has at least one step; ngspice never ends on one that rounds to none. Raises CircuitError."""
+    """The sweep, if it has a step: ngspice never ends on one that rounds to none. Raises CircuitError."""
     if not (0 < sweep.start < sweep.stop < math.inf):
         raise CircuitError(
             f"{name} runs from {sweep.start!r} Hz to {sweep.stop!r} Hz.",
@@ -495,12 +534,10 @@ def checked_sweep(sweep: Sweep, name: str) -> Sweep:
 
 def _transient(table: Any) -> TransientRun:
     if not isinstance(table, dict):
-        raise CircuitError(f"transient is {table!r}.", remedy='Write transient = { stop = "5 ms" }.')
+        raise CircuitError(f"transient is {shown(table)}.", remedy='Write transient = { stop = "5 ms" }.')
     for key in table:
-        if key not in ("stop", "step", "start", "max_step"):
-            raise CircuitError(
-                f"transient: unknown key {key!r}.", remedy="Known: stop, step, start, max_step."
-            )
+        if key not in _RUN:
+            raise CircuitError(f"transient: unknown key {shown(key)}.", remedy=nearest(key, _RUN))
     if "stop" not in table:
         raise CircuitError("transient: 'stop' is missing.", remedy='Add stop = "5 ms" or the like.')
     read = {key: parse_quantity(value, "s", f"transient: {key}") for key, value in table.items()}
@@ -509,7 +546,7 @@ def _transient(table: Any) -> TransientRun:
     positive = [run.stop, run.step, *([run.max_step] if run.max_step is not None else [])]
     if not all(0 < value < math.inf for value in positive) or not 0 <= run.start < run.stop:
         raise CircuitError(
-            f"transient: {table!r} is no run over time.",
+            f"transient: {shown(table)} is no run over time.",
             remedy="Let stop, step and max_step be above zero and start before stop.",
         )
     return run
@@ -521,7 +558,7 @@ def _temperature(value: Any) -> Conditions:
         limits = (nominal, nominal)
     else:
         if set(value) != {"from", "to"}:
-            raise CircuitError(f"temperature is {value!r}.", remedy="Write { from = -40, to = 85 }.")
+            raise CircuitError(f"temperature is {shown(value)}.", remedy="Write { from = -40, to = 85 }.")
         limits = (
             parse_quantity(value["from"], "degC", "temperature: from"),
             parse_quantity(value["to"], "degC", "temperature: to"),
@@ -529,5 +566,7 @@ def _temperature(value: Any) -> Conditions:
         # 27 degrees is what simulators take unless told (TNOM); outside the range its nearer end stands in.
         nominal = min(max(27.0, limits[0]), limits[1])
     if not (-273.15 < limits[0] <= limits[1] < 1000):
-        raise CircuitError(f"temperature is {value!r}.", remedy="Give degrees Celsius, the lower one first.")
+        raise CircuitError(
+            f"temperature is {shown(value)}.", remedy="Give degrees Celsius, the lower one first."
+        )
     return Conditions(nominal, *limits)

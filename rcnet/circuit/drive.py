@@ -8,6 +8,7 @@ from typing import Any
 from ..errors import CircuitError
 from ..values import parse_quantity
 from .parts import Source
+from .shown import nearest, shown
 from .waveform import Points, Sine, Square, Step, Waveform
 
 _SQUARE = {"low", "high", "frequency", "duty", "rise", "fall", "delay"}
@@ -21,12 +22,12 @@ def parse_drive(name: str, nodes: tuple[str, str], drive: Mapping[str, Any]) -> 
     unit = {"V": "V", "I": "A"}.get(name[:1].upper())
     if unit is None:
         raise CircuitError(
-            f"the source is called {name!r}.", remedy="Let its name begin with V or I, as Vin."
+            f"the source is called {shown(name)}.", remedy="Let its name begin with V or I, as Vin."
         )
     known = {"ac", "ac_phase", "dc", *WAVEFORMS}
     for key in drive:
         if key not in known:
-            raise CircuitError(f"{name}: unknown key {key!r}.", remedy=f"Known: {', '.join(sorted(known))}.")
+            raise CircuitError(f"{name}: unknown key {shown(key)}.", remedy=nearest(key, known))
     waves = [key for key in WAVEFORMS if drive.get(key) is not None]
     if len(waves) > 1:
         raise CircuitError(f"{name} has two waveforms, {waves[0]} and {waves[1]}.", remedy="Keep one.")
@@ -34,7 +35,9 @@ def parse_drive(name: str, nodes: tuple[str, str], drive: Mapping[str, Any]) -> 
     if waves:
         table = drive[waves[0]]
         if not isinstance(table, Mapping):
-            raise CircuitError(f"{name}: {waves[0]} is {table!r}.", remedy=f"Write {waves[0]} = {{ ... }}.")
+            raise CircuitError(
+                f"{name}: {waves[0]} is {shown(table)}.", remedy=f"Write {waves[0]} = {{ ... }}."
+            )
         waveform = WAVEFORMS[waves[0]](_Reader(f"{name}: {waves[0]}", unit, table))
     ac, dc = drive.get("ac"), drive.get("dc")
     return Source(
@@ -56,13 +59,11 @@ class _Reader:
     def only(self, known: set[str]) -> None:
         for key in self.table:
             if key not in known:
-                raise CircuitError(
-                    f"{self.where}: unknown key {key!r}.", remedy=f"Known: {', '.join(sorted(known))}."
-                )
+                raise CircuitError(f"{self.where}: unknown key {shown(key)}.", remedy=nearest(key, known))
 
     def need(self, key: str, unit: str | None = None) -> float:
         if key not in self.table:
-            raise CircuitError(f"{self.where}: {key!r} is missing.", remedy="Add it.")
+            raise CircuitError(f"{self.where}: {shown(key)} is missing.", remedy="Add it.")
         return parse_quantity(self.table[key], unit or self.unit, f"{self.where}: {key}")
 
     def may(self, key: str, unit: str, default: float) -> float:
@@ -76,9 +77,9 @@ def _square(read: _Reader) -> Waveform:
         read.need("high"),
         read.need("frequency", "Hz"),
         read.may("duty", "1", 0.5),
-        read.may("rise", "s", 0.0),
-        read.may("fall", "s", 0.0),
-        read.may("delay", "s", 0.0),
+        rise=read.may("rise", "s", 0.0),
+        fall=read.may("fall", "s", 0.0),
+        delay=read.may("delay", "s", 0.0),
     )
 
 
@@ -109,7 +110,7 @@ def _points(read: _Reader) -> Waveform:
     for row in rows:
         if not isinstance(row, (list, tuple)) or len(row) != 2:
             raise CircuitError(
-                f"{read.where}: {row!r} is no pair.", remedy="Write each point as [time, value]."
+                f"{read.where}: {shown(row)} is no pair.", remedy="Write each point as [time, value]."
             )
         time = parse_quantity(row[0], "s", f"{read.where}: time")
         pairs.append((time, parse_quantity(row[1], read.unit, f"{read.where}: value")))

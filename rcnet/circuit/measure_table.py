@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
 from ..errors import CircuitError
 from ..values import parse_quantity
+from .shown import shown
 
 # option -> unit of its value; None for names and words.
 OPTION_UNITS: dict[str, str | None] = {
@@ -73,7 +75,7 @@ def measure_spec(name: object) -> MeasureSpec:
     spec = MEASURES.get(name) if isinstance(name, str) else None
     if spec is None:
         raise CircuitError(
-            f"there is no measure called {name!r}.", remedy=f"Measures: {', '.join(MEASURES)}."
+            f"there is no measure called {shown(name)}.", remedy=f"Measures: {', '.join(MEASURES)}."
         )
     return spec
 
@@ -86,27 +88,39 @@ def parse_options(spec: MeasureSpec, given: Mapping[str, Any]) -> dict[str, floa
     for key in given:
         if key not in (*spec.needs, *spec.may):
             takes = ", ".join((*spec.needs, *spec.may)) or "no option"
-            raise CircuitError(f"{spec.name} takes no {key!r}.", remedy=f"It takes: {takes}.")
+            raise CircuitError(f"{spec.name} takes no {shown(key)}.", remedy=f"It takes: {takes}.")
     options: dict[str, float | str] = {}
     for key in (*spec.needs, *spec.may):
         if key in given:
             options[key] = _option(spec, key, given[key])
         elif key in spec.needs:
-            raise CircuitError(f"{spec.name} needs {key!r}.", remedy=f"Add {key} = ... to it.")
+            raise CircuitError(f"{spec.name} needs {shown(key)}.", remedy=f"Add {key} = ... to it.")
+    check_band(spec, options)
     return options
+
+
+def check_band(spec: MeasureSpec, options: Mapping[str, float | str]) -> None:
+    """Raise CircuitError where a band of frequencies, given whole, does not run upwards."""
+    if "from" in options and "to" in options and not float(options["from"]) < float(options["to"]):
+        raise CircuitError(
+            f"{spec.name}: from is {options['from']!r} Hz, which is not below to.",
+            remedy="Put the lower frequency first.",
+        )
 
 
 def _option(spec: MeasureSpec, key: str, value: Any) -> float | str:
     unit = spec.unit_of(key)
     if unit is None:
         if not isinstance(value, str) or not value:
-            raise CircuitError(f"{spec.name}: {key} is {value!r}.", remedy=f"Give {key} as text.")
+            raise CircuitError(f"{spec.name}: {key} is {shown(value)}.", remedy=f"Give {key} as text.")
         if key == "edge" and value not in ("lower", "upper"):
-            raise CircuitError(f"{spec.name}: edge is {value!r}.", remedy='Write "lower" or "upper".')
+            raise CircuitError(f"{spec.name}: edge is {shown(value)}.", remedy='Write "lower" or "upper".')
         return value
     number = parse_quantity(value, unit, f"{spec.name}: {key}")
     if number < 0:
         raise CircuitError(f"{spec.name}: {key} is {number!r}, below zero.", remedy="Give zero or more.")
+    if key == "at" and math.isinf(number):
+        raise CircuitError(f"{spec.name}: at is {number!r}.", remedy="Give a finite frequency.")
     if key == "order" and (number < 1 or number != int(number)):
         raise CircuitError(f"{spec.name}: order is {number!r}.", remedy="Give a whole number from 1 on.")
     if key == "band" and not 0 < number < 1:

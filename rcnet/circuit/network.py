@@ -15,14 +15,15 @@ import numpy.typing as npt
 from ..errors import CircuitError
 from ..values import Tolerance, parse_quantity, parse_rating, parse_tempco, parse_tolerance
 from .ladder import parse_section
+from .names import check_name, check_node
 from .parts import KINDS, Part, Source
+from .shown import shown
 from .waveform import Points, Sine, Square, Step, Waveform
 
 if TYPE_CHECKING:
     import networkx
 
 GROUND = "0"
-MAX_NAME = 200  # characters; longer names are nobody's
 
 
 @dataclass(frozen=True)
@@ -102,13 +103,13 @@ class Network:
         self, name: str, a: str, b: str, sensed: str, gain: str | float
     ) -> None:
         """Add an F source: gain times the current through voltage source `sensed`, from a through it to b."""
-        self._add_valued("F", name, (a, b), gain, {}, sensed)
+        self._add_valued("F", name, (a, b), gain, {}, senses=sensed)
 
     def add_current_controlled_voltage_source(
         self, name: str, a: str, b: str, sensed: str, transresistance: str | float
     ) -> None:
         """Add an H source: v(a) - v(b) = transresistance times the current through the source `sensed`."""
-        self._add_valued("H", name, (a, b), transresistance, {}, sensed)
+        self._add_valued("H", name, (a, b), transresistance, {}, senses=sensed)
 
     def add_voltage_source(self, name: str, a: str, b: str, **drive: Any) -> None:
         """Add a voltage source, v(a) - v(b); drive: ac, ac_phase, dc, and one of square, sine, step, points.
@@ -123,12 +124,17 @@ class Network:
 
     def add_source(self, source: Source) -> None:
         """Add an independent source given as a record."""
+        check_name(source.name, "source name")
+        if source.kind not in "VI":
+            raise CircuitError(
+                f"the source is called {source.name!r}.", remedy="Let its name begin with V or I, as Vin."
+            )
         self._append(source.kind, source.name, source.nodes, source.operating_value)
         self._sources[source.name] = source
 
     def add_part(self, part: Part) -> None:
         """Add a part given as a record."""
-        if KINDS[part.kind].is_source:
+        if part.kind in KINDS and KINDS[part.kind].is_source:
             raise CircuitError(f"{part.name} is a source.", remedy="Add it with add_source.")
         row = self._append(part.kind, part.name, part.nodes, part.value, part.senses)
         if part.tolerance is not None or part.rating is not None or part.tempco is not None:
@@ -137,8 +143,9 @@ class Network:
     def add_ladder(self, start: str, end: str, sections: Iterable[str]) -> None:
         """Add sections from one node to another.
 
-        `"series R2 10k 1%"` stands along the way, `"shunt C2 4n7"` from there to ground. Nodes between are named after the end: `end_1`, `end_2`, ... Errors: CircuitError for a section that
-        cannot be read, or a path without a series part.
+        `"series R2 10k 1%"` stands along the way, `"shunt C2 4n7"` from there to ground. Nodes between are
+        named after the end: `end_1`, `end_2`, ... Raises CircuitError for a section that cannot be read, and
+        for a path without a series part.
         """
         for part in self.ladder_parts(start, end, sections):
             self.add_part(part)
@@ -149,7 +156,7 @@ class Network:
         steps = sum(1 for section in parsed if section.series)
         if steps == 0:
             raise CircuitError(
-                f"the ladder from {start!r} to {end!r} has no series part.",
+                f"the ladder from {shown(start)} to {shown(end)} has no series part.",
                 remedy='Add at least one, as "series R1 10k".',
             )
         names = self._between(end, steps - 1)
@@ -177,12 +184,14 @@ class Network:
         nodes: tuple[str, ...],
         value: str | float,
         extras: dict[str, Any],
+        *,
         senses: str | None = None,
     ) -> None:
         kind = KINDS[letter]
-        if not name or name[0].upper() != letter:
+        check_name(name, "part name")
+        if name[0].upper() != letter:
             raise CircuitError(
-                f"the {kind.name} is called {name!r}.",
+                f"the {kind.name} is called {shown(name)}.",
                 remedy=f"Let its name begin with {letter}, as {letter}1.",
             )
         number = parse_quantity(value, kind.unit, name)
@@ -194,12 +203,14 @@ class Network:
         kind = KINDS.get(letter)
         if kind is None:
             raise CircuitError(
-                f"{name!r} begins with no known kind of part.",
+                f"{shown(name)} begins with no known kind of part.",
                 remedy=f"Known first letters: {' '.join(KINDS)}.",
             )
         check_name(name, "part name")
         if name in self._index:
-            raise CircuitError(f"there are two parts called {name!r}.", remedy="Give each part its own name.")
+            raise CircuitError(
+                f"there are two parts called {shown(name)}.", remedy="Give each part its own name."
+            )
         if len(nodes) != kind.nodes:
             raise CircuitError(
                 f"{name} has {len(nodes)} nodes; a {kind.name} needs {kind.nodes}.", remedy="Name them all."
@@ -265,7 +276,7 @@ class Network:
     def part(self, name: str) -> Part:
         """One part by name. Raises CircuitError."""
         if name not in self._index:
-            raise CircuitError(f"there is no part called {name!r}.", remedy=_known("Parts", self._names))
+            raise CircuitError(f"there is no part called {shown(name)}.", remedy=_known("Parts", self._names))
         return self._part(self._index[name])
 
     def _part(self, row: int) -> Part:
@@ -291,13 +302,15 @@ class Network:
     def node_index(self, name: str) -> int:
         """The index of a node in `nodes`. Raises CircuitError."""
         if name not in self._node_index:
-            raise CircuitError(f"there is no node called {name!r}.", remedy=_known("Nodes", self._node_names))
+            raise CircuitError(
+                f"there is no node called {shown(name)}.", remedy=_known("Nodes", self._node_names)
+            )
         return self._node_index[name]
 
     def part_index(self, name: str) -> int:
         """The row of a part in `arrays`. Raises CircuitError."""
         if name not in self._index:
-            raise CircuitError(f"there is no part called {name!r}.", remedy=_known("Parts", self._names))
+            raise CircuitError(f"there is no part called {shown(name)}.", remedy=_known("Parts", self._names))
         return self._index[name]
 
     def sensed_by(self, row: int) -> int:
@@ -305,7 +318,7 @@ class Network:
         name, sensed = self._names[row], self._senses[row]
         if sensed not in self._index or chr(self._kinds[self._index[sensed]]) != "V":
             raise CircuitError(
-                f"{name} senses the current of {sensed!r}, which is no voltage source here.",
+                f"{name} senses the current of {shown(sensed)}, which is no voltage source here.",
                 remedy="Name a voltage source; one of dc = 0 serves as an ammeter.",
             )
         return self._index[sensed]
@@ -399,6 +412,10 @@ class Network:
         """The exact response at frequencies in Hz; see `rcnet.exact.response`."""
         return _analysis("rcnet.exact", "response")(self, frequency, of, **options)  # type: ignore[no-any-return]
 
+    def noise(self, frequency: npt.ArrayLike, of: str, **options: Any) -> npt.NDArray[np.float64]:
+        """The density of the thermal noise at frequencies in Hz, V/sqrt(Hz); see `rcnet.exact.noise`."""
+        return _analysis("rcnet.exact", "noise")(self, frequency, of, **options)  # type: ignore[no-any-return]
+
     def operating_point(self) -> dict[str, float]:
         """Node voltages with every source at its dc value; see `rcnet.exact.operating_point`."""
         return _analysis("rcnet.exact", "operating_point")(self)  # type: ignore[no-any-return]
@@ -412,29 +429,6 @@ def _analysis(room: str, name: str) -> Any:
     # The analyses live in rooms above this one. A method looks its own up when called, so that no import
     # of this room points upward and a network can be built without loading any of them.
     return getattr(importlib.import_module(room), name)
-
-
-def check_name(name: str, what: str) -> None:
-    """Raise CircuitError unless `name` is printable text without blanks, of sensible length."""
-    if not isinstance(name, str) or not name:
-        raise CircuitError(f"a {what} is empty.", remedy="Give it a name.")
-    if len(name) > MAX_NAME:
-        raise CircuitError(
-            f"the {what} {name[:40]!r}... has {len(name)} characters.", remedy=f"Use at most {MAX_NAME}."
-        )
-    if not name.isprintable() or " " in name:
-        raise CircuitError(
-            f"the {what} {name!r} holds a blank or a control character.", remedy="Use letters and digits."
-        )
-
-
-def check_node(name: str) -> None:
-    """Raise CircuitError unless `name` can be a node; `gnd` cannot, because simulators take it for ground."""
-    check_name(name, "node name")
-    if name.lower() == "gnd":
-        raise CircuitError(
-            f"the node name {name!r} means ground to a simulator.", remedy="Write 0 for ground."
-        )
 
 
 def _known(what: str, names: Iterable[str]) -> str:
@@ -462,15 +456,16 @@ def _with_extras(part: Part, extras: dict[str, Any]) -> Part:
 def _source(letter: str, name: str, a: str, b: str, drive: dict[str, Any]) -> Source:
     from .drive import parse_drive
 
-    if not name or name[0].upper() != letter:
+    check_name(name, "source name")
+    if name[0].upper() != letter:
         raise CircuitError(
-            f"the {KINDS[letter].name} is called {name!r}.",
+            f"the {KINDS[letter].name} is called {shown(name)}.",
             remedy=f"Let its name begin with {letter}, as {letter}in.",
         )
     waveform = drive.pop("waveform", None)
     if waveform is not None and not isinstance(waveform, (Square, Sine, Step, Points)):
         raise CircuitError(
-            f"{name}: waveform is {waveform!r}.", remedy="Give a Square, Sine, Step or Points."
+            f"{name}: waveform is {shown(waveform)}.", remedy="Give a Square, Sine, Step or Points."
         )
     parsed = parse_drive(name, (a, b), drive)
     return parsed if waveform is None else replace(parsed, waveform=_only(waveform, parsed))

@@ -8,13 +8,16 @@ from collections.abc import Iterator
 
 Path = tuple[str | int, ...]
 
+_DEEPEST = 8  # keys within keys; no circuit file has more than four
+
 _NAME = r"""(?:"(?:[^"\\]|\\.)*"|'[^']*'|[A-Za-z0-9_-]+)"""
 _DOTTED = rf"{_NAME}(?:[ \t]*\.[ \t]*{_NAME})*"
 _HEADER = re.compile(rf"[ \t]*(\[\[?)[ \t]*({_DOTTED})[ \t]*\]")
 _KEY = re.compile(rf"[ \t]*({_DOTTED})[ \t]*=")
 # What a value is made of, as far as finding its end goes: strings, comments, brackets.
 _PIECE = re.compile(
-    r'"""(?:[^\\]|\\.)*?"{3,5}|\'\'\'.*?\'{3,5}|"(?:[^"\\\n]|\\.)*"|\'[^\'\n]*\'|#[^\n]*|[\[\]{}]|\n', re.DOTALL
+    r'"""(?:[^\\]|\\.)*?"{3,5}|\'\'\'.*?\'{3,5}|"(?:[^"\\\n]|\\.)*"|\'[^\'\n]*\'|#[^\n]*|[\[\]{}]|\n',
+    re.DOTALL,
 )
 
 
@@ -36,7 +39,7 @@ def line_table(text: str) -> dict[Path, int]:
                 table = (*table, counts[table])
             lines.setdefault(table, number)
         elif key := _KEY.match(statement):
-            path = (*table, *_pieces(key[1]))
+            path = (*table, *_pieces(key[1]))[:_DEEPEST]
             for depth in range(len(table) + 1, len(path) + 1):
                 lines.setdefault(path[:depth], number)
     return lines

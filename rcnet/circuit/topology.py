@@ -48,7 +48,7 @@ class Trouble:
 
 
 def loose_groups(network: Network, ties: str) -> list[tuple[int, ...]]:
-    """The groups of nodes, as indices, that parts of the kinds `ties` hold together but do not tie to ground."""
+    """The groups of nodes, as indices, that parts of the kinds `ties` join but do not tie to ground."""
     arrays = network.arrays()
     sets = _Sets(arrays.node_count)
     codes = {ord(letter) for letter in ties}

@@ -68,6 +68,7 @@ class Square:
         high: float,
         frequency: float,
         duty: float = 0.5,
+        *,
         rise: float = 0.0,
         fall: float = 0.0,
         delay: float = 0.0,
@@ -102,10 +103,17 @@ class Square:
         `stop` (the span looked at, s) is not needed here: the period is the scale.
         """
         edge = EDGE_SHARE * self.period
+        room = min(self.width, self.period - self.rise - self.width - self.fall)
+        if room > 0:  # a pulse or a gap shorter than the edge gets a shorter edge
+            edge = min(edge, room)
         rise = self.rise if self.rise > 0 else edge
         fall = self.fall if self.fall > 0 else edge
-        width = self.width - (rise - self.rise) / 2 - (fall - self.fall) / 2
-        return replace(self, rise=rise, fall=fall, width=max(width, 0.0))
+        width = max(self.width - (rise - self.rise) / 2 - (fall - self.fall) / 2, 0.0)
+        # Where the other edge leaves no room, as in a sawtooth, it gives way.
+        excess = max(rise + width + fall - self.period, 0.0)
+        if rise >= fall:
+            return replace(self, rise=rise - excess, fall=fall, width=width)
+        return replace(self, rise=rise, fall=fall - excess, width=width)
 
 
 @dataclass(frozen=True, slots=True)

@@ -2,6 +2,7 @@
 
 from .measures import COMPUTED, evaluate, measure
 from .profile import HALF_POWER_DB, Profile, decibels, half_power, profile
+from .sensitivities import sensitivity
 from .verdict import ClaimResult, Verdict, judge, overall
 
 __all__ = [
@@ -17,4 +18,5 @@ __all__ = [
     "measure",
     "overall",
     "profile",
+    "sensitivity",
 ]

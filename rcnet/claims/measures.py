@@ -3,54 +3,59 @@
 from __future__ import annotations
 
 import cmath
+import itertools
 import math
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from ..circuit import MEASURES, Network, measure_spec, parse_options
 from ..errors import UndecidedError
 from ..exact import (
-    dc_solvable,
     input_impedance,
     limit,
     node_pair,
     output_impedance,
     response,
     response_and_slope,
+    solver_for,
     span_of,
 )
 from .profile import PER_DECADE, decibels, half_power, profile
 
 Options = Mapping[str, float | str]
 Pair = tuple[int, int]
+Numbers = npt.NDArray[Any]
 
 
 def measure(network: Network, name: str, of: str | None = None, **options: Any) -> float:
     """One measure of a network, in the unit of the measures table.
 
-    name: a measure; of: a node or a pair `"a b"`, by default `out`; options: as the measure needs them, in base
-    units or as text (`at="1 kHz"`); a trailing underscore is dropped, so that `from_=20` can be written.
+    name: a measure; of: a node or a pair `"a b"`, by default `out`
+    options: as the measure needs them, in base units or as text (`at="1 kHz"`); a trailing underscore is
+        dropped, so that `from_=20` can be written
     Raises UndecidedError where the measure does not exist for this network, CircuitError for wrong names.
     """
     spec = measure_spec(name)
-    given = {key.rstrip("_"): value for key, value in options.items()}
-    parsed = parse_options(spec, given)
+    parsed = parse_options(spec, {key.rstrip("_"): value for key, value in options.items()})
     if of is None and "part" not in parsed:
         of = "out"
-    return evaluate(network, name, None if of is None else of, parsed)
+    return evaluate(network, name, of, parsed)
 
 
 def evaluate(network: Network, name: str, of: str | None, options: Options) -> float:
     """A measure with options already read; `of` may be None only for measures of a part."""
+    spec = MEASURES[name]
     function = COMPUTED.get(name)
     if function is None:
-        raise UndecidedError(f"{MEASURES[name].name} is not computed yet.", remedy="It comes with a later version.")
+        raise UndecidedError(f"{spec.name} is not computed yet.", remedy="It comes with a later version.")
     pair = node_pair(network, of) if of is not None else (0, 0)
     value = function(network, pair, options)
     if not math.isfinite(value):
-        raise UndecidedError(f"{name} is not a finite number here.")
+        raise UndecidedError(f"{spec.name} is not a finite number here.")
     return value
 
 
@@ -59,10 +64,7 @@ def _at(options: Options) -> float:
 
 
 def _omega(options: Options) -> float:
-    frequency = _at(options)
-    if not 0 < frequency < math.inf:
-        raise UndecidedError(f"this measure is taken at a finite frequency above zero, not at {frequency!r} Hz.")
-    return 2 * math.pi * frequency
+    return 2 * math.pi * _at(options)
 
 
 def _name(network: Network, of: Pair) -> str:
@@ -70,14 +72,39 @@ def _name(network: Network, of: Pair) -> str:
     return names[of[0]] if of[1] == 0 else f"{names[of[0]]} {names[of[1]]}"
 
 
+_NULL = 1e-8  # magnitudes below this are looked at twice
+
+
 def _level(network: Network, of: Pair, frequency: float) -> float:
-    if frequency in (0.0, math.inf):
-        value: complex = limit(network, of, high=frequency > 0)
+    if frequency == 0:
+        value: complex = limit(network, of, high=False)
     else:
         value = complex(response(network, [frequency], _name(network, of))[0])
+        if abs(value) < _NULL and _is_null(network, of, 2 * math.pi * frequency):
+            value = 0
     if value == 0:
-        raise UndecidedError(f"nothing arrives at the output at {frequency!r} Hz, so the gain is no finite number of dB.")
+        raise UndecidedError(
+            f"nothing arrives at the output at {frequency:.6g} Hz: its gain is no number of dB."
+        )
     return float(decibels(abs(value)))
+
+
+def _is_null(network: Network, of: Pair, omega: float) -> bool:
+    """True if the response vanishes so close to omega that no double can tell the two apart.
+
+    What is left of it there is the rounding of its terms, not an answer; likewise of
+    two voltages that are equal.
+    """
+    if of[1]:
+        a, b = response(network, [omega / (2 * math.pi)], [network.nodes[node] for node in of])[:, 0].tolist()
+        if abs(a - b) <= 64 * np.finfo(float).eps * min(abs(a), abs(b)):
+            return True
+    return bool(_vanishes(*response_and_slope(network, np.array([omega]), of), omega).any())
+
+
+def _vanishes(value: Numbers, slope: Numbers, omega: Numbers | float) -> npt.NDArray[np.bool_]:
+    """True where a response is zero, or so near one of its zeros that a double of omega cannot tell."""
+    return np.asarray(np.abs(value) <= 4 * np.finfo(float).eps * omega * np.abs(slope))
 
 
 def gain(network: Network, of: Pair, options: Options) -> float:
@@ -96,46 +123,74 @@ def phase(network: Network, of: Pair, options: Options) -> float:
     There it lies in (-180, 180]. Raises UndecidedError where the response vanishes on the way: the phase then
     jumps by 180 degrees, up or down alike.
     """
-    omega, name = _omega(options), _name(network, of)
-    start = min(span_of(network).low * 1e-6, omega)
-    steps = max(2, math.ceil(math.log10(omega / start) * PER_DECADE) + 1)
-    points = np.geomspace(start, omega, steps)
-    points[-1] = omega
-    values = response(network, points / (2 * math.pi), name)
-    first = cmath.phase(complex(values[0]))
-    if first < -math.pi * (1 - 1e-5):  # a hair's breadth above the axis at -180: the limit itself is +180
-        first += 2 * math.pi
-    turned = sum(
-        _turn(network, name, (w0, h0), (w1, h1), 40)
-        for w0, h0, w1, h1 in zip(
-            points[:-1].tolist(), values[:-1].tolist(), points[1:].tolist(), values[1:].tolist(), strict=True
-        )
-    )
+    target, lowest = _omega(options), span_of(network).low * 1e-6
+    points = [lowest]
+    if target > lowest:
+        steps = math.ceil(math.log10(target / lowest) * PER_DECADE) + 1
+        points = [*np.geomspace(lowest, target, steps)[:-1].tolist(), target]
+    stations = _stations(network, of, points)
+    start = cmath.phase(stations[0].value)
+    if start < -math.pi * (1 - 1e-5):  # a hair's breadth above the axis at -180: the limit itself is +180
+        start += 2 * math.pi
+    if target <= lowest:
+        # So far down the phase is its limit, a multiple of 90 degrees, less what it has turned since.
+        limiting = math.pi / 2 * round(start / (math.pi / 2))
+        return math.degrees(limiting + (start - limiting) * target / lowest)
+    turned = sum(_turn(network, of, a, b, 48) for a, b in itertools.pairwise(stations))
     # The sum only tells the number of whole turns; the digits come from the response itself.
-    own = cmath.phase(complex(values[-1]))
-    return math.degrees(own + 2 * math.pi * round((first + turned - own) / (2 * math.pi)))
+    own = cmath.phase(stations[-1].value)
+    return math.degrees(own + 2 * math.pi * round((start + turned - own) / (2 * math.pi)))
 
 
-Point = tuple[float, complex]
+@dataclass(frozen=True, slots=True)
+class _Station:
+    """The response at one omega, rad/s: its value, and the phase it turns per e-fold of omega there, rad."""
+
+    omega: float
+    value: complex
+    rate: float
 
 
-def _turn(network: Network, name: str, a: Point, b: Point, depth: int) -> float:
-    """The phase turned between two frequencies, rad, halving until each step is well under a quarter turn."""
-    if a[1] != 0 and b[1] != 0:
-        step = cmath.phase(b[1] / a[1])
-        if abs(step) < 1.0:
-            return step
-    if depth == 0 or a[1] == 0 or b[1] == 0:
-        raise UndecidedError(f"the response vanishes near {a[0] / (2 * math.pi):.6g} Hz, where its phase jumps.")
-    middle = math.sqrt(a[0] * b[0])
-    between = (middle, complex(response(network, [middle / (2 * math.pi)], name)[0]))
-    return _turn(network, name, a, between, depth - 1) + _turn(network, name, between, b, depth - 1)
+def _stations(network: Network, of: Pair, points: Sequence[float]) -> list[_Station]:
+    omega = np.array(points)
+    step = solver_for(network).block()
+    parts = [response_and_slope(network, omega[k : k + step], of) for k in range(0, len(omega), step)]
+    value, slope = (np.concatenate(pieces) for pieces in zip(*parts, strict=True))
+    lost = np.flatnonzero(_vanishes(value, slope, omega))
+    if len(lost):
+        where = omega[lost[0]] / (2 * math.pi)
+        raise UndecidedError(f"the response vanishes at {where:.6g} Hz, where its phase jumps.")
+    rate = omega * (slope / value).real
+    return [_Station(*triple) for triple in zip(points, value.tolist(), rate.tolist(), strict=True)]
+
+
+def _turn(network: Network, of: Pair, a: _Station, b: _Station, depth: int) -> float:
+    """The phase turned between two frequencies, rad.
+
+    Values alone tell it only up to whole turns, and a long ladder turns more than once between two points;
+    the slopes tell how often. Where the two do not agree the interval is halved.
+    """
+    expected = (a.rate + b.rate) / 2 * math.log(b.omega / a.omega)
+    step = cmath.phase(b.value / a.value)
+    step += 2 * math.pi * round((expected - step) / (2 * math.pi))
+    if abs(step - expected) < 0.5 and abs(expected) < 8:
+        return step
+    if depth == 0:
+        where = a.omega / (2 * math.pi)
+        raise UndecidedError(f"the response vanishes near {where:.6g} Hz, where its phase jumps.")
+    middle = _stations(network, of, [math.sqrt(a.omega) * math.sqrt(b.omega)])[0]
+    return _turn(network, of, a, middle, depth - 1) + _turn(network, of, middle, b, depth - 1)
 
 
 def group_delay(network: Network, of: Pair, options: Options) -> float:
     """-d(phase)/d(omega) at a frequency, s: -Re(H'/H) with H' = dH/ds."""
-    value, slope = response_and_slope(network, np.array([_omega(options)]), of)
-    if value[0] == 0:
+    omega, lowest = _omega(options), span_of(network).low * 1e-5
+    if omega < lowest and limit(network, of, high=False) == 0:
+        # A response that vanishes at zero keeps a delay there. So far below every corner that is it, to ten
+        # digits; further down, rounding would take more than the limit gives.
+        omega = lowest
+    value, slope = response_and_slope(network, np.array([omega]), of)
+    if _vanishes(value, slope, omega).any():
         raise UndecidedError("the response vanishes there, so it has no phase.")
     return -float((slope[0] / value[0]).real)
 
@@ -155,14 +210,15 @@ def cutoff(network: Network, of: Pair, options: Options) -> float:
     if edge is None:
         if lower is not None and upper is not None:
             raise UndecidedError(
-                f"there are two cutoffs, {lower:.6g} Hz and {upper:.6g} Hz.", remedy='Add edge = "lower" or "upper".'
+                f"there are two cutoffs, {lower:.6g} Hz and {upper:.6g} Hz.",
+                remedy='Add edge = "lower" or "upper".',
             )
         found = upper if upper is not None else lower
     else:
         found = lower if edge == "lower" else upper
     if found is None:
-        which = f"{edge} " if edge else ""
-        raise UndecidedError(f"the response has no {which}cutoff: it stays within 3.01 dB of its greatest value.")
+        which, side = {"lower": ("lower ", " below"), "upper": ("upper ", " above")}.get(str(edge), ("", ""))
+        raise UndecidedError(f"the response has no {which}cutoff: it stays within 3.01 dB of its peak{side}.")
     return found
 
 
@@ -202,12 +258,13 @@ def output_impedance_at(network: Network, of: Pair, options: Options) -> float:
 
 
 def elmore_delay(network: Network, of: Pair, options: Options) -> float:
-    """The first moment of the impulse response over its area, -H'(0)/H(0), s (W. C. Elmore, J. Appl. Phys. 19, 1948)."""
-    if not dc_solvable(network):
-        raise UndecidedError("a node has no dc path, so the impulse response has no area to divide by.")
-    value, slope = response_and_slope(network, np.zeros(1), of)
-    if abs(value[0]) == 0:
+    """The first moment of the impulse response over its area, -H'(0)/H(0), s.
+
+    W. C. Elmore, J. Appl. Phys. 19:55-63, 1948.
+    """
+    if limit(network, of, high=False) == 0:
         raise UndecidedError("nothing passes at dc, so the impulse response has no area to divide by.")
+    value, slope = response_and_slope(network, np.zeros(1), of)
     return -float((slope[0] / value[0]).real)
 
 

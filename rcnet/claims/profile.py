@@ -17,7 +17,7 @@ from ..exact import limit, natural_frequencies, response, span_of
 Float = npt.NDArray[np.float64]
 
 HALF_POWER_DB = 10 * math.log10(2)  # 3.0103 dB: power is half
-PER_DECADE = 32  # a response with real poles turns over about a decade; this brackets every turn many times over
+PER_DECADE = 32  # a response with real poles turns over about a decade; this brackets each turn many times
 _TIE_DB = 1e-9  # two peaks closer than this are equally high
 
 
@@ -50,7 +50,9 @@ def profile(network: Network, of: tuple[int, int]) -> Profile:
     return _profile(network, network.arrays().values.tobytes(), len(network), of)
 
 
-@lru_cache(maxsize=64)
+@lru_cache(
+    maxsize=8
+)  # one circuit asks for the same few profiles again and again; many circuits must not pile up
 def _profile(network: Network, _values: bytes, _parts: int, of: tuple[int, int]) -> Profile:
     omega = _grid(network)
     text = _text(network, of)
@@ -107,11 +109,15 @@ def _turns(omega: Float, level: Float, level_at: Callable[[float], float]) -> li
 
 
 def _highest(level_at: Callable[[float], float], low: float, high: float) -> float:
-    """The maximum between two values of ln omega, by golden section (Kiefer 1953) until rounding stops it."""
+    """The maximum between two values of ln omega, by golden section (J. Kiefer, Proc. AMS 4:502-506, 1953).
+
+    A ten-millionth of the interval is enough: the top is flat, and the height off by the square of that.
+    """
+    enough = 1e-7 * (high - low)
     golden = (math.sqrt(5) - 1) / 2
     left, right = high - golden * (high - low), low + golden * (high - low)
     at_left, at_right = level_at(math.exp(left)), level_at(math.exp(right))
-    while high - low > 1e-8:
+    while high - low > enough:
         if at_left >= at_right:
             high, right, at_right = right, left, at_left
             left = high - golden * (high - low)
@@ -124,12 +130,19 @@ def _highest(level_at: Callable[[float], float], low: float, high: float) -> flo
 
 
 def half_power(found: Profile, edge: str) -> float | None:
-    """The half-power frequency above (`upper`) or below (`lower`) the peak, Hz; None where there is none."""
+    """The half-power frequency above (`upper`) or below (`lower`) the peak, Hz; None where there is none.
+
+    A band-stop passes both ends alike: it has its peak at zero and at infinity, and an edge on the inner
+    side of each. Its `lower` cutoff is the lower frequency of the two, as the trade has it.
+    """
     threshold = found.peak - HALF_POWER_DB
+    upward = edge == "upper"
+    if found.peaks == (0.0, math.inf):
+        upward = not upward
     crossings = [
         crossing
         for peak in found.peaks
-        if (crossing := _crossing(found, peak, threshold, upward=edge == "upper")) is not None
+        if (crossing := _crossing(found, peak, threshold, upward=upward)) is not None
     ]
     if not crossings:
         return None
@@ -138,22 +151,21 @@ def half_power(found: Profile, edge: str) -> float | None:
 
 def _crossing(found: Profile, peak: float, threshold: float, *, upward: bool) -> tuple[float, float] | None:
     """The first crossing on one side of a peak: (rad/s, distance from the peak in ln omega)."""
-    below = found.level < threshold
-    if upward:
-        candidates = np.flatnonzero(below & (found.omega > peak))
-    else:
-        candidates = np.flatnonzero(below & (found.omega < peak))[::-1]
-    if len(candidates):
-        outer = int(candidates[0])
-        inner = outer - 1 if upward else outer + 1
-        end = found.omega[outer]
-        start = found.omega[inner] if 0 <= inner < len(found.omega) else peak
-        if peak not in (0.0, math.inf) and ((start < peak) == upward):
-            start = peak
-    else:
+    omega = found.omega
+    below = np.flatnonzero((found.level < threshold) & (omega > peak if upward else omega < peak))
+    if not len(below):
         return None
-    where = root(lambda w: found.level_at(w) - threshold, float(min(start, end)), float(max(start, end)))
-    near = max(peak, 1e-300) if peak < math.inf else 1e300
+    outer = int(below[0] if upward else below[-1])
+    inner = outer - 1 if upward else outer + 1
+    # Between a peak inside and its neighbour on the grid lies no other point; a limit has none beside it.
+    start = (
+        float(omega[inner]) if 0 <= inner < len(omega) else float(omega[outer]) * (1e-12 if upward else 1e12)
+    )
+    if 0 < peak < math.inf and (start < peak) == upward:
+        start = peak
+    end = float(omega[outer])
+    where = root(lambda w: found.level_at(w) - threshold, min(start, end), max(start, end))
+    near = min(max(peak, 1e-300), 1e300)
     return where, abs(math.log(where / near))
 
 
@@ -179,16 +191,18 @@ def root(function: Callable[[float], float], low: float, high: float) -> float:
             c, b, fc, fb = b, a, fb, fa
         a, fa = x, fx
         best, f_best = (a, fa) if abs(fa) < abs(fb) else (b, fb)
-        # One unit in the last place of omega is 2e-16 in its logarithm, but the logarithm itself has fewer digits.
+        # A unit in the last place of omega is 2e-16 in its logarithm, but the logarithm has fewer digits.
         tolerance = max(2e-16, abs(best) * 1.2e-16)
         if f_best == 0 or abs(b - a) <= 2 * tolerance:
             return math.exp(best)
         limit_t = tolerance / abs(b - a)
-        t = min(1 - limit_t, max(limit_t, _next_step(a, b, c, fa, fb, fc)))
+        t = min(1 - limit_t, max(limit_t, _next_step((a, b, c), (fa, fb, fc))))
     return math.exp(best)
 
 
-def _next_step(a: float, b: float, c: float, fa: float, fb: float, fc: float) -> float:
+def _next_step(points: tuple[float, float, float], values: tuple[float, float, float]) -> float:
+    """Where to look next between a (0) and b (1): inverse quadratic where that is safe, else half-way."""
+    (a, b, c), (fa, fb, fc) = points, values
     xi, phi = (a - b) / (c - b), (fa - fb) / (fc - fb)
     if phi * phi < xi and (1 - phi) * (1 - phi) < 1 - xi:
         return fa / (fb - fa) * fc / (fb - fc) + (c - a) / (b - a) * fa / (fc - fa) * fb / (fc - fb)

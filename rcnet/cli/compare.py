@@ -16,15 +16,17 @@ from .options import FAILED, OK, file_argument, json_option, print_json, quiet_o
 @quiet_option
 @click.option("-o", "--output", type=click.Path(), help="Write the comparison there as JSON.")
 def command(file: str, results: str, as_json: bool, quiet: bool, output: str | None) -> int:
-    """Hold a results file (.raw, .csv) against the exact curves: where they differ, and by how much.
+    r"""Hold a results file (.raw, .csv) against the exact curves.
+
+    Tells where the two differ, and by how much.
 
     \b
     ngspice -b -r results.raw noise-filter.cir
     rcnet compare noise-filter.rc.toml results.raw
     """
     from ..compare import compare
-    from ..confirm import load
     from ..curves import read_results
+    from ..loading import load
     from ..report.document import comparison_document, to_json
     from ..report.terminal import console, show_comparison
     from ..system.files import write_file
@@ -36,7 +38,5 @@ def command(file: str, results: str, as_json: bool, quiet: bool, output: str | N
     if as_json:
         print_json(document)
     else:
-        out = console()
-        out.print(comparison.circuit.name, style="bold")
-        show_comparison(comparison, out, quiet=quiet)
+        show_comparison(comparison, console(), quiet=quiet)
     return OK if comparison.verdict == "agree" else FAILED

@@ -18,6 +18,7 @@ from .options import (
     error_document,
     files_argument,
     folder_names,
+    folder_option,
     json_option,
     opinion_option,
     print_json,
@@ -33,53 +34,66 @@ from .options import (
 @json_option
 @quiet_option
 @strict_option
-@opinion_option("auto")
+@opinion_option(
+    *("auto", "ngspice", "ngspice-library", "read-back", "none"),
+    default="auto",
+    about="Who else is asked; auto is ngspice where it is installed, else the read-back.",
+)
 @timeout_option
 @anyway_option
-@click.option("-o", "--output", type=click.Path(), default="out", show_default=True, help="Folder for the results.")
-def command(
-    files: tuple[str, ...],
-    as_json: bool,
-    quiet: bool,
-    strict: bool,
-    second_opinion: Any,
-    timeout: float,
-    anyway: bool,
-    output: str,
-) -> int:
-    """Check circuits, write their netlists, get a second opinion, compare; keep it all in out/NAME/.
+@folder_option
+def command(files: tuple[str, ...], as_json: bool, quiet: bool, strict: bool, output: str, **ask: Any) -> int:
+    r"""Check circuits, get a second opinion on them, compare the two.
+
+    The netlist, the other solver's results and the comparison are kept in out/NAME/.
 
     \b
     rcnet confirm noise-filter.rc.toml
     rcnet confirm --second-opinion read-back circuits/*.rc.toml
     """
-    from ..confirm import confirm, load
     from ..report.document import confirmation_document
+    from ..report.terminal import console, show_confirmation, show_total
 
     documents: list[Any] = []
+    words: list[str] = []
     code = OK
+    out = console()
     names = folder_names(files)
     with ExitStack() as stack:
-        runner = None
-        if second_opinion == "ngspice-library":
+        if ask["second_opinion"] == "ngspice-library":
             from ..opinion import LibraryRunner
 
-            runner = stack.enter_context(LibraryRunner())
-        for file in with_progress(names, len(names), hidden=as_json or quiet):
-            folder = Path(output) / names[file]
+            ask["runner"] = stack.enter_context(LibraryRunner())
+        for file in with_progress(files, len(files), hidden=as_json or quiet):
             try:
-                done = confirm(load(file), folder, which=second_opinion, timeout=timeout, anyway=anyway, runner=runner)
+                done = _confirm(file, Path(output) / names[file], **ask)
             except RcnetError as exc:
                 complain(exc.at(file))
                 documents.append(error_document(exc.at(file)))
+                words.append("error")
                 code = IMPOSSIBLE
                 continue
-            code = max(code, OK if done.passes(strict=strict) else FAILED)
-            documents.append(confirmation_document(done))
+            verdict = done.verdict(strict=strict)
+            code = max(code, OK if verdict == "passes" else FAILED)
+            documents.append(confirmation_document(done, strict=strict))
+            words.append(verdict)
             if not as_json:
-                from ..report.terminal import console, show_confirmation
-
-                show_confirmation(done, console(), quiet=quiet)
+                show_confirmation(done, out, strict=strict, quiet=quiet)
     if as_json:
-        print_json(documents[0] if len(names) == 1 else documents)
+        print_json(documents[0] if len(files) == 1 else documents)
+    elif len(files) > 1:
+        show_total(words, out)
     return code
+
+
+def _confirm(file: str, folder: Path, *, second_opinion: Any, **how: Any) -> Any:
+    from ..confirm import confirm, forget
+    from ..loading import load
+
+    try:
+        circuit = load(file)
+    except RcnetError:
+        # What an earlier version of the file led to must not be taken for news.
+        forget(folder)
+        raise
+    return confirm(circuit, folder, which=second_opinion, **how)

@@ -1,7 +1,8 @@
-"""Options that several commands share, and how a command ends."""
+"""Options that several commands share, and how a command speaks."""
 
 from __future__ import annotations
 
+import os
 import sys
 from collections.abc import Callable, Iterable
 from pathlib import Path
@@ -14,13 +15,31 @@ from ..errors import RcnetError
 Command = TypeVar("Command", bound=Callable[..., Any])
 
 OK, FAILED, IMPOSSIBLE, INTERRUPTED = 0, 1, 2, 130
+_JSON = "rcnet.json"
+
+
+def _note_json(ctx: click.Context, _: click.Parameter, wanted: bool) -> bool:
+    # Whoever reports an error must know that standard output belongs to one JSON document.
+    ctx.meta[_JSON] = wanted
+    return wanted
+
 
 files_argument = click.argument("files", nargs=-1, required=True, type=click.Path(), metavar="FILE...")
 file_argument = click.argument("file", type=click.Path(), metavar="FILE")
-json_option = click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else.")
+json_option = click.option(
+    "--json",
+    "as_json",
+    is_flag=True,
+    is_eager=True,
+    callback=_note_json,
+    help="Print one JSON document and nothing else.",
+)
 quiet_option = click.option("--quiet", is_flag=True, help="Print one line for each circuit.")
 strict_option = click.option("--strict", is_flag=True, help="Let warnings count as failures.")
 anyway_option = click.option("--anyway", is_flag=True, help="Write the netlist although findings are errors.")
+folder_option = click.option(
+    "-o", "--output", type=click.Path(), default="out", show_default=True, help="Folder for the results."
+)
 timeout_option = click.option(
     "--timeout",
     type=click.FloatRange(min=0, min_open=True),
@@ -31,14 +50,10 @@ timeout_option = click.option(
 )
 
 
-def opinion_option(default: str) -> Callable[[Command], Command]:
+def opinion_option(*choices: str, default: str, about: str) -> Callable[[Command], Command]:
     """`--second-opinion`; the choices are written out so that `--help` loads no simulator code."""
     return click.option(
-        "--second-opinion",
-        type=click.Choice(["auto", "ngspice", "ngspice-library", "read-back", "none"]),
-        default=default,
-        show_default=True,
-        help="Who else is asked; auto is ngspice where it is installed, else the read-back.",
+        "--second-opinion", type=click.Choice(choices), default=default, show_default=True, help=about
     )
 
 
@@ -46,12 +61,23 @@ def print_json(document: Any) -> None:
     """One JSON document on standard output."""
     from ..report.document import to_json
 
-    click.echo(to_json(document), nl=False)
+    encoding = (getattr(sys.stdout, "encoding", None) or "ascii").lower().replace("-", "")
+    click.echo(to_json(document, ascii_only=encoding != "utf8"), nl=False)
 
 
-def complain(error: RcnetError) -> None:
-    """An error on standard error, one line for each problem."""
-    click.echo(f"rcnet: {error}" if len(error.problems) == 1 else str(error), err=True)
+def complain(error: RcnetError, *, as_json: bool = False) -> None:
+    """An error on standard error, one line for each problem; where JSON was asked for, as that too."""
+    from ..report.plain import printable
+
+    for problem in error.problems:
+        click.echo(f"rcnet: {printable(str(problem))}", err=True)
+    if as_json:
+        print_json(error_document(error))
+
+
+def json_wanted(ctx: click.Context) -> bool:
+    """True if the command that ran under this context was asked for JSON."""
+    return bool(ctx.meta.get(_JSON))
 
 
 def error_document(error: RcnetError) -> dict[str, Any]:
@@ -80,14 +106,19 @@ def folder_names(files: Iterable[str]) -> dict[str, str]:
     from ..circuit import circuit_name
 
     listed = list(dict.fromkeys(files))
-    plain = [circuit_name(file) for file in listed]
+    plain = [_safe(circuit_name(file)) for file in listed]
     names: dict[str, str] = {}
     for file, name in zip(listed, plain, strict=True):
         clashes = sum(other.lower() == name.lower() for other in plain) > 1
-        wanted = f"{Path(file).resolve().parent.name}-{name}" if clashes else name
+        wanted = f"{Path(os.path.abspath(file)).parent.name}-{name}" if clashes else name  # noqa: PTH100
         number, unique = 1, wanted
         while unique.lower() in {taken.lower() for taken in names.values()}:
             number += 1
             unique = f"{wanted}-{number}"
         names[file] = unique
     return names
+
+
+def _safe(name: str) -> str:
+    # A file called `...rc.toml` must not send its results to the folder above.
+    return name if name.strip(". ") else "circuit"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import cmath
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
@@ -11,23 +12,26 @@ import numpy as np
 
 from ..circuit import Circuit, Network
 from ..curves import Analysis, Curve, Curves
-from ..errors import ResultsError, RcnetError
+from ..errors import RcnetError, ResultsError
 from ..exact import Drive, dc_solvable, require_solvable, response_and_slope, solver_for
 from ..netlist import Names, as_written, safe_names
-from .allowance import Float, Numbers, axis_allowance, rounding_allowance
+from ..values import format_quantity
+from .allowance import DENSE_LIMIT, Float, Numbers, axis_allowance, rounding_allowance
 from .fsv import Fsv, fsv
 
 Verdict = Literal["agree", "differ"]
 MOST_NODES_IN_LARGE = 16  # of a network too large to bound every node, this many are compared
+COARSE = 1e-3  # an allowance above this share of a value, a hundredth of a decibel, is worth telling
 
 
 @dataclass(frozen=True, slots=True)
 class Difference:
     """How far apart two values are at one place.
 
-    at: Hz, or 0 for an operating point; exact, other: V or A; db: 20 log10 |other/exact|, deg: the phase between
-    them (None where a value is zero, or the curve is real); relative: |other - exact| / |exact|, or over the
-    curve's greatest exact value where the exact one is zero
+    at: Hz, or 0 for an operating point; exact, other: V or A
+    db: 20 log10 |other/exact|, deg: phase of other less that of exact; None where a value is zero, and deg
+        also where the curve is real
+    relative: |other - exact| / |exact|, or over the curve's greatest exact value where the exact one is zero
     allowed: how far the other may lie from the exact value here, V or A
     """
 
@@ -51,7 +55,10 @@ class Span:
 
 @dataclass(frozen=True)
 class CurveComparison:
-    """One curve compared: its verdict, its worst place, its spans, and how alike the two look (FSV)."""
+    """One curve compared: its verdict, its worst place, its spans, and how alike the two look (FSV).
+
+    coarse: from where to where, Hz, the allowance is more than a hundredth of a decibel; None for nowhere
+    """
 
     name: str
     analysis: Analysis
@@ -60,6 +67,7 @@ class CurveComparison:
     worst: Difference
     spans: tuple[Span, ...]
     fsv: Fsv | None
+    coarse: tuple[float, float] | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -87,40 +95,63 @@ class Comparison:
         return "differ" if any(curve.verdict == "differ" for curve in self.curves) else "agree"
 
 
-def compare(circuit: Circuit, curves: Curves, names: Names | None = None, who: str | None = None) -> Comparison:
+def compare(
+    circuit: Circuit, curves: Curves, names: Names | None = None, who: str | None = None
+) -> Comparison:
     """Hold results against the exact curves, at the results' own points.
 
     names: the names used in the netlist the results come from; by default those `write` gives
+    who: what the results are called in reports; by default where they come from
     Raises ResultsError where nothing in the results is about this circuit, UnsolvableError where the circuit
     has no solution to compare with.
     """
     held = as_written(circuit)
     targets = _Targets(held.network, names or safe_names(held.network))
-    uncompared: list[Uncompared] = []
-    chosen: dict[tuple[Analysis, bytes], list[tuple[Curve, _Target]]] = {}
-    for curve in curves:
-        target, why = targets.of(curve)
-        if target is None:
-            uncompared.append(Uncompared(curve.name, curve.analysis, why))
-        else:
-            chosen.setdefault((curve.analysis, curve.axis.tobytes()), []).append((curve, target))
-    _require_about(held, curves, [curve for group in chosen.values() for curve, _ in group])
+    chosen, uncompared = _sorted_out(curves, targets)
+    _require_about(held, curves, chosen)
+    groups: dict[tuple[Analysis, bytes], list[_Pair]] = {}
+    for pair in chosen:
+        groups.setdefault((pair[0].analysis, pair[0].axis.tobytes()), []).append(pair)
     compared: list[CurveComparison] = []
-    for (analysis, _), group in chosen.items():
+    for (analysis, _), group in groups.items():
         kept, dropped = _affordable(held, group)
         uncompared += dropped
-        if analysis == "operating point" and not dc_solvable(held.network):
-            why = "the circuit has no operating point: a node has no path to ground for dc."
+        if (why := _no_exact_curve(held, analysis, kept)) is not None:
             uncompared += [Uncompared(curve.name, analysis, why) for curve, _ in kept]
-            continue
-        compared += _group(held.network, analysis, kept)
+        else:
+            compared += _group(held.network, analysis, kept)
     if not compared:
         raise ResultsError(
-            f"nothing in the results can be compared: {uncompared[0].why if uncompared else 'they hold no curve'}",
+            f"nothing in the results can be compared: {uncompared[0].why}",
             file=curves.source,
             remedy="Give the results of an ac analysis or an operating point.",
         )
-    return Comparison(circuit, who or curves.source, tuple(compared), tuple(uncompared), curves.remarks)
+    remarks = (*curves.remarks, *_coarse_remarks(compared))
+    return Comparison(circuit, who or curves.source, tuple(compared), tuple(uncompared), remarks)
+
+
+def _no_exact_curve(circuit: Circuit, analysis: Analysis, group: Sequence[_Pair]) -> str | None:
+    """Why there is no exact curve to hold these against, where that is so."""
+    at_zero = analysis == "operating point" or not group[0][0].axis.all()
+    if at_zero and not dc_solvable(circuit.network):
+        return "the circuit has no one answer at dc: a node has no path to ground, or sources form a loop."
+    return None
+
+
+def _coarse_remarks(compared: Sequence[CurveComparison]) -> list[str]:
+    """What the verdict leaves out: where an allowance is so wide that small differences cannot show."""
+    wide = [(curve.name, *curve.coarse) for curve in compared if curve.coarse is not None]
+    if not wide:
+        return []
+    names = ", ".join(dict.fromkeys(name for name, _, _ in wide[:4])) + (
+        " and others" if len(wide) > 4 else ""
+    )
+    low, high = min(start for _, start, _ in wide), max(stop for _, _, stop in wide)
+    where = f" between {format_quantity(low, 'Hz')} and {format_quantity(high, 'Hz')}" if high else ""
+    return [
+        f"{names}: in places{where} rounding, or the few digits of the results, may move a value by more "
+        "than 0.01 dB, so smaller differences do not count there."
+    ]
 
 
 # ---------------------------------------------------------------------- which curve is what
@@ -133,6 +164,9 @@ class _Target:
     nodes: tuple[int, int] = (0, 0)
     source: int | None = None
     name: str = ""
+
+
+_Pair = tuple[Curve, _Target]
 
 
 class _Targets:
@@ -180,53 +214,75 @@ def _lookup(table: Mapping[str, str]) -> dict[str, int]:
     return found
 
 
-def _require_about(circuit: Circuit, curves: Curves, chosen: Sequence[Curve]) -> None:
-    if not chosen:
-        some = ", ".join(curve.name for curve in curves.curves[:6]) or "none"
-        known = ", ".join(f"v({node})" for node in circuit.network.nodes[1:7])
-        if all(curve.analysis not in ("ac", "operating point") for curve in curves):
+def _sorted_out(curves: Curves, targets: _Targets) -> tuple[list[_Pair], list[Uncompared]]:
+    """Which curves can be compared, with what they are, and which cannot. Raises ResultsError."""
+    chosen: list[_Pair] = []
+    others: list[Uncompared] = []
+    for curve in curves:
+        target, why = targets.of(curve)
+        if target is None:
+            others.append(Uncompared(curve.name, curve.analysis, why))
+            continue
+        if not (np.isfinite(curve.values).all() and np.isfinite(curve.axis).all()):
             raise ResultsError(
-                "the results hold neither an ac analysis nor an operating point.",
+                f"{curve.name} holds a value that is no finite number.",
                 file=curves.source,
-                remedy="Those two are compared now; transients and noise come later.",
+                remedy="Run the simulation again; its results are not to be believed.",
             )
+        if len(curve):
+            chosen.append((curve, target))
+        else:
+            others.append(Uncompared(curve.name, curve.analysis, "it holds no point."))
+    return chosen, others
+
+
+def _require_about(circuit: Circuit, curves: Curves, chosen: Sequence[_Pair]) -> None:
+    """Raise ResultsError unless the results are about this circuit and its output."""
+    if all(curve.analysis not in ("ac", "operating point") for curve in curves):
+        raise ResultsError(
+            "the results hold neither an ac analysis nor an operating point.",
+            file=curves.source,
+            remedy="Those two are compared now; transients and noise come later.",
+        )
+    if not chosen:
+        some = ", ".join(curve.name for curve in curves.curves[:6])
+        known = ", ".join(f"v({node})" for node in circuit.network.nodes[1:7])
         raise ResultsError(
             f"the results are not about this circuit: they hold {some}.",
             file=curves.source,
             remedy=f"The circuit's voltages are {known}.",
         )
-    names = {name for curve in chosen for name in curve.name.lower()[2:-1].split(",")}
+    # The output at dc says little: where there are ac curves, they must hold it.
+    main = "ac" if any(curve.analysis == "ac" for curve, _ in chosen) else "operating point"
+    held = {node for curve, target in chosen if curve.analysis == main for node in target.nodes}
     for node in circuit.output:
-        safe = safe_names(circuit.network).nodes[node].lower()
-        if node.lower() not in names and safe not in names:
+        if circuit.network.node_index(node) not in held | {0}:
             raise ResultsError(
-                f"the results hold no voltage of the output {node!r}.",
+                f"the results of the {'ac analysis' if main == 'ac' else main} hold no voltage of the output "
+                f"{node!r}.",
                 file=curves.source,
                 remedy=f"Save v({node}) too, or name another output in the circuit.",
             )
 
 
-def _affordable(
-    circuit: Circuit, group: list[tuple[Curve, _Target]]
-) -> tuple[list[tuple[Curve, _Target]], list[Uncompared]]:
+def _affordable(circuit: Circuit, group: list[_Pair]) -> tuple[list[_Pair], list[Uncompared]]:
     """All curves of a network of ordinary size; of a very large one the output and a sample of the others."""
-    from .allowance import DENSE_LIMIT
-
     if circuit.network.arrays().node_count + len(circuit.network.sources) <= DENSE_LIMIT:
         return group, []
     outputs = {circuit.network.node_index(node) for node in circuit.output}
     first = [pair for pair in group if outputs.intersection(pair[1].nodes) and pair[1].source is None]
-    rest = [pair for pair in group if pair not in first]
+    rest = [pair for pair in group if not any(pair is other for other in first)]
     step = max(1, math.ceil(len(rest) / MOST_NODES_IN_LARGE))
     kept = [*first, *rest[::step]]
     why = "in a network this large the output and a sample of the other curves are compared."
-    return kept, [Uncompared(curve.name, curve.analysis, why) for curve, target in rest if (curve, target) not in kept]
+    left = [curve for number, (curve, _) in enumerate(rest) if number % step]
+    return kept, [Uncompared(curve.name, curve.analysis, why) for curve in left]
 
 
 # ---------------------------------------------------------------------- one analysis at one set of points
 
 
-def _group(network: Network, analysis: Analysis, group: list[tuple[Curve, _Target]]) -> list[CurveComparison]:
+def _group(network: Network, analysis: Analysis, group: list[_Pair]) -> list[CurveComparison]:
     axis = group[0][0].axis
     dc = analysis == "operating point"
     require_solvable(network, dc=dc)
@@ -237,8 +293,9 @@ def _group(network: Network, analysis: Analysis, group: list[tuple[Curve, _Targe
     targets = [target for _, target in group]
     exact = _exact(network, s, drive, targets)
     rows = _unknown_rows(network, targets)
-    bound, _ = rounding_allowance(network, s, drive, sorted({row for pair in rows for row in pair}))
-    index = {row: k for k, row in enumerate(sorted({row for pair in rows for row in pair}))}
+    wanted = sorted({row for own in rows for row in own})
+    index = {row: k for k, row in enumerate(wanted)}
+    bound = rounding_allowance(network, s, drive, wanted)
     result = []
     for number, (curve, target) in enumerate(group):
         allowed = sum((bound[index[row]] for row in rows[number]), start=np.zeros(len(axis)))
@@ -246,7 +303,7 @@ def _group(network: Network, analysis: Analysis, group: list[tuple[Curve, _Targe
             allowed = allowed + 2 * curve.resolution
         if curve.axis_resolution is not None and not dc and target.source is None:
             allowed = allowed + axis_allowance(curve.axis_resolution, _slope(network, axis, target, drive))
-        result.append(_judged(target.name, analysis, axis, exact[number], curve.values, allowed))
+        result.append(_judged((target.name, analysis), axis, exact[number], curve.values, allowed))
     return result
 
 
@@ -256,7 +313,9 @@ def _exact(network: Network, s: Numbers, drive: Numbers, targets: Sequence[_Targ
     answer = np.empty((len(targets), len(s)), dtype=np.complex128 if np.iscomplexobj(s) else np.float64)
     for start in range(0, len(s), step):
         part = slice(start, start + step)
-        solution = solver.solve(s[part], Drive(drive), currents_too=any(t.source is not None for t in targets))
+        solution = solver.solve(
+            s[part], Drive(drive), currents_too=any(t.source is not None for t in targets)
+        )
         for row, target in enumerate(targets):
             if target.source is None:
                 value = solution.voltages[target.nodes[0]] - solution.voltages[target.nodes[1]]
@@ -272,7 +331,9 @@ def _unknown_rows(network: Network, targets: Sequence[_Target]) -> list[list[int
 
     branch_of = nodal.equations(network).branch_of
     return [
-        [branch_of[target.source]] if target.source is not None else [node - 1 for node in target.nodes if node]
+        [branch_of[target.source]]
+        if target.source is not None
+        else [node - 1 for node in target.nodes if node]
         for target in targets
     ]
 
@@ -287,13 +348,15 @@ def _slope(network: Network, axis: Float, target: _Target, drive: Numbers) -> Nu
 
 
 def _judged(
-    name: str, analysis: Analysis, axis: Float, exact: Numbers, other: Numbers, allowed: Float
+    what: tuple[str, Analysis], axis: Float, exact: Numbers, other: Numbers, allowed: Float
 ) -> CurveComparison:
     distance = np.abs(other - exact)
-    beyond = distance > allowed
+    # Written so that an allowance that is no number counts as none.
+    beyond = ~(distance <= allowed)
     sizes = np.abs(exact)
     scale = np.where(sizes > 0, sizes, max(float(sizes.max(initial=0.0)), np.finfo(float).tiny))
-    relative = distance / scale
+    with np.errstate(over="ignore"):
+        relative = np.minimum(distance / scale, np.finfo(float).max)
 
     def difference(k: int) -> Difference:
         return _difference(float(axis[k]), exact[k], other[k], float(relative[k]), float(allowed[k]))
@@ -303,22 +366,30 @@ def _judged(
         for a, b in _runs(beyond)
     )
     worst = int(np.argmax(np.where(beyond, relative, -1.0) if beyond.any() else relative))
-    look = _alike(axis, exact, other) if analysis == "ac" else None
-    return CurveComparison(
-        name, analysis, len(axis), "differ" if spans else "agree", difference(worst), spans, look
-    )
+    look = _alike(axis, exact, other) if what[1] == "ac" else None
+    wide = axis[allowed > COARSE * sizes]
+    coarse = (float(wide[0]), float(wide[-1])) if len(wide) and sizes.any() else None
+    verdict: Verdict = "differ" if spans else "agree"
+    return CurveComparison(*what, len(axis), verdict, difference(worst), spans, look, coarse)
 
 
 def _difference(at: float, exact: Numbers, other: Numbers, relative: float, allowed: float) -> Difference:
-    if not np.iscomplexobj(exact) and not np.iscomplexobj(other):
-        db = 20 * math.log10(abs(other / exact)) if exact and other else None
-        return Difference(at, float(exact), float(other), db, None, relative, allowed)
+    real = not np.iscomplexobj(exact) and not np.iscomplexobj(other)
     a, b = complex(exact), complex(other)
-    if a == 0 or b == 0:
-        return Difference(at, a, b, None, None, relative, allowed)
-    db = 20 * (math.log10(abs(b)) - math.log10(abs(a)))
-    turned = math.atan2((b * a.conjugate()).imag, (b * a.conjugate()).real) if b * a.conjugate() != 0 else 0.0
-    return Difference(at, a, b, db, math.degrees(turned), relative, allowed)
+    db, deg = _apart(a, b) if a and b else (None, None)
+    if real:
+        return Difference(at, a.real, b.real, db, None, relative, allowed)
+    return Difference(at, a, b, db, deg, relative, allowed)
+
+
+def _apart(a: complex, b: complex) -> tuple[float, float]:
+    """How far b lies from a: dB and deg. Close ones are told by their difference, or rounding would show."""
+    if abs(b - a) < abs(a) / 2:
+        share = (b - a) / a
+        db = 10 / math.log(10) * math.log1p(2 * share.real + abs(share) ** 2)
+        return db, math.degrees(math.atan2(share.imag, 1 + share.real))
+    turned = math.remainder(cmath.phase(b) - cmath.phase(a), 2 * math.pi)
+    return 20 * (math.log10(abs(b)) - math.log10(abs(a))), math.degrees(turned)
 
 
 def _runs(flags: np.ndarray[tuple[int], np.dtype[np.bool_]]) -> list[tuple[int, int]]:

@@ -75,6 +75,7 @@ class _Table:
     header: _Header
     numbers: FloatArray
     decimals: npt.NDArray[np.int64]
+    fewest: npt.NDArray[np.int64]
     significant: npt.NDArray[np.int64]
     has_exponent: npt.NDArray[np.bool_]
 
@@ -86,10 +87,11 @@ class _Table:
         return np.ascontiguousarray(self.numbers[:, index])
 
     def uncertainty(self, index: int) -> FloatArray:
-        """How far each cell may lie from what was meant, by the smaller of two readings of the digits.
+        """How far each cell may lie from what was meant, by the digits of its column.
 
-        Half a unit of the column's last decimal place (fixed-point columns only), and half a unit of the last
-        of the column's most significant digits. 0 where the column has full doubles.
+        Half a unit of the last decimal place where every cell has the same number of decimals (zeros kept, so
+        the column was printed with a fixed number); else the smaller of that and half a unit of the last of the
+        column's most significant digits. 0 where the column has full doubles.
         """
         values = self.column(index)
         digits = int(self.significant[index])
@@ -98,7 +100,11 @@ class _Table:
         relative = half_unit(values, digits)
         if self.has_exponent[index]:
             return relative
-        return np.minimum(np.where(values == 0, np.inf, relative), 0.5 * 10.0 ** -int(self.decimals[index]))
+        place = 0.5 * 10.0 ** -int(self.decimals[index])
+        # Whole numbers are no sign of fixed printing: 100 Hz is meant as 100 Hz.
+        if len(values) > 1 and self.decimals[index] == self.fewest[index] > 0:
+            return np.full_like(values, place)
+        return np.minimum(np.where(values == 0, np.inf, relative), place)
 
 
 def parse_csv(text: str, source: str) -> Curves:
@@ -233,6 +239,7 @@ def _body(text: str, header: _Header, source: str) -> tuple[_Table, tuple[str, .
     width = len(header.names)
     blocks: list[FloatArray] = []
     decimals, significant = np.zeros(width, np.int64), np.zeros(width, np.int64)
+    fewest = np.full(width, np.iinfo(np.int64).max)
     has_exponent = np.zeros(width, np.bool_)
     for line, chunk in _chunks(text, header, stop):
         cells = _cells(chunk, width, line, source)
@@ -241,6 +248,7 @@ def _body(text: str, header: _Header, source: str) -> tuple[_Table, tuple[str, .
             continue
         counts = written_digits(cells)
         decimals = np.maximum(decimals, counts[0].reshape(-1, width).max(axis=0))
+        fewest = np.minimum(fewest, counts[0].reshape(-1, width).min(axis=0))
         significant = np.maximum(significant, counts[1].reshape(-1, width).max(axis=0))
         has_exponent |= counts[2].reshape(-1, width).any(axis=0)
     if not blocks:
@@ -250,7 +258,7 @@ def _body(text: str, header: _Header, source: str) -> tuple[_Table, tuple[str, .
         )
     cut = "The last line has no end; if the file was cut short there, its last number is wrong."
     remarks = (cut,) if stop == len(text) else ()
-    return _Table(source, header, np.concatenate(blocks), decimals, significant, has_exponent), remarks
+    return _Table(source, header, np.concatenate(blocks), decimals, fewest, significant, has_exponent), remarks
 
 
 def _chunks(text: str, header: _Header, stop: int) -> Iterator[tuple[int, str]]:

@@ -11,30 +11,49 @@ from .ac import (
     output_impedance,
     response,
     response_and_slope,
+    response_chunks,
 )
+from .noise import BOLTZMANN, noise, noise_shares, total_noise
+from .one_part import OnePart, between, every_part, one_part
 from .operating_point import operating_point, solve_operating_point, source_currents
+from .sensitivity import response_sensitivity
 from .solver import Drive, Solution, Solver, require_solvable, solver_for
 from .span import Span, span_of
+from .symbols import Coefficient, Term, TransferFunction, transfer_function
 
 __all__ = [
+    "BOLTZMANN",
+    "Coefficient",
     "Drive",
+    "OnePart",
     "Solution",
     "Solver",
     "Span",
+    "Term",
+    "TransferFunction",
     "ac_drive",
+    "between",
     "dc_solvable",
     "driving_sources",
+    "every_part",
     "input_impedance",
     "limit",
     "natural_frequencies",
     "node_pair",
+    "noise",
+    "noise_shares",
+    "one_part",
     "operating_point",
     "output_impedance",
     "require_solvable",
     "response",
     "response_and_slope",
+    "response_chunks",
+    "response_sensitivity",
     "solve_operating_point",
     "solver_for",
     "source_currents",
     "span_of",
+    "total_noise",
+    "transfer_function",
 ]

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 
 import numpy as np
 import numpy.typing as npt
@@ -17,6 +17,8 @@ from .span import span_of
 
 Complex = npt.NDArray[np.complex128]
 Float = npt.NDArray[np.float64]
+
+_CHUNK_BYTES = 64 * 1024 * 1024  # what one piece of many samples' responses may take
 
 
 def response(
@@ -36,24 +38,61 @@ def response(
     """
     require_solvable(network)
     points = _frequencies(frequency)
-    single = isinstance(of, str)
+    given, samples = _given_values(network, values)
+    if samples is None:
+        table = None if not given else _value_table(network, given, slice(None))[:, 0]
+        answer = _differences(network, points, of, table)
+    else:
+        shape = () if isinstance(of, str) else (len(of),)
+        answer = np.empty((*shape, samples, len(points)), dtype=np.complex128)
+        for part, block in response_chunks(network, points, of, values or {}):
+            answer[..., part, :] = block
+    return answer
+
+
+def response_chunks(
+    network: Network,
+    frequency: npt.ArrayLike,
+    of: str | Sequence[str],
+    values: Mapping[str, npt.ArrayLike],
+    chunk: int | None = None,
+) -> Iterator[tuple[slice, Complex]]:
+    """The response of many samples piece by piece, where all of it would not fit into memory.
+
+    Arguments as for `response`, with an array in `values`. Yields which samples, and their response:
+    (samples, frequencies), or (of, samples, frequencies) for a list. chunk: how many samples at a time.
+    Errors as for `response`, at the first piece.
+    """
+    require_solvable(network)
+    points = _frequencies(frequency)
+    given, samples = _given_values(network, values)
+    if samples is None:
+        raise CircuitError("there are no samples.", remedy="Give an array for at least one part in `values`.")
+    if chunk is not None and chunk < 1:
+        raise CircuitError(f"the chunk is {chunk!r} samples.", remedy="Give one or more.")
+    outputs = 1 if isinstance(of, str) else max(len(of), 1)
+    step = chunk or max(1, _CHUNK_BYTES // (16 * outputs * max(len(points), 1)))
+    for start in range(0, samples, step):
+        part = slice(start, min(start + step, samples))
+        yield part, _differences(network, points, of, _value_table(network, given, part), samples)
+
+
+def _differences(
+    network: Network, points: Float, of: str | Sequence[str], table: Float | None, samples: int = 0
+) -> Complex:
+    """The response at `points`, Hz; `table` is (parts,) or, out of `samples` in all, (parts, some of them)."""
     pairs = [node_pair(network, text) for text in ([of] if isinstance(of, str) else of)]
-    drive = ac_drive(network)
-    table, samples = _value_table(network, values)
-    answer = np.empty((len(pairs), max(samples, 1) * len(points)), dtype=np.complex128)
-    s = np.tile(_s(network, 2 * math.pi * points), max(samples, 1))
-    solver = solver_for(network)
     wanted = sorted({node for pair in pairs for node in pair})
-    step = solver.block()
-    for start in range(0, len(s), step):
-        part = slice(start, start + step)
-        numbers = None if table is None else _columns(table, np.arange(len(s))[part] // len(points))
-        voltages = solver.solve(s[part], drive, wanted, numbers).voltages
-        for row, (a, b) in enumerate(pairs):
-            answer[row, part] = voltages[a] - voltages[b] if b else voltages[a]
-    shape = (len(pairs), samples, len(points)) if samples else (len(pairs), len(points))
-    answer = answer.reshape(shape)
-    return np.asarray(answer[0]) if single else answer
+    place = {node: k for k, node in enumerate(wanted)}
+    solver, drive, s = solver_for(network), ac_drive(network), _s(network, 2 * math.pi * points)
+    if table is None or table.ndim == 1:
+        v = solver.voltages_of(s, drive, wanted, table)
+    else:
+        v = solver.sample_voltages(s, drive, wanted, table, samples)
+    rows = [v[place[a]] - v[place[b]] if b else v[place[a]] for a, b in pairs]
+    if isinstance(of, str):
+        return np.asarray(rows[0], dtype=np.complex128)
+    return np.array(rows, dtype=np.complex128).reshape(len(rows), *v.shape[1:])
 
 
 def _frequencies(frequency: npt.ArrayLike) -> Float:
@@ -68,14 +107,12 @@ def _frequencies(frequency: npt.ArrayLike) -> Float:
     return points
 
 
-def _value_table(
+def _given_values(
     network: Network, values: Mapping[str, npt.ArrayLike] | None
-) -> tuple[npt.NDArray[np.float64] | None, int]:
-    """The part values as (parts, samples), and how many samples there are (0: no arrays were given)."""
-    if not values:
-        return None, 0
+) -> tuple[dict[int, Float], int | None]:
+    """The given part values by row, (samples,) or (), and how many samples there are (None: no arrays)."""
     given: dict[int, Float] = {}
-    for name, value in values.items():
+    for name, value in (values or {}).items():
         part = network.part(name)
         kind = KINDS[part.kind]
         numbers = _numbers(name, kind.unit, value)
@@ -93,11 +130,16 @@ def _value_table(
         raise CircuitError(
             f"the samples come in different numbers: {sorted(sizes)}.", remedy="Give as many for each."
         )
-    samples = sizes.pop() if sizes else 0
-    table = np.repeat(network.arrays().values[:, None], max(samples, 1), axis=1)
+    return given, sizes.pop() if sizes else None
+
+
+def _value_table(network: Network, given: Mapping[int, Float], part: slice) -> Float:
+    """All part values, (parts, samples), for some of the samples; one column where no value is an array."""
+    columns = next((numbers[part].size for numbers in given.values() if numbers.ndim == 1), 1)
+    table = np.repeat(network.arrays().values[:, None], columns, axis=1)
     for row, numbers in given.items():
-        table[row] = numbers
-    return table, samples
+        table[row] = numbers[part] if numbers.ndim == 1 else numbers
+    return table
 
 
 def _numbers(name: str, unit: str, value: npt.ArrayLike) -> Float:
@@ -108,10 +150,6 @@ def _numbers(name: str, unit: str, value: npt.ArrayLike) -> Float:
         raise CircuitError(
             f"the samples of {name} are not numbers: {exc}.", remedy="Give base units."
         ) from exc
-
-
-def _columns(table: Float, which: npt.NDArray[np.int64]) -> Float:
-    return np.ascontiguousarray(table[:, 0]) if table.shape[1] == 1 else table[:, which]
 
 
 def _s(network: Network, omega: Float) -> Complex:

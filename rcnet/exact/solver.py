@@ -5,6 +5,7 @@ from __future__ import annotations
 import weakref
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -12,7 +13,7 @@ import numpy.typing as npt
 
 from ..circuit import Network, PartArrays, explain, troubles
 from ..errors import UnsolvableError
-from . import nodal
+from . import large, nodal
 from .elimination import Factors, Pattern, analyse, eliminate, substitute
 from .nodal import Numbers
 from .span import span_of
@@ -58,13 +59,38 @@ class Solver:
         self.arrays = network.arrays()
         self.middle = span_of(network).middle
         self.stiff = _stiff_tree(network, self.arrays)
-        self.pattern: Pattern | None = None
         codes = self.arrays.kinds
         self.admittance_rows = np.flatnonzero((codes == ord("R")) | (codes == ord("C")))
         self.is_resistor = codes[self.admittance_rows] == ord("R")
-        if self.stiff is not None:
-            ends = self.arrays.nodes[self.admittance_rows, :2]
-            self.pattern = analyse(self.arrays.node_count, ends, self.stiff.nodes, _MOST_WORK)
+
+    @cached_property
+    def pattern(self) -> Pattern | None:
+        """How to eliminate the inner nodes one by one; None where the network does not allow it."""
+        if self.stiff is None:
+            return None
+        ends = self.arrays.nodes[self.admittance_rows, :2]
+        return analyse(self.arrays.node_count, ends, self.stiff.nodes, _MOST_WORK)
+
+    @cached_property
+    def kernel(self) -> large.LargeKernel | None:
+        """The compiled kernel, loaded at first use; None without numba, or where elimination does not apply."""
+        if self.stiff is None:
+            return None
+        rows, arrays = self.admittance_rows, self.arrays
+        ends, values = arrays.nodes[rows, :2], arrays.values[rows]
+        return large.kernel_for(arrays.node_count, ends, self.is_resistor, values, self.stiff.nodes)
+
+    @cached_property
+    def _size(self) -> tuple[int, int]:
+        """The inner nodes, and the admittances between them."""
+        free = np.ones(self.arrays.node_count, dtype=bool)
+        free[list(self.stiff.nodes if self.stiff is not None else ())] = False
+        ends = self.arrays.nodes[self.admittance_rows, :2]
+        return int(free.sum()), int((free[ends].all(axis=1) & (ends[:, 0] != ends[:, 1])).sum())
+
+    def _pays(self, points: int) -> bool:
+        few = self.stiff is not None and len(self.stiff.controlled) < large.MOST_COLUMNS
+        return few and large.pays(*self._size, points) and self.kernel is not None
 
     @property
     def network(self) -> Network:
@@ -76,7 +102,7 @@ class Solver:
     @property
     def eliminates(self) -> bool:
         """True where the subtraction-free way applies."""
-        return self.pattern is not None
+        return self._pays(1) or self.pattern is not None
 
     def solve(
         self,
@@ -94,7 +120,12 @@ class Solver:
         """
         # An R = 0 or a loop of gain one shows as a division by zero; it is caught by looking at the result.
         with np.errstate(all="ignore"):
-            if self.pattern is None:
+            if not currents_too and self._compiles(s, values):
+                rows = list(range(self.arrays.node_count)) if wanted is None else list(wanted)
+                found = self._compiled(s, drive, rows, values)
+                solution = Solution(np.empty((self.arrays.node_count, len(s)), found.dtype), None)
+                solution.voltages[rows] = found
+            elif self.pattern is None:
                 solution = self._nodal(s, drive, values)
             else:
                 solution = self._eliminated(s, drive, wanted, values, currents_too)
@@ -103,8 +134,65 @@ class Solver:
             raise nodal.singular(self._controlled)
         return solution
 
+    def voltages_of(
+        self,
+        s: Numbers,
+        drive: Drive,
+        wanted: Sequence[int],
+        values: npt.NDArray[np.float64] | None = None,
+    ) -> Numbers:
+        """Voltages of the `wanted` nodes alone, (wanted, points), in blocks where memory asks for it.
+
+        values: (parts,), other part values, or None. For drives without currents. Errors as for `solve`.
+        """
+        if self._compiles(s, values):
+            with np.errstate(all="ignore"):
+                answer = self._compiled(s, drive, wanted, values)
+            if not np.isfinite(answer).all():
+                raise nodal.singular(self._controlled)
+            return answer
+        answer = np.empty((len(wanted), len(s)), dtype=np.complex128)
+        step = self.block()
+        for start in range(0, len(s), step):
+            part = slice(start, start + step)
+            answer[:, part] = self.solve(s[part], drive, wanted, values).voltages[list(wanted)]
+        return answer
+
+    def sample_voltages(
+        self,
+        s: Numbers,
+        drive: Drive,
+        wanted: Sequence[int],
+        values: npt.NDArray[np.float64],
+        samples: int | None = None,
+    ) -> Numbers:
+        """Voltages of the `wanted` nodes for many samples of part values, (wanted, samples, points).
+
+        values: (parts, samples); samples: how many there are in all, where these are only some of them
+        """
+        count, points = values.shape[1], len(s)
+        if self._compiles(s, None):
+            each = [self.voltages_of(s, drive, wanted, values[:, k]) for k in range(count)]
+            return np.stack(each, axis=1)
+        if self._samples_pay(s, values, samples or count):
+            with np.errstate(all="ignore"):
+                answer = self._compiled_samples(s, drive, wanted, values)
+            if not np.isfinite(answer).all():
+                raise nodal.singular(self._controlled)
+            return answer
+        answer = np.empty((len(wanted), count, points), dtype=np.complex128)
+        step = max(1, self.block() // max(points, 1))
+        for start in range(0, count, step):
+            part = values[:, start : start + step]
+            columns = np.repeat(part, points, axis=1)
+            solved = self.solve(np.tile(s, part.shape[1]), drive, wanted, columns).voltages[list(wanted)]
+            answer[:, start : start + step] = solved.reshape(len(wanted), -1, points)
+        return answer
+
     def block(self) -> int:
         """How many s to solve at once so that memory stays bounded."""
+        if self._pays(1):
+            return max(1, _BLOCK_BYTES // (16 * self.arrays.node_count))
         if self.pattern is None:
             return 1 << 16
         rows = 2 * len(self.pattern.slot_ends) + (1 + len(self.stiff_columns)) * self.arrays.node_count
@@ -195,6 +283,89 @@ class Solver:
             return Solution(voltages, None)
         arriving = None if inflow is None else np.einsum("ncs,cs->ns", inflow, weights)
         return Solution(voltages, self._source_currents(factors, voltages, arriving))
+
+    def _compiles(self, s: Numbers, values: npt.NDArray[np.float64] | None) -> bool:
+        """True if the compiled kernel is to answer."""
+        if (values is not None and values.ndim == 2) or not self._pays(len(s)):
+            return False
+        numbers = (self.arrays.values if values is None else values)[self.admittance_rows]
+        return large.in_range(self.is_resistor, numbers, s)
+
+    def _compiled(
+        self, s: Numbers, drive: Drive, wanted: Sequence[int], values: npt.NDArray[np.float64] | None
+    ) -> Numbers:
+        assert self.stiff is not None and self.kernel is not None
+        controls = self.arrays.nodes[list(self.stiff_columns)][:, 2:4]
+        given = None if values is None else values[self.admittance_rows]
+        seen, back = np.unique([*wanted, *controls.ravel().tolist()], return_inverse=True)
+        potentials, injected = self._driven(drive)
+        columns = self.kernel.solve(
+            s.astype(np.complex128), potentials, injected, drive.currents, seen.tolist(), given
+        )[back]
+        found = self._closed(columns, len(wanted), self._gains(values))
+        given_real = not np.iscomplexobj(s) and not np.iscomplexobj(drive.currents)
+        return found.real if given_real and not drive.sources.imag.any() else found
+
+    def _driven(self, drive: Drive) -> tuple[npt.NDArray[np.complex128], dict[int, complex]]:
+        """The fixed nodes' potentials, (nodes, 1 + E sources), and what current sources put into each node."""
+        assert self.stiff is not None
+        potentials = np.zeros((self.arrays.node_count, 1 + len(self.stiff_columns), 1), dtype=np.complex128)
+        self.stiff.fill(potentials, drive.sources)
+        injected: dict[int, complex] = {}
+        for row in np.flatnonzero((self.arrays.kinds == ord("I")) & (drive.sources != 0)).tolist():
+            for node, sign in zip(self.arrays.nodes[row, :2].tolist(), (-1, 1), strict=True):
+                injected[node] = injected.get(node, 0) + sign * complex(drive.sources[row])
+        return potentials[:, :, 0], injected
+
+    def _closed(self, columns: Numbers, wanted: int, gains: Numbers) -> Numbers:
+        """The voltages from columns (wanted and controls, 1 + E sources, points)."""
+        controls = wanted + np.arange(2 * len(self.stiff_columns)).reshape(-1, 2)
+        weights = _closure(columns, controls, gains)
+        if weights is None:
+            raise nodal.singular(self._controlled)
+        return np.asarray(np.einsum("ncs,cs->ns", columns[:wanted], weights))
+
+    def _samples_pay(self, s: Numbers, values: npt.NDArray[np.float64], samples: int) -> bool:
+        if self.pattern is None or not large.samples_pay(len(self.pattern.steps), samples, len(s)):
+            return False
+        return large.in_range(self.is_resistor, values[self.admittance_rows], s) and self._program is not None
+
+    @cached_property
+    def _program(self) -> Any:
+        """The pattern as the compiled kernel reads it; None without numba."""
+        try:
+            from . import sample_kernel
+        except ImportError:
+            return None
+        assert self.pattern is not None
+        return sample_kernel.program(self.pattern)
+
+    def _compiled_samples(
+        self, s: Numbers, drive: Drive, wanted: Sequence[int], values: npt.NDArray[np.float64]
+    ) -> Numbers:
+        from . import sample_kernel
+
+        assert self.stiff is not None
+        controls = self.arrays.nodes[list(self.stiff_columns)][:, 2:4]
+        potentials, injected = self._driven(drive)
+        currents = np.zeros_like(potentials)
+        for node, amount in injected.items():
+            currents[node, 0] = amount
+        seen = [*wanted, *controls.ravel().tolist()]
+        columns = sample_kernel.solve(
+            self._program,
+            self.is_resistor,
+            values[self.admittance_rows],
+            s.astype(np.complex128),
+            potentials,
+            currents,
+            seen,
+        )
+        if not len(controls):
+            return columns[:, 0]
+        gains = np.repeat(values[list(self.stiff_columns)], len(s), axis=1)
+        flat = self._closed(columns.reshape(*columns.shape[:2], -1), len(wanted), gains)
+        return flat.reshape(len(wanted), values.shape[1], len(s))
 
     def _gains(self, values: npt.NDArray[np.float64] | None) -> Numbers:
         numbers = (self.arrays.values if values is None else values)[list(self.stiff_columns)]
@@ -300,7 +471,7 @@ def _stiff_tree(network: Network, arrays: PartArrays) -> _StiffTree | None:
     letters = {chr(code) for code in np.unique(arrays.kinds).tolist()}
     if letters - set("RCVIE"):
         return None
-    rows = [row for row, code in enumerate(arrays.kinds.tolist()) if chr(code) in "VE"]
+    rows = np.flatnonzero((arrays.kinds == ord("V")) | (arrays.kinds == ord("E"))).tolist()
     around: dict[int, list[tuple[int, int, int]]] = {}
     for row in rows:
         a, b = int(arrays.nodes[row, 0]), int(arrays.nodes[row, 1])
@@ -332,9 +503,20 @@ def solver_for(network: Network) -> Solver:
     return kept[1]
 
 
+_sound: weakref.WeakKeyDictionary[Network, tuple[PartArrays, set[bool]]] = weakref.WeakKeyDictionary()
+
+
 def require_solvable(network: Network, *, dc: bool = False) -> None:
     """Raise UnsolvableError, naming parts and nodes, unless the graph allows one solution."""
+    arrays = network.arrays()
+    kept = _sound.get(network)
+    if kept is None or kept[0] is not arrays:
+        kept = _sound[network] = (arrays, set())
+    if dc in kept[1]:
+        return
     found = troubles(network, dc=dc)
+    if not found:
+        kept[1].add(dc)
     if found:
         remedy = (
             "Add a resistor to ground, or leave the operating point out."

@@ -5,13 +5,16 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Iterator
 
-from ..circuit import GROUND, Circuit, Place, explain, floating_nodes, troubles
-from ..circuit.topology import Trouble
+from ..circuit import GROUND, Circuit, Place, Trouble, explain, floating_nodes, troubles
 from .finding import Remark, rule
 
 
+def _whole(circuit: Circuit) -> Place:
+    return Place(circuit.file or circuit.name, None)
+
+
 def _first_place(circuit: Circuit, trouble: Trouble) -> Place:
-    return circuit.place_of(trouble.parts[0]) if trouble.parts else Place(circuit.file or circuit.name, None)
+    return circuit.place_of(trouble.parts[0]) if trouble.parts else _whole(circuit)
 
 
 @rule("floating", "error")
@@ -20,7 +23,9 @@ def floating(circuit: Circuit) -> Iterator[Remark]:
     for trouble in troubles(circuit.network, dc=False):
         if trouble.kind == "floating":
             yield Remark(
-                explain(trouble, dc=False), "Connect them to the rest, or remove them.", _first_place(circuit, trouble)
+                explain(trouble, dc=False),
+                "Connect them to the rest, or remove them.",
+                _first_place(circuit, trouble),
             )
 
 
@@ -38,10 +43,13 @@ def voltage_loop(circuit: Circuit) -> Iterator[Remark]:
 
 @rule("inductor-loop", "warning")
 def inductor_loop(circuit: Circuit) -> Iterator[Remark]:
-    """A loop of inductors and voltage sources has no operating point; it is an error where one is asked for."""
-    here = {trouble.parts for trouble in troubles(circuit.network, dc=False)}
+    """A loop of inductors and voltage sources has no operating point.
+
+    An error where an operating point, a transient or a noise analysis is asked for.
+    """
+    here = {frozenset(trouble.parts) for trouble in troubles(circuit.network, dc=False)}
     for trouble in troubles(circuit.network, dc=True):
-        if trouble.kind == "loop" and trouble.parts not in here:
+        if trouble.kind == "loop" and frozenset(trouble.parts) not in here:
             yield Remark(
                 explain(trouble, dc=True),
                 "Give the loop its resistance.",
@@ -78,16 +86,21 @@ def no_dc_path(circuit: Circuit) -> Iterator[Remark]:
 def no_source(circuit: Circuit) -> Iterator[Remark]:
     """Without an independent source nothing happens in the circuit."""
     if not circuit.network.sources:
-        yield Remark("the circuit has no source.", "Add one, as Vin in 0 DC 0 AC 1.", Place(circuit.file or circuit.name, None))
+        yield Remark("the circuit has no source.", "Add one, as Vin in 0 DC 0 AC 1.", _whole(circuit))
 
 
 @rule("no-ac-source", "error")
 def no_ac_source(circuit: Circuit) -> Iterator[Remark]:
-    """An ac or noise analysis without a source that carries ac comes out as zeros, and ngspice says nothing."""
-    wanted = circuit.analyses
-    if circuit.network.sources and (wanted.ac or wanted.noise) and not any(s.ac for s in circuit.network.sources.values()):
-        place = circuit.analysis_places.get("ac") or circuit.place_of(next(iter(circuit.network.sources)))
-        yield Remark("an ac or noise analysis is asked for, but no source carries ac.", "Give one source ac = 1.", place)
+    """An ac or noise analysis without a source that carries ac comes out as zeros; ngspice says nothing."""
+    wanted, sources = circuit.analyses, circuit.network.sources
+    if not sources or not (wanted.ac or wanted.noise) or any(source.ac for source in sources.values()):
+        return
+    places = circuit.analysis_places
+    yield Remark(
+        "an ac or noise analysis is asked for, but no source carries ac.",
+        "Give one source ac = 1 (in a netlist, AC 1).",
+        places.get("ac") or places.get("noise") or circuit.place_of(next(iter(sources))),
+    )
 
 
 @rule("one-node-part", "warning")
@@ -123,20 +136,23 @@ def dangling(circuit: Circuit) -> Iterator[Remark]:
 
 @rule("output-absent", "error")
 def output_absent(circuit: Circuit) -> Iterator[Remark]:
-    """The output named (in `.print`, `.plot`, `.save` or `.noise`) is no node of the circuit; ngspice returns zeros."""
+    """The output named (in a netlist by `.print`, `.plot`, `.save` or `.noise`) is no node of the circuit.
+
+    ngspice 39 leaves such a voltage out without a word; its noise comes out as zeros.
+    """
+    place = circuit.analysis_places.get("output") or _whole(circuit)
     for node in circuit.output:
         if not circuit.network.has_node(node):
             yield Remark(
                 f"the output {node!r} is no node of this circuit.",
                 f"Nodes here: {', '.join(circuit.network.nodes[1:9])}.",
-                Place(circuit.file or circuit.name, None),
+                place,
             )
-    wanted = circuit.analyses
-    if wanted.noise and not circuit.output:
+    if circuit.analyses.noise and not circuit.output:
         yield Remark(
             "a noise analysis is asked for, but no output node is named.",
             'Add output = "out" to the circuit.',
-            Place(circuit.file or circuit.name, None),
+            circuit.analysis_places.get("noise") or _whole(circuit),
         )
 
 
@@ -151,5 +167,9 @@ def case_only(circuit: Circuit) -> Iterator[Remark]:
                 yield Remark(
                     f"the {what} {other!r} and {name!r} differ only in case.",
                     "Give them different names.",
-                    circuit.place_of(name),
+                    circuit.place_of(name) if what == "parts" else _touching(circuit, name),
                 )
+
+
+def _touching(circuit: Circuit, node: str) -> Place:
+    return circuit.place_of(next(part.name for part in circuit.network.parts if node in part.nodes))

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import itertools
+import math
 import textwrap
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -54,10 +56,19 @@ def write(circuit: Circuit, comments: Iterable[str] = ()) -> Written:
     lines += [comment for text in comments for comment in comment_lines(text)]
     lines += _renamed(names)
     lines += body(held, names)
+    lines += _save_all(held)
     for name in requested(held):
         lines += [*analysis_lines(held, names, name), *_print_lines(held, names, name)]
     lines.append(".end")
     return Written("\n".join(lines) + "\n", names, held)
+
+
+def _save_all(circuit: Circuit) -> list[str]:
+    """`.save all` where ngspice 39, run by hand without a raw file, would keep nothing of an analysis.
+
+    It saves a voltage printed for several analyses in one of them only, and the noise spectrum never.
+    """
+    return [".save all"] if circuit.analyses.noise or len(requested(circuit)) > 1 else []
 
 
 def deck(circuit: Circuit, names: Names, analysis: AnalysisName) -> str:
@@ -91,19 +102,26 @@ def requested(circuit: Circuit) -> list[AnalysisName]:
 def _title(text: str) -> str:
     # The first line is the title whatever it holds. As a comment it stays harmless if the file is included
     # elsewhere; `*#` and `*ng_script` would be commands to ngspice.
-    shown = " ".join(text.split()).lstrip("#*. ") or "circuit"
-    shown = "".join(character if character.isprintable() else "?" for character in shown)
-    return f"* {shown}"[: WIDTH - 1].rstrip()
+    shown = " ".join(_printable(text).split()).lstrip("#*. ") or "circuit"
+    return _unjoined(f"* {shown}"[:WIDTH].rstrip())
+
+
+def _printable(text: str) -> str:
+    return "".join(character if character.isprintable() else " " for character in text)
+
+
+def _unjoined(line: str) -> str:
+    # Some readers take a backslash at the end for a continuation, which would swallow the line after.
+    kept = line.rstrip("\\")
+    return kept + "/" * (len(line) - len(kept))
 
 
 def comment_lines(text: str) -> list[str]:
     """A comment of any length as lines under 80 columns."""
-    clean = "".join(character if character.isprintable() else "?" for character in text)
-    indent = len(clean) - len(clean.lstrip())
-    wrapped = textwrap.wrap(
-        clean.strip(), WIDTH - 2 - indent, break_long_words=True, subsequent_indent="  ", break_on_hyphens=False
-    )
-    return [f"* {' ' * indent}{line}" for line in wrapped] or ["*"]
+    clean = _printable(text)
+    indent = min(len(clean) - len(clean.lstrip()), 8)
+    wrapped = textwrap.wrap(clean.strip(), WIDTH - 2 - indent, subsequent_indent="  ", break_on_hyphens=False)
+    return [_unjoined(f"* {' ' * indent}{line}") for line in wrapped] or ["*"]
 
 
 def _renamed(names: Names) -> list[str]:
@@ -112,7 +130,7 @@ def _renamed(names: Names) -> list[str]:
         return []
     lines = comment_lines("Renamed, so that every simulator reads them alike:")
     for what, old, new in changed:
-        lines += comment_lines(f"  {what} {new} is {old}")
+        lines += comment_lines(f'  {what} {new} is "{old}"')
     return lines
 
 
@@ -136,7 +154,7 @@ def body(circuit: Circuit, names: Names) -> list[str]:
     for part in network.parts:
         source = network.sources.get(part.name)
         lines += wrap(_part_line(part, names) if source is None else _source_line(source, names, circuit))
-    settings = [f"{key}={value}" for key, value in circuit.options.items()]
+    settings = [f"{key}={value}" if value else key for key, value in circuit.options.items()]
     if circuit.conditions.nominal != 27.0:
         settings.append(f"temp={write_spice_number(circuit.conditions.nominal)}")
     if settings:
@@ -165,17 +183,13 @@ def _source_line(source: Source, names: Names, circuit: Circuit) -> str:
 
 def _waveform(source: Source, circuit: Circuit) -> str:
     wave = source.waveform
+    assert wave is not None
     if isinstance(wave, Square):
         return _call("PULSE", wave.low, wave.high, wave.delay, wave.rise, wave.fall, wave.width, wave.period)
     if isinstance(wave, Sine):
         numbers = [wave.offset, wave.amplitude, wave.frequency, wave.delay, 0.0, wave.phase]
         return _call("SIN", *(numbers if wave.phase else numbers[:4] if wave.delay else numbers[:3]))
-    if isinstance(wave, Step):
-        start = [(0.0, wave.initial)] if wave.at > 0 else []
-        pairs = [*start, (wave.at, wave.initial), (wave.at + wave.rise, wave.final)]
-    else:
-        assert isinstance(wave, Points)
-        pairs = _repeated(wave, source.name, circuit)
+    pairs = _step(wave) if isinstance(wave, Step) else _points(wave, source.name, circuit)
     return _call("PWL", *(number for pair in pairs for number in pair))
 
 
@@ -183,17 +197,41 @@ def _call(word: str, *numbers: float) -> str:
     return f"{word}({' '.join(write_spice_number(number) for number in numbers)})"
 
 
-def _repeated(wave: Points, name: str, circuit: Circuit) -> Sequence[tuple[float, float]]:
-    """Periodic points written out over the transient asked for; standard PWL cannot repeat."""
-    if wave.period is None or circuit.analyses.transient is None:
+def _step(wave: Step) -> list[tuple[float, float]]:
+    start = [(0.0, wave.initial)] if wave.at > 0 else []
+    end = max(wave.at + wave.rise, math.nextafter(wave.at, math.inf))  # times must rise
+    return [*start, (wave.at, wave.initial), (end, wave.final)]
+
+
+def _points(wave: Points, name: str, circuit: Circuit) -> Sequence[tuple[float, float]]:
+    """Periodic points written out until the transient ends; standard PWL cannot repeat."""
+    run = circuit.analyses.transient
+    if wave.period is None or run is None:
         return wave.values
-    turns = int(circuit.analyses.transient.stop / wave.period) + 1
+    turns = math.floor(min(run.stop / wave.period, 1e15)) + 1
     if turns * len(wave.values) > MAX_PAIRS:
         raise CircuitError(
-            f"{name}: its waveform repeats {turns} times in the transient, {turns * len(wave.values)} points.",
+            f"{name}: its waveform repeats {turns} times in the transient, "
+            f"{turns * len(wave.values)} points.",
             remedy=f"Shorten the transient; at most {MAX_PAIRS} points are written.",
         )
-    return [(turn * wave.period + time, value) for turn in range(turns) for time, value in wave.values]
+    return list(_repeated(wave, wave.period, run.stop))
+
+
+def _repeated(wave: Points, period: float, stop: float) -> Iterator[tuple[float, float]]:
+    """The points turn after turn, up to and with the first at `stop` or later."""
+    last = -1.0
+    if wave.values[0][0] > 0:
+        last = 0.0
+        yield 0.0, wave.start
+    for turn in itertools.count():
+        for time, value in wave.values:
+            now = turn * period + time
+            if now > last:  # the last point of a turn may be the first of the next
+                last = now
+                yield now, value
+            if now >= stop:
+                return
 
 
 # ---------------------------------------------------------------------- analyses
@@ -209,7 +247,8 @@ def analysis_lines(circuit: Circuit, names: Names, analysis: AnalysisName) -> li
     if analysis == "transient" and wanted.transient is not None:
         return wrap(f".tran {_run(wanted.transient)}")
     if analysis == "noise" and wanted.noise is not None:
-        return wrap(f".noise {voltage(_output(circuit, 'noise'), names)} {_driver(circuit, names)} {_sweep(wanted.noise)}")
+        output = voltage(_output(circuit), names)
+        return wrap(f".noise {output} {_driver(circuit, names)} {_sweep(wanted.noise)}")
     raise CircuitError(f"the circuit asks for no {analysis} analysis.", remedy="Add it under [analysis].")
 
 
@@ -218,7 +257,7 @@ def _print_lines(circuit: Circuit, names: Names, analysis: AnalysisName) -> list
     word = {"ac": "ac", "transient": "tran", "operating point": "op", "noise": "noise"}[analysis]
     if analysis == "noise":
         return [".print noise onoise_spectrum"]
-    if analysis == "operating point" or not circuit.output:
+    if not circuit.output or not all(node in names.nodes for node in circuit.output):
         return []
     return wrap(f".print {word} {voltage(circuit.output, names)}")
 
@@ -228,9 +267,11 @@ def voltage(nodes: Sequence[str], names: Names) -> str:
     return f"v({','.join(names.nodes[node] for node in nodes)})"
 
 
-def _output(circuit: Circuit, analysis: str) -> tuple[str, ...]:
-    if not circuit.output:
-        raise CircuitError(f"a {analysis} analysis needs an output node.", remedy='Add output = "out" to the circuit.')
+def _output(circuit: Circuit) -> tuple[str, ...]:
+    if not circuit.output or not all(circuit.network.has_node(node) for node in circuit.output):
+        raise CircuitError(
+            "a noise analysis needs an output node.", remedy='Add output = "out" to the circuit.'
+        )
     return circuit.output
 
 

@@ -61,7 +61,7 @@ def _ac(circuit: Circuit, sweep: Sweep) -> list[Curve]:
 
 
 def _unknowns(circuit: Circuit, eqs: nodal.Equations) -> list[tuple[str, int, str]]:
-    """(curve name, row of the answer, unit) of every node voltage and source current, named as raw files do."""
+    """(curve name, row of the answer, unit) of node voltages and source currents, named as in raw files."""
     network = circuit.network
     nodes = [(f"v({node.lower()})", k, "V") for k, node in enumerate(network.nodes[1:])]
     return nodes + [

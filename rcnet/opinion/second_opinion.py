@@ -53,7 +53,10 @@ def ask(
         return None
     program = find_ngspice() if which in ("auto", "ngspice") else None
     if which == "ngspice" and program is None:
-        raise SimulatorError("ngspice is not installed here (not on PATH, and RCNET_NGSPICE is not set).", remedy=install_hint())
+        raise SimulatorError(
+            "ngspice is not installed here (not on PATH, and RCNET_NGSPICE is not set).",
+            remedy=install_hint(),
+        )
     if which == "ngspice-library":
         return _library(written, timeout, runner)
     return _read_back(written) if program is None else _program(written, program, timeout)
@@ -69,7 +72,12 @@ def _program(written: Written, program: str, timeout: float) -> Opinion:
     """One analysis a run: several in one deck come out in another order, or spoil each other."""
     runs, log = [], []
     for name in _analyses(written):
-        run = run_deck(deck(written.circuit, written.names, name), _expected(written, name), executable=program, timeout=timeout)
+        run = run_deck(
+            deck(written.circuit, written.names, name),
+            _expected(written, name),
+            executable=program,
+            timeout=timeout,
+        )
         runs.append(run)
         log.append(f"---- {name} ----\n{run.log.rstrip()}\n")
     raw = joined_raw(runs)
@@ -85,7 +93,9 @@ def _library(written: Written, timeout: float, runner: LibraryRunner | None) -> 
     answers: list[Curves] = []
     log: list[str] = []
     for name in _analyses(written):
-        curves, said = runner.run(deck(written.circuit, written.names, name), _expected(written, name), timeout)
+        curves, said = runner.run(
+            deck(written.circuit, written.names, name), _expected(written, name), timeout
+        )
         answers.append(curves)
         log.append(f"---- {name} ----\n{said.rstrip()}\n")
     joined = Curves.joined("results.raw", answers)
@@ -111,5 +121,3 @@ def _expected(written: Written, name: AnalysisName) -> Expected:
     nodes = tuple(f"v({names.nodes[node].lower()})" for node in circuit.network.nodes[1:])
     points = len(frequencies(circuit.analyses.ac)) if name == "ac" and circuit.analyses.ac else None
     return Expected(_PLOTNAMES[name], nodes, 1 if name == "operating point" else points)
-
-

@@ -4,19 +4,34 @@ from __future__ import annotations
 
 import json
 import math
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
-from ..check import Check
-from ..claims import ClaimResult
-from ..compare import Comparison, CurveComparison, Difference
-from ..confirm import Confirmation
-from ..curves import Curve
-from ..findings import Finding
+if TYPE_CHECKING:
+    from ..check import Check
+    from ..claims import ClaimResult
+    from ..compare import Comparison, CurveComparison, Difference
+    from ..confirm import Confirmation
+    from ..curves import Curve
+    from ..findings import Finding
 
 
-def to_json(document: Any) -> str:
+def to_json(document: Any, *, ascii_only: bool = False) -> str:
     """A document as text, always valid JSON: a number that JSON cannot hold becomes null."""
-    return json.dumps(_finite(document), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+    text = _dumped(document, ascii_only)
+    # The name of a file need not be text; escaped it can be written all the same.
+    return text if ascii_only or text.isascii() or _encodable(text) else _dumped(document, True)
+
+
+def _dumped(document: Any, ascii_only: bool) -> str:
+    return json.dumps(_finite(document), indent=2, ensure_ascii=ascii_only, allow_nan=False) + "\n"
+
+
+def _encodable(text: str) -> bool:
+    try:
+        text.encode()
+    except UnicodeEncodeError:
+        return False
+    return True
 
 
 def _finite(value: Any) -> Any:
@@ -77,8 +92,10 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
         "verdict": comparison.verdict,
         "curves": [_curve(curve) for curve in comparison.curves],
         "not_compared": [
-            {"name": curve.name, "analysis": curve.analysis, "why": curve.why} for curve in comparison.uncompared
+            {"name": curve.name, "analysis": curve.analysis, "why": curve.why}
+            for curve in comparison.uncompared
         ],
+        "remarks": list(comparison.remarks),
         "causes": [],
     }
 
@@ -102,7 +119,9 @@ def _curve(curve: CurveComparison) -> dict[str, Any]:
             }
             for span in curve.spans
         ],
-        "fsv": None if look is None else {"adm": look.adm, "fdm": look.fdm, "gdm": look.gdm, "grade": look.grade},
+        "fsv": None
+        if look is None
+        else {"adm": look.adm, "fdm": look.fdm, "gdm": look.gdm, "grade": look.grade},
     }
 
 
@@ -125,18 +144,41 @@ def _number(value: complex | float) -> Any:
 def response_document(curves: list[Curve]) -> dict[str, Any]:
     """The document of `response`: curves of one axis."""
     values = {
-        curve.name: {"real": curve.values.real.tolist(), "imag": curve.values.imag.tolist()} for curve in curves
+        curve.name: {"real": curve.values.real.tolist(), "imag": curve.values.imag.tolist()}
+        for curve in curves
     }
     return {"frequency": curves[0].axis.tolist() if curves else [], "curves": values}
 
 
-def confirmation_document(done: Confirmation) -> dict[str, Any]:
+def confirmation_document(done: Confirmation, *, strict: bool = False) -> dict[str, Any]:
     """The document of `confirm` for one circuit: its check, its comparison, and where the files stand."""
     return {
         "circuit": done.check.circuit.name,
-        "verdict": "passes" if done.passes() else "fails",
+        "verdict": done.verdict(strict=strict),
         "check": check_document(done.check),
         "comparison": None if done.comparison is None else comparison_document(done.comparison),
         "folder": None if done.folder is None else str(done.folder),
         "files": list(done.files),
+    }
+
+
+def simulation_document(done: Confirmation) -> dict[str, Any]:
+    """The document of `simulate`: who ran, what came of it, and where the files stand."""
+    curves = () if done.opinion is None else done.opinion.curves.curves
+    return {
+        "circuit": done.check.circuit.name,
+        "simulator": None if done.opinion is None else done.opinion.who,
+        "findings": [finding_document(finding) for finding in done.check.findings],
+        "curves": [{"name": c.name, "analysis": c.analysis, "points": len(c)} for c in curves],
+        "folder": None if done.folder is None else str(done.folder),
+        "files": list(done.files),
+    }
+
+
+def netlist_document(check: Check, text: str | None) -> dict[str, Any]:
+    """The document of `netlist`: the findings and the text, null where errors kept it from being written."""
+    return {
+        "circuit": check.circuit.name,
+        "findings": [finding_document(finding) for finding in check.findings],
+        "netlist": text,
     }

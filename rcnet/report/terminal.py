@@ -3,159 +3,240 @@
 from __future__ import annotations
 
 import math
+import os
+import re
 from collections import Counter
+from collections.abc import Iterable, Sequence
 from typing import TYPE_CHECKING
 
-from ..check import Check
-from ..claims import ClaimResult
-from ..compare import Comparison, CurveComparison, Difference
-from ..confirm import Confirmation
-from ..findings import Finding
 from ..values import format_quantity
+from .plain import printable
 
 if TYPE_CHECKING:
-    from rich.console import Console, RenderableType
+    from rich.console import Console
     from rich.text import Text
+
+    from ..check import Check
+    from ..claims import ClaimResult
+    from ..compare import Comparison, CurveComparison, Difference
+    from ..confirm import Confirmation
+    from ..curves import Curve
+    from ..findings import Finding
+
+WIDTH = 80
+MOST_LISTED = 12  # curves or spans shown one by one; the JSON document holds them all
+ROUNDING = 1e-9  # a difference below this share of the value is told as such; its decibels say nothing
 
 # A word always says what a colour says.
 STYLES = {
     "holds": "green",
-    "agree": "green",
+    "passes": "green",
+    "agrees": "green",
     "fails": "bold red",
-    "differ": "bold red",
+    "differs": "bold red",
     "undecided": "yellow",
     "error": "bold red",
     "warning": "yellow",
     "note": "blue",
 }
-_UNITS = {"operating point": "V", "ac": "V"}
-MOST_LISTED = 12  # curves or spans shown one by one; the JSON document holds them all
+_PLURALS = {"holds": "hold", "passes": "pass", "fails": "fail"}
 
 
 def console(*, error: bool = False) -> Console:
-    """A console that writes plain text where it is piped, and never guesses at the meaning of what it prints."""
+    """A console of at most 80 columns that writes plain text where it is piped or NO_COLOR is set."""
     from rich.console import Console
 
-    return Console(stderr=error, highlight=False, markup=False, emoji=False)
+    class _Console(Console):
+        def on_broken_pipe(self) -> None:
+            # Left to itself it would end the program with the exit code that says a circuit fails.
+            raise BrokenPipeError
+
+    plain = bool(os.environ.get("NO_COLOR"))
+    out = _Console(
+        stderr=error, highlight=False, markup=False, emoji=False, color_system=None if plain else "auto"
+    )
+    out.width = max(40, min(out.width, WIDTH))
+    return out
+
+
+def _styled(text: str, style: str = "") -> Text:
+    from rich.text import Text
+
+    return Text(printable(text), style=style)
 
 
 def _word(word: str) -> Text:
+    return _styled(word, STYLES.get(word, ""))
+
+
+def _say(out: Console, *pieces: str | Text, indent: int = 0, hang: int = 0) -> None:
+    """One paragraph: wrapped between words, later lines `hang` further in, no blanks at the ends of lines."""
     from rich.text import Text
 
-    return Text(word, style=STYLES.get(word, ""))
+    text = Text.assemble(*(printable(piece) if isinstance(piece, str) else piece for piece in pieces))
+    text.rstrip()
+    for number, (start, end) in enumerate(_lines(text.plain, out.width - indent - hang)):
+        margin = indent + (hang if number else 0)
+        out.print(Text(" " * margin) + text[start:end], soft_wrap=True)
 
 
-def _line(*pieces: str | Text, indent: int = 0) -> RenderableType:
-    from rich.padding import Padding
-    from rich.text import Text
+def _lines(text: str, width: int) -> list[tuple[int, int]]:
+    """Where each line of a wrapped text begins and ends. Long words, paths above all, stay whole.
 
-    text = Text.assemble(*pieces)
-    return Padding(text, (0, 0, 0, indent)) if indent else text
+    A path cut in two opens nothing.
+    """
+    from rich.cells import cell_len
+
+    lines: list[tuple[int, int]] = []
+    for word in re.finditer(r"\S+", text):
+        start = lines[-1][0] if lines else 0
+        if lines and cell_len(text[start : word.end()]) <= width:
+            lines[-1] = (start, word.end())
+        else:
+            lines.append((word.start() if lines else 0, word.end()))
+    return lines
+
+
+def _counted(count: int, noun: str) -> str:
+    return f"{count} {noun}{'s' * (count != 1)}"
+
+
+def _verdicts(counts: Counter[str], order: Sequence[str]) -> str:
+    """`2 hold, 1 fails`."""
+    named = [(counts[word], word) for word in order if counts[word]]
+    return ", ".join(f"{count} {word if count == 1 else _PLURALS.get(word, word)}" for count, word in named)
 
 
 # ---------------------------------------------------------------------- check
 
 
 def show_check(check: Check, out: Console, *, quiet: bool = False) -> None:
-    """The verdict, the findings and the claims of one circuit."""
+    """The verdict, the findings and the claims of one circuit; one line where `quiet`."""
+    _headline(check.circuit.name, [_word(check.verdict)], _summary(check), out, quiet=quiet)
+    if not quiet:
+        show_findings(check.findings, out)
+        show_claims(check.claims, out)
+
+
+def _headline(name: str, verdict: Sequence[str | Text], details: str, out: Console, *, quiet: bool) -> None:
+    """A circuit's first line; the only one where `quiet`, and then never wrapped."""
     from rich.text import Text
 
-    out.print(_line(Text(check.circuit.name, style="bold"), "  ", _word(check.verdict), _summary(check)))
+    pieces = (_styled(name, "bold"), ": ", *verdict, f" ({printable(details)})")
     if quiet:
-        return
-    show_findings(check.findings, out)
-    show_claims(check.claims, out)
+        out.print(Text.assemble(*pieces), soft_wrap=True)
+    else:
+        _say(out, *pieces, hang=2)
 
 
 def _summary(check: Check) -> str:
-    counts = Counter(result.verdict for result in check.claims)
-    words = [f"{counts[word]} {_plural(word, counts[word])}" for word in ("holds", "fails", "undecided") if counts[word]]
-    claims = f"claims: {', '.join(words)}" if words else "no claims"
+    verdicts = _verdicts(Counter(result.verdict for result in check.claims), ("holds", "fails", "undecided"))
     found = Counter(finding.severity for finding in check.findings)
-    named = [f"{found[s]} {s}{'s' * (found[s] != 1)}" for s in ("error", "warning", "note") if found[s]]
-    return f"   {claims}" + (f"; {', '.join(named)}" if named else "")
+    named = [_counted(found[word], word) for word in ("error", "warning", "note") if found[word]]
+    return "; ".join(
+        [f"claims: {verdicts}" if verdicts else "no claims", *([", ".join(named)] if named else [])]
+    )
 
 
-def _plural(word: str, count: int) -> str:
-    return {"holds": "hold", "fails": "fail"}.get(word, word) if count != 1 else word
-
-
-def show_findings(findings: tuple[Finding, ...], out: Console) -> None:
+def show_findings(findings: Iterable[Finding], out: Console) -> None:
     """Each finding with its place, the line itself and the remedy."""
-    from rich.text import Text
-
     for finding in findings:
         place = finding.file if finding.line is None else f"{finding.file}:{finding.line}"
-        out.print(_line(_word(finding.severity), f" {finding.code}  ", Text(place, style="dim"), indent=2))
-        out.print(_line(finding.message, indent=4))
-        if finding.text.strip():
-            shown = finding.text.strip()
-            out.print(_line(Text(f"| {shown[:70]}{'...' if len(shown) > 70 else ''}", style="dim"), indent=4))
-        out.print(_line(f"-> {finding.remedy}", indent=4))
+        _say(out, _word(finding.severity), f" {finding.code}  ", _styled(place, "dim"), indent=2, hang=2)
+        line = printable(finding.text.strip())
+        if line and not line.startswith("["):  # a table's own heading tells nothing
+            _say(out, _styled(f"| {line[:70]}{'...' if len(line) > 70 else ''}", "dim"), indent=4)
+        _say(out, finding.message, indent=4)
+        _say(out, f"-> {finding.remedy}", indent=4, hang=3)
 
 
-def show_claims(claims: tuple[ClaimResult, ...], out: Console) -> None:
-    """The claims as a table: what was said, what is exact, what the hand formula gives, what was wanted."""
+def show_claims(claims: Sequence[ClaimResult], out: Console) -> None:
+    """Each claim: its verdict and what it says; below, what is exact, what was wanted, what the hand says."""
+    from rich.cells import cell_len
+
     if not claims:
         return
-    from rich.table import Table
-
-    table = Table(box=None, padding=(0, 2, 0, 0), show_edge=False, header_style="dim")
-    table.add_column("  claim", min_width=16, max_width=30)
-    table.add_column("exact", justify="right", no_wrap=True)
-    if any(result.hand is not None for result in claims):
-        table.add_column("by hand", justify="right", no_wrap=True)
-    table.add_column("wanted")
-    table.add_column("verdict", no_wrap=True)
-    for result in claims:
-        unit = result.claim.measure.unit
-        cells: list[str | Text] = [f"  {result.claim.says}", _quantity(result.exact, unit)]
-        if len(table.columns) == 5:
-            cells.append(_hand(result))
-        table.add_row(*cells, result.claim.bound.text, _word(result.verdict))
-    out.print(table)
-    for result in claims:
+    margin = max(len(result.verdict) for result in claims) + 2
+    numbers = [_numbers(result) for result in claims]
+    widths = [max((cell_len(row[k]) for row in numbers if len(row) > k + 1), default=0) for k in range(2)]
+    for result, row in zip(claims, numbers, strict=True):
+        verdict = _word(result.verdict)
+        verdict.pad_right(margin - len(result.verdict))
+        _say(out, verdict, result.claim.says, indent=2, hang=margin)
+        aligned = "".join(cell + " " * (widths[k] - cell_len(cell) + 3) for k, cell in enumerate(row[:-1]))
+        if row and cell_len(aligned + row[-1]) + 2 + margin <= out.width:
+            out.print(_styled(" " * (2 + margin) + aligned + row[-1]), soft_wrap=True)
+        elif row:
+            _say(out, "; ".join(row), indent=2 + margin)
         if result.why:
-            out.print(_line(f"{result.claim.says}: {result.why}", indent=4))
+            _say(out, result.why, indent=2 + margin)
 
 
-def _quantity(value: float | None, unit: str) -> str:
-    return "-" if value is None else format_quantity(value, unit)
+def _numbers(result: ClaimResult) -> list[str]:
+    unit = result.claim.measure.unit
+    wanted = result.claim.bound.text + (" over tolerance" if result.claim.over_tolerance else "")
+    row = [] if result.exact is None else [f"exact {format_quantity(result.exact, unit)}"]
+    row.append(f"wanted {wanted}")
+    if result.hand is not None:
+        row.append(f"by hand {format_quantity(result.hand, unit)}{_error_of_hand(result)}")
+    return row
 
 
-def _hand(result: ClaimResult) -> str:
-    if result.hand is None:
-        return "-"
-    shown = format_quantity(result.hand, result.claim.measure.unit)
-    if result.exact is None or result.exact == 0:
-        return shown
+def _error_of_hand(result: ClaimResult) -> str:
+    assert result.hand is not None
+    if result.exact is None:
+        return ""
+    if abs(result.hand - result.exact) <= ROUNDING * abs(result.exact):
+        return " (the same)"
     if result.claim.measure.unit in ("dB", "deg"):
-        return f"{shown} ({result.hand - result.exact:+.3g})"
-    return f"{shown} ({100 * (result.hand / result.exact - 1):+.3g} %)"
+        return f" ({result.hand - result.exact:+.2g})"
+    return f" ({100 * (result.hand / result.exact - 1):+.2g} %)" if result.exact else ""
 
 
 # ---------------------------------------------------------------------- compare
 
 
 def show_comparison(comparison: Comparison, out: Console, *, quiet: bool = False) -> None:
-    """The verdict against a second opinion, the worst place, and every span where the two differ."""
-    counts = Counter(curve.analysis for curve in comparison.curves)
-    what = ", ".join(f"{count} {name} curve{'s' * (count != 1)}" for name, count in counts.items())
-    out.print(_line("  ", _word(comparison.verdict), f" with {comparison.second_opinion} on {what}"))
-    if quiet:
-        return
+    """The comparison of one circuit with results somebody handed in; one line where `quiet`."""
+    counts = _counted_curves(comparison)
+    _headline(comparison.circuit.name, _verdict_of(comparison), counts, out, quiet=quiet)
+    if not quiet:
+        _show_details(comparison, out)
+
+
+def _verdict_of(comparison: Comparison) -> tuple[Text, str]:
+    agrees = comparison.verdict == "agree"
+    return _word(
+        "agrees" if agrees else "differs"
+    ), f" {'with' if agrees else 'from'} {comparison.second_opinion}"
+
+
+def _counted_curves(comparison: Comparison) -> str:
+    """`4 ac curves`, or `1 of 4 ac curves` where one differs."""
+    total = Counter(curve.analysis for curve in comparison.curves)
+    wrong = Counter(curve.analysis for curve in comparison.curves if curve.verdict == "differ")
+    return ", ".join(
+        f"{f'{wrong[name]} of ' if wrong else ''}{_counted(count, f'{name} curve')}"
+        for name, count in total.items()
+    )
+
+
+def _show_details(comparison: Comparison, out: Console) -> None:
+    outputs = {f"v({','.join(comparison.circuit.output)})", *(f"v({n})" for n in comparison.circuit.output)}
     differing = [curve for curve in comparison.curves if curve.verdict == "differ"]
+    differing.sort(key=lambda curve: (curve.name not in outputs, -curve.worst.relative))
     for curve in differing[:MOST_LISTED]:
         _show_curve(curve, out)
     if len(differing) > MOST_LISTED:
-        out.print(_line(f"and {len(differing) - MOST_LISTED} more curves that differ", indent=4))
+        _say(out, f"and {len(differing) - MOST_LISTED} more curves that differ", indent=4)
     if not differing:
         worst = max(comparison.curves, key=lambda curve: curve.worst.relative)
-        out.print(_line(f"largest difference: {worst.name}{_where(worst)}, {_amount(worst.worst)}", indent=4))
+        amount = _amount(worst.worst)
+        _say(out, f"largest difference: {worst.name}{_where(worst)}: {amount}", indent=4, hang=2)
     for why, names in _grouped(comparison).items():
-        out.print(_line(f"not compared: {names}: {why}", indent=4))
+        _say(out, f"not compared: {names}: {why}", indent=4, hang=2)
     for remark in comparison.remarks:
-        out.print(_line(f"remark: {remark}", indent=4))
+        _say(out, f"note: {remark}", indent=4, hang=2)
 
 
 def _grouped(comparison: Comparison) -> dict[str, str]:
@@ -163,24 +244,26 @@ def _grouped(comparison: Comparison) -> dict[str, str]:
     groups: dict[str, list[str]] = {}
     for curve in comparison.uncompared:
         groups.setdefault(curve.why, []).append(curve.name)
+    listed = {why: list(dict.fromkeys(names)) for why, names in groups.items()}
     return {
-        why: ", ".join(dict.fromkeys(names)) if len(names) <= 4 else f"{', '.join(names[:3])} and {len(names) - 3} more"
-        for why, names in groups.items()
+        why: ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
+        for why, names in listed.items()
     }
 
 
 def _show_curve(curve: CurveComparison, out: Console) -> None:
-    look = f"   (FSV: {curve.fsv.grade.lower()})" if curve.fsv is not None else ""
-    out.print(_line(f"{curve.name} {curve.analysis} ", _word("differ"), f"s, worst{_where(curve)}{look}", indent=4))
     worst = curve.worst
-    out.print(_line(f"exact {_value(worst.exact)}, other {_value(worst.other)}: {_amount(worst)}", indent=6))
+    look = f"; FSV {curve.fsv.grade.lower()}" if curve.fsv is not None else ""
+    _say(out, f"{curve.name} {curve.analysis}: {_amount(worst)}{_where(curve)}{look}", indent=4, hang=2)
+    _say(out, f"exact {_value(worst.exact)}", indent=6)
+    _say(out, f"other {_value(worst.other)}", indent=6)
     if curve.analysis == "operating point":
         return
     for span in curve.spans[:MOST_LISTED]:
-        ends = f"{format_quantity(span.start, 'Hz')} to {format_quantity(span.stop, 'Hz')}"
-        out.print(_line(f"span {ends}: up to {_amount(span.worst)} at {format_quantity(span.worst.at, 'Hz')}", indent=6))
+        low, high, at = (format_quantity(f, "Hz") for f in (span.start, span.stop, span.worst.at))
+        _say(out, f"from {low} to {high}: up to {_amount(span.worst)} at {at}", indent=6, hang=2)
     if len(curve.spans) > MOST_LISTED:
-        out.print(_line(f"and {len(curve.spans) - MOST_LISTED} more spans", indent=6))
+        _say(out, f"and {len(curve.spans) - MOST_LISTED} more spans", indent=6)
 
 
 def _where(curve: CurveComparison) -> str:
@@ -188,16 +271,18 @@ def _where(curve: CurveComparison) -> str:
 
 
 def _value(value: complex | float) -> str:
-    if isinstance(value, complex):
-        if value == 0:
-            return "0"
-        angle = math.degrees(math.atan2(value.imag, value.real))
-        return f"{20 * math.log10(abs(value)):.4f} dB {angle:.3f} deg"
-    return f"{value:.7g}"
+    if not isinstance(value, complex):
+        return f"{value:.7g}"
+    if value == 0:
+        return "0"
+    angle = math.degrees(math.atan2(value.imag, value.real))
+    return f"{20 * math.log10(abs(value)):10.4f} dB {angle:10.3f} deg"
 
 
 def _amount(worst: Difference) -> str:
-    if worst.relative < 1e-9:
+    if worst.relative == 0:
+        return "none"
+    if worst.relative < ROUNDING:
         return f"{worst.relative:.1e} of the value (rounding)"
     parts = []
     if worst.db is not None:
@@ -207,15 +292,89 @@ def _amount(worst: Difference) -> str:
     return ", ".join(parts) if parts else f"{100 * worst.relative:.4g} %"
 
 
-# ---------------------------------------------------------------------- confirm
+# ---------------------------------------------------------------------- confirm, simulate
 
 
-def show_confirmation(done: Confirmation, out: Console, *, quiet: bool = False) -> None:
-    """The whole of the main job for one circuit."""
-    show_check(done.check, out, quiet=quiet)
+def show_confirmation(done: Confirmation, out: Console, *, strict: bool = False, quiet: bool = False) -> None:
+    """The whole of the main job for one circuit; one line where `quiet`."""
+    details = [_summary(done.check)]
     if done.written is None:
-        out.print(_line("  no netlist was written: mend the errors, or give --anyway"))
+        details.append("no netlist was written")
+    elif done.comparison is None:
+        details.append("no second opinion was asked for")
+    elif quiet:
+        details.append("".join(str(piece) for piece in _verdict_of(done.comparison)))
+    verdict = _word(done.verdict(strict=strict))
+    _headline(done.check.circuit.name, [verdict], "; ".join(details), out, quiet=quiet)
+    if quiet:
+        return
+    show_findings(done.check.findings, out)
+    show_claims(done.check.claims, out)
     if done.comparison is not None:
-        show_comparison(done.comparison, out, quiet=quiet)
-    if done.folder is not None and not quiet:
-        out.print(_line(f"  kept in {done.folder}/: {', '.join(done.files)}"))
+        _say(out, *_verdict_of(done.comparison), f": {_counted_curves(done.comparison)}", indent=2, hang=2)
+        _show_details(done.comparison, out)
+    if done.written is None:
+        _say(out, "mend the errors, or write the netlist all the same with --anyway", indent=2)
+    _show_kept(done, out)
+
+
+def _show_kept(done: Confirmation, out: Console) -> None:
+    if done.folder is not None:
+        _say(out, f"kept in {done.folder}: {', '.join(done.files)}", indent=2, hang=2)
+
+
+def show_simulation(done: Confirmation, out: Console, *, quiet: bool = False) -> None:
+    """What a simulator's run gave, and where it is kept."""
+    assert done.opinion is not None
+    opinion = done.opinion
+    _headline(done.check.circuit.name, [opinion.who, " ran"], f"{opinion.seconds:.2f} s", out, quiet=quiet)
+    if quiet:
+        return
+    for analysis in dict.fromkeys(curve.analysis for curve in opinion.curves):
+        group = opinion.curves.of(analysis)
+        _say(
+            out,
+            f"{analysis}: {_counted(len(group), 'curve')} of {_counted(len(group[0]), 'point')}",
+            indent=2,
+        )
+    _show_kept(done, out)
+
+
+def show_total(words: Sequence[str], out: Console) -> None:
+    """How several circuits came out; words: `passes`, `holds`, `fails`, `undecided` or `error` for each."""
+    counts = Counter(words)
+    done = _verdicts(counts, ("passes", "holds", "fails", "undecided"))
+    broken = f"{counts['error']} could not be done" if counts["error"] else ""
+    _say(out, f"{_counted(len(words), 'circuit')}: {', '.join(part for part in (done, broken) if part)}")
+
+
+# ---------------------------------------------------------------------- response
+
+
+def show_response(curves: Sequence[Curve], out: Console) -> None:
+    """Curves of one axis as a table of dB and degrees; side by side as many as fit."""
+    columns = [_column("frequency", [format_quantity(f, "Hz", 6) for f in curves[0].axis.tolist()])]
+    block: list[list[str]] = []
+    for curve in curves:
+        values = curve.values.tolist()
+        pair = [
+            _column(f"{curve.name} dB", [f"{20 * math.log10(abs(v)):.4f}" if v else "-inf" for v in values]),
+            _column("deg", [f"{math.degrees(math.atan2(v.imag, v.real)):.3f}" if v else "-" for v in values]),
+        ]
+        if block and sum(len(column[0]) + 2 for column in columns + block + pair) - 2 > out.width:
+            _show_rows(columns + block, out)
+            out.print()
+            block = []
+        block += pair
+    _show_rows(columns + block, out)
+
+
+def _column(heading: str, cells: list[str]) -> list[str]:
+    heading = printable(heading)
+    width = max(len(text) for text in (heading, *cells))
+    return [f"{text:>{width}}" for text in (heading, *cells)]
+
+
+def _show_rows(columns: Sequence[Sequence[str]], out: Console) -> None:
+    for number, row in enumerate(zip(*columns, strict=True)):
+        out.print(_styled("  ".join(row), "" if number else "dim"), soft_wrap=True)

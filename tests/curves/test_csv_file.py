@@ -162,7 +162,8 @@ def test_lines_are_counted_far_into_the_file() -> None:
 
 # column of cells: half units that the digits leave open, by the rule in the docstring
 RESOLUTIONS = {
-    "fixed point": (["0.123", "12.345", "0.000"], [0.5e-3 * 1e-2, 0.5e-3, 0.5e-3]),
+    "fixed number of decimals": (["0.123", "12.345", "0.000"], [0.5e-3, 0.5e-3, 0.5e-3]),
+    "zeros dropped": (["0.123", "12.345", "0"], [0.5e-3 * 1e-2, 0.5e-3, 0.5e-3]),
     "exponents": (["1.23e-1", "4.56e+3", "0.00e0"], [0.5e-3, 5.0, 0]),
     "one exponent in the column": (["0.123", "1.2345e3", "1"], [0.5e-5, 0.05, 0.5e-4]),
     "whole numbers": (["1", "10", "1000"], [0.5e-3, 0.5e-2, 0.5]),
@@ -174,7 +175,7 @@ RESOLUTIONS = {
 
 @pytest.mark.parametrize("case", RESOLUTIONS)
 def test_resolution_of_a_real_column(case: str) -> None:
-    """The smaller of half a unit of the last decimal (no exponents) and of the last significant digit."""
+    """Half a unit of the last decimal where all have as many; else the smaller of that and the last digit's."""
     cells, expected = RESOLUTIONS[case]
     curve = _one("time,v(out)\n" + "".join(f"{n},{cell}\n" for n, cell in enumerate(cells)))
     if expected is None:

@@ -1,0 +1,101 @@
+"""A passive network between fixed potentials as weighted branches between its inner nodes.
+
+With A the branch-node incidence matrix over the inner nodes and the potentials u of the fixed nodes known,
+Kirchhoff's current law reads
+
+    (A^T g A + s A^T c A) v = (b_G + s b_C) u + j,
+
+g and c the diagonal matrices of the branches' conductances and capacitances. Nothing is ever summed into a
+diagonal, so that the branches' own digits reach the answer.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from ..circuit import Network
+from .solver import solver_for
+
+Float = npt.NDArray[np.float64]
+Indices = npt.NDArray[np.int64]
+
+
+@dataclass(frozen=True)
+class Branches:
+    """The branches that touch an inner node.
+
+    inner: (inner,), node indices of the network; fixed: the other nodes, ground first
+    ends: (branches, 2), rows of `inner`, -1 for a fixed node
+    held: (branches,), which fixed node, as a node index, the branch ends on; -1 where it ends on none
+    conductance, capacitance: (branches,), siemens and farad; one of the two is zero in each branch
+    """
+
+    inner: Indices
+    fixed: tuple[int, ...]
+    ends: Indices
+    held: Indices
+    conductance: Float
+    capacitance: Float
+
+    def across(self, values: Float) -> Float:
+        """A v: (inner, columns) node values to (branches, columns) differences."""
+        padded = np.vstack([values, np.zeros((1, values.shape[1]))])
+        return np.asarray(padded[self.ends[:, 0]] - padded[self.ends[:, 1]])
+
+    def gathered(self, flows: Float) -> Float:
+        """A^T i: (branches, columns) currents to the (inner, columns) currents leaving each node."""
+        total = np.zeros((len(self.inner) + 1, flows.shape[1]))
+        np.add.at(total, self.ends[:, 0], flows)
+        np.add.at(total, self.ends[:, 1], -flows)
+        return total[:-1]
+
+    def groups(self, weights: Float) -> list[Indices]:
+        """The groups of inner nodes that branches of positive weight join but do not tie to a fixed node.
+
+        Each group is an array of rows of `inner`; a node that no such branch touches is a group of its own.
+        """
+        import scipy.sparse
+        import scipy.sparse.csgraph
+
+        count = len(self.inner)
+        used = weights > 0
+        a, b = np.where(self.ends[used] < 0, count, self.ends[used]).T
+        graph = scipy.sparse.coo_matrix((np.ones(len(a)), (a, b)), shape=(count + 1, count + 1))
+        _, label = scipy.sparse.csgraph.connected_components(graph, directed=False)
+        order = np.argsort(label[:count], kind="stable")
+        cuts = np.flatnonzero(np.diff(label[:count][order])) + 1
+        split = np.split(order, cuts) if count else []
+        return [np.asarray(rows, dtype=np.int64) for rows in split if label[rows[0]] != label[count]]
+
+
+def branches_of(network: Network) -> Branches | None:
+    """The branches of a network of R, C, V and I whose voltage sources form a tree from ground, else None."""
+    stiff = solver_for(network).stiff
+    if stiff is None or stiff.controlled:
+        return None
+    return branches_between(network, stiff.nodes)
+
+
+def branches_between(network: Network, fixed: Iterable[int]) -> Branches:
+    """The resistors and capacitors of a network, the nodes `fixed` held."""
+    arrays = network.arrays()
+    holding = tuple(fixed)
+    row_of = np.zeros(arrays.node_count, dtype=np.int64)
+    row_of[list(holding)] = -1
+    inner = np.flatnonzero(row_of == 0)
+    row_of[inner] = np.arange(len(inner))
+    kinds = arrays.kinds
+    passive = np.flatnonzero((kinds == ord("R")) | (kinds == ord("C")))
+    nodes = arrays.nodes[passive, :2]
+    ends = row_of[nodes]
+    kept = (nodes[:, 0] != nodes[:, 1]) & (ends >= 0).any(axis=1)
+    passive, nodes, ends = passive[kept], nodes[kept], ends[kept]
+    resistive = kinds[passive] == ord("R")
+    values = arrays.values[passive]
+    held = np.where(ends[:, 0] < 0, nodes[:, 0], np.where(ends[:, 1] < 0, nodes[:, 1], -1))
+    conductance = np.where(resistive, 1.0 / np.where(resistive, values, 1.0), 0.0)
+    return Branches(inner, holding, ends, held, conductance, np.where(resistive, 0.0, values))

@@ -1,0 +1,278 @@
+"""The natural modes of a network and what each contributes to an output."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from ..circuit import Network
+from ..errors import CircuitError, UndecidedError
+from . import twofold
+from .ac import dc_solvable, node_pair
+from .branches import Branches, branches_of
+from .contour import Place, expanded, pole_places
+from .passive_modes import PassiveModes, passive_modes
+from .reduction import fixed_potentials, reduced_system
+from .solver import Drive, require_solvable, solver_for
+from .span import span_of
+
+Complex = npt.NDArray[np.complex128]
+Float = npt.NDArray[np.float64]
+Pair = tuple[int, int]
+
+MOST_NODES = 1000  # inner nodes of a passive network up to which every mode is computed
+_AGREES = 1e-11  # of the greatest response: how far the sum over modes may lie from the exact response
+
+
+@dataclass(frozen=True)
+class Modes:
+    """A transfer function as H(s) = direct + sum_k residues[k] / (s - poles[k]).
+
+    poles: rad/s, (modes,), slowest first, float64 where all are real, else complex128
+    residues: 1/s times the unit of the response, (modes,); a mode that does not reach the output has about 0
+    direct: the response at infinite frequency
+    """
+
+    poles: npt.NDArray[np.float64] | Complex
+    residues: npt.NDArray[np.float64] | Complex
+    direct: float
+
+    def response(self, s: npt.ArrayLike) -> Complex:
+        """H at complex frequencies s, rad/s, any shape."""
+        points = np.asarray(s, dtype=np.complex128)
+        return np.asarray(self.direct + (self.residues / (points[..., None] - self.poles)).sum(axis=-1))
+
+
+@dataclass(frozen=True)
+class ModalSystem:
+    """The transfer functions from sources to outputs as sums over terms, real parts meant:
+
+    H(s) = direct + sum_k residues[k] / (s - poles[k])  (a term off the real axis stands for its conjugate too)
+
+    poles: (terms,); residues: (sources, outputs, terms); real where all poles are
+    static, direct: (sources, outputs), the responses at zero and at infinite frequency, no rounding of the sum
+    in either; static leaves out terms with a pole at exactly 0
+    """
+
+    poles: npt.NDArray[np.float64] | Complex
+    residues: npt.NDArray[np.float64] | Complex
+    static: Float
+    direct: Float
+
+    @property
+    def weights(self) -> npt.NDArray[np.float64] | Complex:
+        """residues / -poles: what each term lacks of `static` just after a step; 0 for poles at 0."""
+        moving = self.poles != 0
+        return np.asarray(np.where(moving, self.residues, 0.0) / -np.where(moving, self.poles, 1.0))
+
+    @property
+    def integrating(self) -> npt.NDArray[np.bool_]:
+        """(sources, outputs): True where a steady input makes the output grow for ever."""
+        return np.asarray((self.residues[..., self.poles == 0] != 0).any(axis=-1))
+
+    def at(self, s: Complex) -> Complex:
+        """The sum at each s: (sources, outputs, points)."""
+        above = 1 / (s - self.poles[:, None])
+        if np.iscomplexobj(self.poles):
+            paired = np.einsum("sot,tp->sop", self.residues, above)
+            other = np.einsum("sot,tp->sop", np.conj(self.residues), 1 / (s - np.conj(self.poles)[:, None]))
+            return np.asarray(self.direct[..., None] + (paired + other) / 2)
+        return np.asarray(self.direct[..., None] + np.einsum("sot,tp->sop", self.residues, above))
+
+
+def modes(network: Network, of: str, source: str | None = None) -> Modes:
+    """The poles, residues and direct term of one output.
+
+    of: a node or a pair `"a b"`; source: the source the response is per unit of, by default the one that
+    carries ac, else the one that has a waveform
+    Raises UndecidedError where poles coincide so that residues do not exist, or beyond the stated sizes.
+    """
+    pair = node_pair(network, of)
+    driving = source if source is not None else step_source(network)
+    if driving not in network.sources:
+        raise CircuitError(f"there is no source called {driving!r}.", remedy="Name one of the sources.")
+    if branches_of(network) is None:
+        for place in pole_places(network):
+            if place.count > 1:
+                raise UndecidedError(
+                    f"{place.count} poles lie together near {place.pole.real:.6g} rad/s, so they have no residues of their own."
+                )
+    elif len(branches_of(network).inner) > MOST_NODES:  # type: ignore[union-attr]
+        raise UndecidedError(f"the network has more than {MOST_NODES} inner nodes, too many to list every mode.")
+    system = modal_system(network, [pair], [driving])
+    poles, residues = system.poles, system.residues[0, 0]
+    if np.iscomplexobj(poles):
+        off = poles.imag != 0
+        poles, residues = (
+            np.concatenate([poles, np.conj(poles[off])]),
+            np.concatenate([np.where(off, residues / 2, residues), np.conj(residues[off]) / 2]),
+        )
+        if not off.any():
+            poles, residues = poles.real, residues.real
+    order = np.lexsort((np.imag(poles), np.abs(poles), np.abs(np.real(poles))))
+    return Modes(poles[order], residues[order], float(system.direct[0, 0]))
+
+
+def step_source(network: Network) -> str:
+    """The source a response over time is per unit of: the one with ac, else the one with a waveform."""
+    for names in (
+        [name for name, source in network.sources.items() if source.ac],
+        [name for name, source in network.sources.items() if source.waveform is not None],
+    ):
+        if len(names) == 1:
+            return names[0]
+        if names:
+            raise UndecidedError(f"{len(names)} sources drive the network: {', '.join(names[:8])}.")
+    raise CircuitError("no source carries ac or a waveform.", remedy="Give one source ac = 1.")
+
+
+def natural_rates(network: Network) -> Complex:
+    """The natural frequencies, rad/s, of the network with its sources dead, poles taken together as often."""
+    require_solvable(network)
+    branches = branches_of(network)
+    if branches is None:
+        return np.array([place.pole for place in pole_places(network) for _ in range(place.count)], dtype=complex)
+    if len(branches.inner) > MOST_NODES:
+        raise UndecidedError(f"the network has more than {MOST_NODES} inner nodes, too many to list every mode.")
+    return np.asarray(0.0 - passive_modes(branches, span_of(network).low).rates, dtype=np.complex128)
+
+
+def modal_system(network: Network, of: Sequence[Pair], sources: Sequence[str]) -> ModalSystem:
+    """The transfer functions from each source to each output, checked against the exact response.
+
+    Raises UnsolvableError, and UndecidedError where the modes cannot be had to the accuracy promised.
+    """
+    require_solvable(network)
+    branches = branches_of(network)
+    places: tuple[Place, ...] = ()
+    if branches is None:
+        places = pole_places(network)
+        poles, residues = expanded(places, lambda s: sampled(network, of, sources, s))
+    elif len(branches.inner) > MOST_NODES:
+        poles, residues = reduced_system(network, branches, of, sources)
+    else:
+        poles, residues = _passive_residues(network, branches, of, sources)
+    if np.iscomplexobj(poles) and not poles.imag.any():
+        poles, residues = poles.real, residues.real
+    static, direct = _limits(network, of, sources)
+    system = ModalSystem(poles, residues, static, direct)
+    integrating = system.integrating
+    if integrating.any():
+        regular = direct + system.weights.real.sum(axis=-1)
+        system = ModalSystem(poles, residues, np.where(integrating, regular, static), direct)
+    _check(network, of, sources, system)
+    return system
+
+
+def sampled(network: Network, of: Sequence[Pair], sources: Sequence[str], s: Complex) -> Complex:
+    """The exact responses at any s: (sources, outputs, points)."""
+    return _differences(_voltages(network, of, sources, s), of)
+
+
+def _voltages(
+    network: Network, of: Sequence[Pair], sources: Sequence[str], s: npt.NDArray[np.complex128] | Float
+) -> npt.NDArray[np.complex128] | Float:
+    solver = solver_for(network)
+    wanted = sorted({node for pair in of for node in pair})
+    rows = []
+    for name in sources:
+        drive = np.zeros(len(network), dtype=np.complex128)
+        drive[network.part_index(name)] = 1.0
+        blocks = [
+            solver.solve(s[start : start + solver.block()], Drive(drive), wanted).voltages[wanted]
+            for start in range(0, len(s), solver.block())
+        ]
+        full = np.zeros((network.arrays().node_count, len(s)), dtype=blocks[0].dtype)
+        full[wanted] = np.hstack(blocks)
+        rows.append(full)
+    return np.array(rows)
+
+
+def _differences(voltages: npt.NDArray, of: Sequence[Pair]) -> npt.NDArray:  # type: ignore[type-arg]
+    a, b = np.array(of, dtype=np.int64).T
+    return np.asarray(voltages[:, a] - voltages[:, b])
+
+
+def _limits(network: Network, of: Sequence[Pair], sources: Sequence[str]) -> tuple[Float, Float]:
+    """The responses at zero and infinite frequency, zero where no more than rounding is left of a difference."""
+    span = span_of(network)
+    low = 0.0 if dc_solvable(network) else span.far_below
+    points = np.array([low, span.far_above, min(span.far_above * 1e8, 1e158)])
+    voltages = np.real(_voltages(network, of, sources, points))
+    values = _differences(voltages, of)
+    a, b = np.array(of, dtype=np.int64).T
+    size = np.minimum(np.abs(voltages[:, a]), np.abs(voltages[:, b]))
+    if not solver_for(network).eliminates:
+        size = np.maximum(size, np.abs(voltages).max(axis=1, keepdims=True))
+    values = np.where(np.abs(values) <= 64 * np.finfo(float).eps * size, 0.0, values)
+    near, far = np.abs(values[..., 1]), np.abs(values[..., 2])
+    if (far > 1e4 * near).any():
+        raise UndecidedError("the output follows the rate of change of a source, so an edge would make it infinite.")
+    return values[..., 0], np.where(far < 1e-4 * near, 0.0, values[..., 1])
+
+
+def _passive_residues(
+    network: Network, branches: Branches, of: Sequence[Pair], sources: Sequence[str]
+) -> tuple[Float, Float]:
+    found = passive_modes(branches, span_of(network).low)
+    row = np.full(network.arrays().node_count, -1)
+    row[branches.inner] = np.arange(len(branches.inner))
+    a, b = row[np.array(of, dtype=np.int64).T]
+    high, low = twofold.subtract(_rows(found.shapes, a), _rows(found.shapes, b))
+    seen = high + low
+    driven = np.array([_driven(network, branches, found, row, name) for name in sources])
+    return 0.0 - found.rates, driven[:, None, :] * (seen / found.stored)
+
+
+def _rows(shapes: twofold.Twofold, rows: npt.NDArray[np.int64]) -> twofold.Twofold:
+    """Rows of the shapes; row -1, a fixed node, does not move."""
+    still = (rows >= 0)[:, None]
+    return np.where(still, shapes[0][rows], 0.0), np.where(still, shapes[1][rows], 0.0)
+
+
+def _driven(
+    network: Network, branches: Branches, found: PassiveModes, row: npt.NDArray[np.int64], name: str
+) -> Float:
+    """v_k . (b_G - rate_k b_C + j): how strongly a source of one volt or ampere drives each mode."""
+    source = network.sources[name]
+    a, b = (int(row[network.node_index(node)]) for node in source.nodes)
+    if source.kind == "I":
+        high, low = twofold.subtract(_rows(found.shapes, np.array([b])), _rows(found.shapes, np.array([a])))
+        return np.asarray((high + low)[0])
+    level = fixed_potentials(network, name)[branches.held] * (branches.held >= 0)
+    used = np.flatnonzero(level)
+    inner = branches.ends[used].max(axis=1)
+    shape = _rows(found.shapes, inner)
+
+    def flow(weights: Float) -> twofold.Twofold:
+        return twofold.sum_rows(twofold.times(shape, np.broadcast_to((weights * level)[used, None], shape[0].shape)))
+
+    high, low = twofold.subtract(flow(branches.conductance), twofold.times(flow(branches.capacitance), found.rates))
+    return np.asarray(high + low)
+
+
+def _check(network: Network, of: Sequence[Pair], sources: Sequence[str], system: ModalSystem) -> None:
+    """Raise UndecidedError unless the sum over modes is the exact response at frequencies over the whole span."""
+    moving = np.abs(system.poles[system.poles != 0])
+    if not len(moving) or not len(sources) or not len(of):
+        return
+    low, high = moving.min() / 10, moving.max() * 10
+    count = min(60, max(5, math.ceil(2 * math.log10(high / low)) + 1))
+    s = 1j * np.geomspace(low, high, count)
+    voltages = _voltages(network, of, sources, s)
+    exact = _differences(voltages, of)
+    error = np.abs(system.at(s) - exact).max(axis=-1)
+    # A difference of nearly equal voltages has fewer digits in the exact response than in the modes.
+    a, b = np.array(of, dtype=np.int64).T
+    rounding = 1e-14 * np.minimum(np.abs(voltages[:, a]), np.abs(voltages[:, b])).max(axis=-1)
+    size = np.maximum(np.abs(exact).max(axis=-1), np.abs(system.static))
+    worst = error > _AGREES * size + rounding
+    if worst.any():
+        share = float((error / np.where(size > 0, size, 1.0)).max())
+        raise UndecidedError(
+            f"the natural modes give the response only to {share:.1e} of its greatest value; {_AGREES:.0e} is asked.",
+        )

@@ -1,0 +1,141 @@
+"""The exact response over time to the waveforms of all sources, from the steady state at t = 0."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+import numpy as np
+import numpy.typing as npt
+
+from ..circuit import Network, Sine, Source
+from ..errors import CircuitError, UndecidedError
+from .ac import node_pair
+from .modes import ModalSystem, modal_system, sampled
+from .pieces import Pieces, followed, pieces_of
+from .residual import _product as product_error
+from .solver import require_solvable
+
+Float = npt.NDArray[np.float64]
+Pair = tuple[int, int]
+
+_BLOCK = 4_000_000  # numbers held at once: times by terms
+
+
+def transient(network: Network, time: npt.ArrayLike, of: str | Sequence[str]) -> Float:
+    """The exact response at times in seconds, volts.
+
+    time: (times,), zero or more, in any order; of: a node, a pair `"a b"`, or a list of these
+    Returns (times,), or (of, times) for a list.
+
+    Before t = 0 every source has kept its waveform's value at t = 0, or its dc value where it has no waveform,
+    for ever; nodes that only capacitors hold have carried no charge. At a vertical edge the value is the one
+    just after it. Each mode is followed in closed form from the last corner before each time: there is no time
+    step. Raises CircuitError for wrong names and times, UnsolvableError where there is no unique solution, and
+    UndecidedError where there is no steady state to start from or the modes cannot be had to full accuracy.
+    """
+    points = _times(time)
+    single = isinstance(of, str)
+    pairs = [node_pair(network, text) for text in ([of] if isinstance(of, str) else of)]
+    names = driving(network)
+    require_solvable(network)
+    answer = np.zeros((len(pairs), len(points)))
+    if names and pairs:
+        system = modal_system(network, pairs, names)
+        for number, name in enumerate(names):
+            answer += _from_source(network, pairs, system, number, network.sources[name], points)
+    return answer[0] if single else answer
+
+
+def _times(time: npt.ArrayLike) -> Float:
+    try:
+        points = np.atleast_1d(np.asarray(time, dtype=np.float64))
+    except (TypeError, ValueError) as exc:
+        raise CircuitError(f"the times are not numbers: {exc}.", remedy="Give seconds.") from exc
+    if points.ndim != 1 or not np.isfinite(points).all() or (points < 0).any():
+        raise CircuitError("the times are no list of finite numbers from zero up.", remedy="Give seconds.")
+    return points
+
+
+def driving(network: Network) -> list[str]:
+    """The sources that do anything over time: those with a waveform, or a dc value other than zero."""
+    return [
+        name for name, source in network.sources.items() if source.waveform is not None or source.dc not in (None, 0.0)
+    ]
+
+
+def starting_value(source: Source) -> float:
+    """What the source has given for ever before t = 0."""
+    return source.waveform.start if source.waveform is not None else source.operating_value
+
+
+def _from_source(
+    network: Network, pairs: Sequence[Pair], system: ModalSystem, number: int, source: Source, time: Float
+) -> Float:
+    """What one source contributes: (outputs, times)."""
+    start, wave = starting_value(source), source.waveform
+    static, integrating = system.static[number], system.integrating[number]
+    if integrating.any() and (start != 0 or isinstance(wave, Sine)):
+        raise UndecidedError(
+            f"there is no steady state to start from: {source.name} charges nodes that nothing drains.",
+        )
+    if wave is None:
+        return np.repeat(static[:, None] * start, len(time), axis=1)
+    if isinstance(wave, Sine):
+        steady = sampled(network, pairs, [source.name], np.array([2j * math.pi * wave.frequency]))[0, :, 0]
+        return _under_sine(system, number, wave, steady, time)
+    pieces = pieces_of(wave)
+    answer = static[:, None] * pieces.value(time)
+    if integrating.any():
+        total = (system.residues[number][:, system.poles == 0]).real.sum(axis=-1)
+        answer += total[:, None] * np.where(time < pieces.begin, 0.0, _integral(pieces, time))
+    moving = system.poles != 0
+    lag = followed(pieces, system.poles[moving])
+    weights = system.weights[number][:, moving]
+    for part in blocks(np.flatnonzero(time >= pieces.begin), len(system.poles)):
+        answer[:, part] += np.real(lag.at(time[part]) @ weights.T).T
+    return np.asarray(answer)
+
+
+def blocks(rows: npt.NDArray[np.int64], terms: int) -> list[npt.NDArray[np.int64]]:
+    """The rows in blocks that keep rows by terms bounded."""
+    size = max(1, _BLOCK // max(terms, 1))
+    return [rows[start : start + size] for start in range(0, len(rows), size)]
+
+
+def _integral(pieces: Pieces, time: Float) -> Float:
+    """The integral of the waveform from `begin`, where it began at zero."""
+    turn, piece, since = pieces.located(np.maximum(time, pieces.begin))
+    finite = np.where(np.isfinite(pieces.lengths), pieces.lengths, 0.0)
+    areas = finite * (pieces.levels + np.where(finite > 0, pieces.ends, 0.0)) / 2
+    before = np.concatenate([[0.0], np.cumsum(areas)])
+    here = since * (pieces.levels[piece] + pieces.slopes[piece] * since / 2)
+    return np.asarray(turn * before[-1] + before[piece] + here)
+
+
+def turns_of(frequency: float, since: Float) -> Float:
+    """The part of a turn, in [-1/2, 1/2], that frequency times seconds leaves beyond whole turns."""
+    whole, missing = product_error(np.full_like(since, frequency), since)
+    return np.asarray((whole - np.rint(whole)) + missing)
+
+
+def _under_sine(
+    system: ModalSystem, number: int, wave: Sine, steady: npt.NDArray[np.complex128], time: Float
+) -> Float:
+    """The phasor of the exact response, and each mode's own decay from the mismatch at the beginning."""
+    omega = 2 * math.pi * wave.frequency
+    phasor = wave.amplitude * np.exp(1j * math.radians(wave.phase))
+    since = time - wave.delay
+    going = since >= 0
+    turning = np.exp(2j * math.pi * turns_of(wave.frequency, np.where(going, since, 0.0)))
+    rest = system.static[number][:, None] * wave.start
+    running = system.static[number][:, None] * wave.offset + np.imag(steady[:, None] * (phasor * turning))
+    answer = np.where(going, running, rest)
+    moving = system.poles != 0
+    poles, weights = system.poles[moving], system.weights[number][:, moving]
+    # e' = p e - u' with u' = (w U e^jwt + w conj(U) e^-jwt) / 2 has this solution at t = 0:
+    forced = -(omega / 2) * (phasor / (1j * omega - poles) + np.conj(phasor) / (-1j * omega - poles))
+    forced = forced if np.iscomplexobj(poles) else forced.real
+    for part in blocks(np.flatnonzero(going), len(poles)):
+        answer[:, part] -= np.real(np.exp(np.outer(since[part], poles)) @ (weights * forced).T).T
+    return np.asarray(answer)
