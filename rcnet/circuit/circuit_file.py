@@ -30,6 +30,8 @@ SUFFIX = ".rc.toml"
 MAX_FILE_BYTES = 16 * 1024 * 1024
 MAX_PROBLEMS = 50
 
+# The library's reader takes time in the square of a key's dots.
+_DEEP_KEY = re.compile(r"""(?<![\w-])(?:(?:[\w-]++|"[^"\n]*"|'[^'\n]*')[ \t]*+\.[ \t]*+){40}""")
 _TOP = ("title", "output", "parts", "ladder", "sources", "analysis", "conditions", "claims")
 _STRING = re.compile(r""" "([^"\\]*)" | '([^']*)' """, re.VERBOSE)
 _SWEEP = ("from", "to", "per_decade")
@@ -55,6 +57,9 @@ def parse_circuit_file(text: str, file: str) -> Circuit:
         raise CircuitError(
             "the file is empty.", file=file, remedy="Copy a starter with `rcnet new` and edit it."
         )
+    if deep := _DEEP_KEY.search(text):
+        line = text.count("\n", 0, deep.start()) + 1
+        raise CircuitError("a key has forty dots and more.", file=file, line=line, remedy="Shorten the key.")
     try:
         table = tomllib.loads(text)
     except tomllib.TOMLDecodeError as exc:

@@ -5,8 +5,10 @@ from __future__ import annotations
 import importlib
 import math
 from array import array
+from collections import Counter
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
+from itertools import chain
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -82,6 +84,21 @@ class Network:
     def add_capacitor(self, name: str, a: str, b: str, value: str | float, **extras: Any) -> None:
         """Add a capacitor; value in farad, or text as `"10 nF"`. Options as for a resistor."""
         self._add_valued("C", name, (a, b), value, extras)
+
+    def add_resistors(
+        self, names: Iterable[str], a: Iterable[str], b: Iterable[str], values: npt.ArrayLike
+    ) -> None:
+        """Add many resistors at once, the k-th between the k-th of `a` and of `b`; values (parts,), ohm.
+
+        For networks of many thousand parts. Raises CircuitError, with nothing added, where one is not right.
+        """
+        self._add_many("R", list(names), list(a), list(b), values)
+
+    def add_capacitors(
+        self, names: Iterable[str], a: Iterable[str], b: Iterable[str], values: npt.ArrayLike
+    ) -> None:
+        """Add many capacitors at once, values (parts,) in farad; see `add_resistors`."""
+        self._add_many("C", list(names), list(a), list(b), values)
 
     def add_inductor(self, name: str, a: str, b: str, value: str | float, **extras: Any) -> None:
         """Add an inductor; value in henry. Options as for a resistor."""
@@ -196,6 +213,35 @@ class Network:
             )
         number = parse_quantity(value, kind.unit, name)
         self.add_part(_with_extras(Part(name, letter, nodes, number, senses), extras))
+
+    def _add_many(
+        self, letter: str, names: list[str], a: list[str], b: list[str], values: npt.ArrayLike
+    ) -> None:
+        numbers = _many_values(letter, names, a, b, values)
+        for node in chain(a, b):
+            if not isinstance(node, str):
+                check_node(node)
+        index = self._node_index
+        mentioned = dict.fromkeys(chain.from_iterable(zip(a, b, strict=True)))
+        fresh = [node for node in mentioned if node not in index]
+        if len(set(names)) != len(names) or not self._index.keys().isdisjoint(names):
+            counts = Counter(chain(self._index, names))
+            twice = next(name for name in names if counts[name] > 1)
+            raise CircuitError(
+                f"there are two parts called {shown(twice)}.", remedy="Give each part its own name."
+            )
+        for node in fresh:
+            check_node(node)
+        index.update(zip(fresh, range(len(index), len(index) + len(fresh)), strict=True))
+        self._node_names.extend(fresh)
+        nodes = np.full((len(names), 4), -1, dtype=np.int64)
+        nodes[:, 0], nodes[:, 1] = [index[node] for node in a], [index[node] for node in b]
+        self._nodes.frombytes(nodes.tobytes())
+        self._index.update(zip(names, range(len(self._names), len(self._names) + len(names)), strict=True))
+        self._names.extend(names)
+        self._kinds.extend(letter.encode() * len(names))
+        self._values.frombytes(numbers.tobytes())
+        self._arrays = None
 
     def _append(
         self, letter: str, name: str, nodes: Sequence[str], value: float, senses: str | None = None
@@ -416,6 +462,14 @@ class Network:
         """The density of the thermal noise at frequencies in Hz, V/sqrt(Hz); see `rcnet.exact.noise`."""
         return _analysis("rcnet.exact", "noise")(self, frequency, of, **options)  # type: ignore[no-any-return]
 
+    def transient(self, time: npt.ArrayLike, of: str | Sequence[str]) -> npt.NDArray[np.float64]:
+        """The exact response over time, in volts, at times in seconds; see `rcnet.exact.transient`."""
+        return _analysis("rcnet.exact", "transient")(self, time, of)  # type: ignore[no-any-return]
+
+    def modes(self, of: str, source: str | None = None) -> Any:
+        """Poles in rad/s, residues and the direct term of an output, a `rcnet.exact.Modes`."""
+        return _analysis("rcnet.exact", "modes")(self, of, source)
+
     def operating_point(self) -> dict[str, float]:
         """Node voltages with every source at its dc value; see `rcnet.exact.operating_point`."""
         return _analysis("rcnet.exact", "operating_point")(self)  # type: ignore[no-any-return]
@@ -429,6 +483,37 @@ def _analysis(room: str, name: str) -> Any:
     # The analyses live in rooms above this one. A method looks its own up when called, so that no import
     # of this room points upward and a network can be built without loading any of them.
     return getattr(importlib.import_module(room), name)
+
+
+def _many_values(
+    letter: str, names: list[str], a: list[str], b: list[str], values: npt.ArrayLike
+) -> npt.NDArray[np.float64]:
+    """The values of many parts as an array, once names and values are known to be right."""
+    kind = KINDS[letter]
+    try:
+        numbers = np.asarray(values, dtype=np.float64)
+    except (TypeError, ValueError) as exc:
+        raise CircuitError(f"the values are not numbers: {exc}.", remedy="Give base units.") from exc
+    if not len(names) == len(a) == len(b) or numbers.shape != (len(names),):
+        raise CircuitError(
+            f"{len(names)} names, {len(a)} and {len(b)} nodes, values of shape {numbers.shape} do not match.",
+            remedy="Give as many of each, in lists of one dimension.",
+        )
+    for name in names:
+        check_name(name, "part name")
+        if name[0].upper() != letter:
+            raise CircuitError(
+                f"the {kind.name} is called {shown(name)}.",
+                remedy=f"Let its name begin with {letter}, as {letter}1.",
+            )
+    wrong = np.flatnonzero(~(np.isfinite(numbers) & (numbers > 0)))
+    if len(wrong):
+        raise CircuitError(
+            f"{names[wrong[0]]} has the value {float(numbers[wrong[0]])!r} {kind.unit}; "
+            f"a {kind.name} needs a finite, positive one.",
+            remedy="Leave the part out, or give both its ends one node name for a link.",
+        )
+    return numbers
 
 
 def _known(what: str, names: Iterable[str]) -> str:

@@ -70,6 +70,8 @@ def _resolved(path: Path, counts: dict[Path, int]) -> Path:
 
 
 def _pieces(dotted: str) -> Path:
+    if '"' not in dotted and "'" not in dotted:
+        return tuple(piece.strip() for piece in dotted.split("."))
     table = tomllib.loads(f"{dotted} = 0")
     pieces: list[str] = []
     while isinstance(table, dict):

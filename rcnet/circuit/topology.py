@@ -5,7 +5,9 @@ from __future__ import annotations
 from collections.abc import Iterable
 from dataclasses import dataclass
 
-from .network import Network
+import numpy as np
+
+from .network import Network, PartArrays
 
 # Kinds of parts that tie two nodes together in each analysis. Controlled current sources and current sources
 # tie nothing: what they carry is fixed from elsewhere.
@@ -13,6 +15,7 @@ _TIES_AC = "RCLVEH"
 _TIES_DC = "RLVEH"
 _STIFF_AC = "VEH"
 _STIFF_DC = "VEHL"
+_MANY_PARTS = 20_000  # from here on compiled graph code is worth loading
 MAX_LOOPS = 20  # every loop costs a walk through the network, and nobody reads more
 
 
@@ -50,6 +53,8 @@ class Trouble:
 def loose_groups(network: Network, ties: str) -> list[tuple[int, ...]]:
     """The groups of nodes, as indices, that parts of the kinds `ties` join but do not tie to ground."""
     arrays = network.arrays()
+    if len(arrays.kinds) >= _MANY_PARTS:
+        return _loose_groups_of_many(arrays, ties)
     sets = _Sets(arrays.node_count)
     codes = {ord(letter) for letter in ties}
     for code, (a, b, _, _) in zip(arrays.kinds.tolist(), arrays.nodes.tolist(), strict=True):
@@ -59,6 +64,21 @@ def loose_groups(network: Network, ties: str) -> list[tuple[int, ...]]:
     for node in range(arrays.node_count):
         groups.setdefault(sets.find(node), []).append(node)
     return [tuple(group) for root, group in groups.items() if root != 0]
+
+
+def _loose_groups_of_many(arrays: PartArrays, ties: str) -> list[tuple[int, ...]]:
+    import scipy.sparse
+    import scipy.sparse.csgraph
+
+    rows = np.isin(arrays.kinds, [ord(letter) for letter in ties])
+    a, b = arrays.nodes[rows, 0], arrays.nodes[rows, 1]
+    size = (arrays.node_count, arrays.node_count)
+    graph = scipy.sparse.coo_matrix((np.ones(len(a), dtype=np.int8), (a, b)), shape=size)
+    _, label = scipy.sparse.csgraph.connected_components(graph, directed=False)
+    groups: dict[int, list[int]] = {}
+    for node in np.flatnonzero(label != label[0]).tolist():
+        groups.setdefault(int(label[node]), []).append(node)
+    return [tuple(group) for group in groups.values()]
 
 
 def floating_nodes(network: Network, *, dc: bool) -> list[tuple[str, ...]]:
@@ -93,14 +113,15 @@ def stiff_loops(network: Network, *, dc: bool) -> list[tuple[str, ...]]:
     At most MAX_LOOPS are looked for.
     """
     arrays = network.arrays()
-    codes = {ord(letter) for letter in (_STIFF_DC if dc else _STIFF_AC)}
+    codes = [ord(letter) for letter in (_STIFF_DC if dc else _STIFF_AC)]
+    rows = np.flatnonzero(np.isin(arrays.kinds, codes)).tolist()
+    if not rows:
+        return []
     sets = _Sets(arrays.node_count)
     tree: dict[int, list[tuple[int, str]]] = {}
     loops: list[tuple[str, ...]] = []
     names = network.names
-    for row, code in enumerate(arrays.kinds.tolist()):
-        if code not in codes:
-            continue
+    for row in rows:
         a, b = int(arrays.nodes[row, 0]), int(arrays.nodes[row, 1])
         if sets.join(a, b):
             tree.setdefault(a, []).append((b, names[row]))

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Mapping
 
-
 import numpy as np
 
 from ..circuit import Network
@@ -30,7 +29,9 @@ def time_constant(network: Network, of: Pair, options: Options) -> float:
         raise UndecidedError("the network has no natural mode: nothing in it stores energy.")
     slowest = float(poles.real.max())
     if (poles == 0).any():
-        raise UndecidedError("charge that nothing drains stays for ever, so the slowest mode has no time constant.")
+        raise UndecidedError(
+            "charge that nothing drains stays for ever, so the slowest mode has no time constant."
+        )
     if slowest >= 0:
         raise UndecidedError("a natural mode does not die away, so the circuit has no time constant.")
     return -1.0 / slowest
@@ -48,7 +49,9 @@ def _settling_step(network: Network, of: Pair) -> Decay:
 
 
 def _first_reaching(response: Decay, share: float) -> float:
-    """When the response first reaches a share of its final value, s; 0 where the step itself takes it there."""
+    """When the response first reaches a share of its final value, s; 0 where the step itself takes
+    it there.
+    """
     above = response.lifted(share)
     if above(np.zeros(1))[0] >= 0:
         return 0.0
@@ -130,7 +133,8 @@ def ends_of(network: Network, part: str) -> Pair:
 
 
 def peak_voltage(network: Network, of: Pair, options: Options) -> float:
-    """The greatest magnitude of a voltage in the periodic steady state, or the dc one where no source repeats, V.
+    """The greatest magnitude of a voltage in the periodic steady state, or the dc one where no source
+    repeats, V.
 
     The voltage is that across `part`, or of a node or a pair.
     """
@@ -154,11 +158,12 @@ def dissipation(network: Network, of: Pair, options: Options) -> float:
 
 
 def discharge_time(network: Network, of: Pair, options: Options) -> float:
-    """From the moment every source is disconnected until the voltage of a capacitor has first fallen to `to`, s.
+    """From the moment every source is disconnected until the voltage of a capacitor has first fallen to `to`,
+    s.
 
     Disconnected sources are open circuits. Before, the network is in its dc steady state, or, where a source
-    repeats, in the periodic one at the moment when the magnitude of this capacitor's voltage is greatest. Zero
-    where it is not above `to` even then. Raises UndecidedError where it stays above for ever.
+    repeats, in the periodic one at the moment when the magnitude of this capacitor's voltage is greatest.
+    Zero where it is not above `to` even then. Raises UndecidedError where it stays above for ever.
     """
     name, target = str(options["part"]), float(options["to"])
     if network.part(name).kind != "C":
@@ -172,7 +177,8 @@ def discharge_time(network: Network, of: Pair, options: Options) -> float:
     times = decay.lifted(math.copysign(target, start)).crossings()
     if not len(times):
         raise UndecidedError(
-            f"{name} keeps {abs(decay.base):.6g} V: once the sources are gone nothing takes it down to {target:.6g} V."
+            f"{name} keeps {abs(decay.base):.6g} V: once the sources are gone"
+            f" nothing takes it down to {target:.6g} V."
         )
     return float(times[0])
 

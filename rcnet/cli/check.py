@@ -13,6 +13,7 @@ from .options import (
     OK,
     complain,
     error_document,
+    examples,
     files_argument,
     json_option,
     print_json,
@@ -32,7 +33,7 @@ def _print_rules(ctx: click.Context, _: click.Parameter, wanted: bool) -> None:
     ctx.exit()
 
 
-@click.command("check")
+@click.command("check", epilog=examples("rcnet check noise-filter.rc.toml", "rcnet check --json *.cir"))
 @files_argument
 @json_option
 @quiet_option
@@ -46,12 +47,7 @@ def _print_rules(ctx: click.Context, _: click.Parameter, wanted: bool) -> None:
     help="List the rules and end.",
 )
 def command(files: tuple[str, ...], as_json: bool, quiet: bool, strict: bool) -> int:
-    r"""Hold circuits against their claims and the rules; write nothing.
-
-    \b
-    rcnet check noise-filter.rc.toml
-    rcnet check --json *.cir
-    """
+    """Hold circuits against their claims and the rules; write nothing."""
     from ..check import check
     from ..loading import load
     from ..report.document import check_document

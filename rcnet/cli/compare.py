@@ -6,23 +6,24 @@ from pathlib import Path
 
 import click
 
-from .options import FAILED, OK, file_argument, json_option, print_json, quiet_option
+from .options import FAILED, OK, examples, file_argument, json_option, print_json, quiet_option
 
 
-@click.command("compare")
+@click.command(
+    "compare",
+    epilog=examples(
+        "ngspice -b -r results.raw noise-filter.cir", "rcnet compare noise-filter.rc.toml results.raw"
+    ),
+)
 @file_argument
 @click.argument("results", type=click.Path(), metavar="RESULTS")
 @json_option
 @quiet_option
 @click.option("-o", "--output", type=click.Path(), help="Write the comparison there as JSON.")
 def command(file: str, results: str, as_json: bool, quiet: bool, output: str | None) -> int:
-    r"""Hold a results file (.raw, .csv) against the exact curves.
+    """Hold a results file (.raw, .csv) against the exact curves.
 
     Tells where the two differ, and by how much.
-
-    \b
-    ngspice -b -r results.raw noise-filter.cir
-    rcnet compare noise-filter.rc.toml results.raw
     """
     from ..compare import compare
     from ..curves import read_results

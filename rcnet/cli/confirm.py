@@ -16,6 +16,7 @@ from .options import (
     anyway_option,
     complain,
     error_document,
+    examples,
     files_argument,
     folder_names,
     folder_option,
@@ -29,7 +30,12 @@ from .options import (
 )
 
 
-@click.command("confirm")
+@click.command(
+    "confirm",
+    epilog=examples(
+        "rcnet confirm noise-filter.rc.toml", "rcnet confirm --second-opinion read-back circuits/*.rc.toml"
+    ),
+)
 @files_argument
 @json_option
 @quiet_option
@@ -43,13 +49,9 @@ from .options import (
 @anyway_option
 @folder_option
 def command(files: tuple[str, ...], as_json: bool, quiet: bool, strict: bool, output: str, **ask: Any) -> int:
-    r"""Check circuits, get a second opinion on them, compare the two.
+    """Check circuits, get a second opinion on them, compare the two.
 
     The netlist, the other solver's results and the comparison are kept in out/NAME/.
-
-    \b
-    rcnet confirm noise-filter.rc.toml
-    rcnet confirm --second-opinion read-back circuits/*.rc.toml
     """
     from ..report.document import confirmation_document
     from ..report.terminal import console, show_confirmation, show_total

@@ -10,7 +10,7 @@ from typing import Any
 import click
 
 from ..errors import RcnetError
-from .options import IMPOSSIBLE, INTERRUPTED, complain, json_wanted
+from .options import IMPOSSIBLE, INTERRUPTED, complain, examples, json_wanted
 
 _VERBS = ("confirm", "check", "response", "netlist", "simulate", "compare", "new")
 _READER_GONE = 141  # what a shell reports for a program that wrote to a closed pipe
@@ -36,12 +36,12 @@ class _Verbs(click.Group):
             sys.stdout.flush()
         except RcnetError as exc:
             complain(exc, as_json=json_wanted(ctx))
-            return IMPOSSIBLE
+            code = IMPOSSIBLE
         except BrokenPipeError:
             # Whoever read the output has gone; there is nobody to tell.
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-            return _READER_GONE
-        return code
+            code = _READER_GONE
+        ctx.exit(code if isinstance(code, int) else 0)
 
 
 def _print_completion(ctx: click.Context, _: click.Parameter, shell: str | None) -> None:
@@ -63,7 +63,20 @@ def _print_version(ctx: click.Context, _: click.Parameter, wanted: bool) -> None
         ctx.exit()
 
 
-@click.group(cls=_Verbs, context_settings={"help_option_names": ["-h", "--help"]})
+_CODES = """
+\b
+Exit codes: 0 everything holds and agrees, 1 something fails or differs,
+            2 it could not be done, 130 interrupted
+"""
+
+
+@click.group(
+    cls=_Verbs,
+    context_settings={"help_option_names": ["-h", "--help"]},
+    epilog=examples("rcnet new", "rcnet new noise-filter", "rcnet confirm noise-filter.rc.toml")
+    + "\n"
+    + _CODES,
+)
 @click.option(
     "--version",
     is_flag=True,
@@ -81,18 +94,9 @@ def _print_version(ctx: click.Context, _: click.Parameter, wanted: bool) -> None
     help="Print a completion script for your shell.",
 )
 def group() -> None:
-    r"""Resistor-capacitor networks: hand math, netlist and simulation held to one exact answer.
+    """Resistor-capacitor networks: hand math, netlist and simulation held to one exact answer.
 
     FILE is a circuit file (*.rc.toml) or a SPICE netlist everywhere.
-
-    \b
-    rcnet new                            what starter circuits there are
-    rcnet new noise-filter               copy one to begin from
-    rcnet confirm noise-filter.rc.toml   check, write the netlist, simulate, compare
-
-    \b
-    Exit codes: 0 everything holds and agrees, 1 something fails or differs,
-    2 it could not be done, 130 interrupted.
     """
 
 

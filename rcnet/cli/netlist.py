@@ -4,21 +4,17 @@ from __future__ import annotations
 
 import click
 
-from .options import FAILED, OK, anyway_option, file_argument, json_option, print_json
+from .options import FAILED, OK, anyway_option, examples, file_argument, json_option, print_json
 
 
-@click.command("netlist")
+@click.command("netlist", epilog=examples("rcnet netlist noise-filter.rc.toml -o noise-filter.cir"))
 @file_argument
 @json_option
 @click.option("--quiet", is_flag=True, help="Show only findings that are errors.")
 @click.option("-o", "--output", type=click.Path(), help="Where to write it; standard output otherwise.")
 @anyway_option
 def command(file: str, as_json: bool, quiet: bool, output: str | None, anyway: bool) -> int:
-    r"""Write a circuit as a checked and sealed SPICE netlist.
-
-    \b
-    rcnet netlist noise-filter.rc.toml -o noise-filter.cir
-    """
+    """Write a circuit as a checked and sealed SPICE netlist."""
     from ..check import check
     from ..handover import sealed_netlist, with_analyses
     from ..loading import load

@@ -8,20 +8,15 @@ from pathlib import Path
 import click
 
 from ..errors import InputError, OutputError
-from .options import OK, json_option, print_json
+from .options import OK, examples, json_option, print_json
 
 
-@click.command("new")
+@click.command("new", epilog=examples("rcnet new", "rcnet new noise-filter -o float-gauge.rc.toml"))
 @click.argument("starter", required=False, metavar="[STARTER]")
 @json_option
 @click.option("-o", "--output", type=click.Path(), help="The file to make; STARTER.rc.toml here otherwise.")
 def command(starter: str | None, output: str | None, as_json: bool) -> int:
-    r"""List the starter circuits, or copy one to begin from.
-
-    \b
-    rcnet new
-    rcnet new noise-filter -o float-gauge.rc.toml
-    """
+    """List the starter circuits, or copy one to begin from."""
     from ..resources import starters
 
     found = starters()

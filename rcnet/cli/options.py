@@ -18,6 +18,11 @@ OK, FAILED, IMPOSSIBLE, INTERRUPTED = 0, 1, 2, 130
 _JSON = "rcnet.json"
 
 
+def examples(*lines: str) -> str:
+    """How a command is used, as the end of its help; the mark in front keeps click from joining the lines."""
+    return "\b\n" + "\n".join(["Examples:", *(f"  {line}" for line in lines)])
+
+
 def _note_json(ctx: click.Context, _: click.Parameter, wanted: bool) -> bool:
     # Whoever reports an error must know that standard output belongs to one JSON document.
     ctx.meta[_JSON] = wanted

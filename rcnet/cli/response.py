@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from ..errors import InputError
-from .options import OK, file_argument, json_option, print_json
+from .options import OK, examples, file_argument, json_option, print_json
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -18,7 +18,13 @@ if TYPE_CHECKING:
     from ..curves import Curves
 
 
-@click.command("response")
+@click.command(
+    "response",
+    epilog=examples(
+        "rcnet response noise-filter.rc.toml --at '1 kHz' --at '50 Hz'",
+        "rcnet response noise-filter.rc.toml --from 10 --to '1 MHz' -o response.csv",
+    ),
+)
 @file_argument
 @json_option
 @click.option("--csv", "as_csv", is_flag=True, help="Print CSV.")
@@ -33,12 +39,7 @@ if TYPE_CHECKING:
 def command(
     file: str, as_json: bool, as_csv: bool, output: str | None, nodes: tuple[str, ...], **sweep: Any
 ) -> int:
-    r"""Give the exact response of a circuit, per unit of its source.
-
-    \b
-    rcnet response noise-filter.rc.toml --at '1 kHz' --at '50 Hz'
-    rcnet response noise-filter.rc.toml --from 10 --to '1 MHz' -o response.csv
-    """
+    """Give the exact response of a circuit, per unit of its source."""
     from ..curves import write_csv
     from ..loading import load
     from ..report.document import response_document

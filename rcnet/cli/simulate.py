@@ -11,6 +11,7 @@ from .options import (
     FAILED,
     OK,
     anyway_option,
+    examples,
     file_argument,
     folder_names,
     folder_option,
@@ -22,7 +23,7 @@ from .options import (
 )
 
 
-@click.command("simulate")
+@click.command("simulate", epilog=examples("rcnet simulate noise-filter.rc.toml"))
 @file_argument
 @json_option
 @quiet_option
@@ -33,11 +34,7 @@ from .options import (
 @anyway_option
 @folder_option
 def command(file: str, as_json: bool, quiet: bool, output: str, second_opinion: Any, **how: Any) -> int:
-    r"""Run ngspice on a circuit's netlist and keep its results in out/NAME/.
-
-    \b
-    rcnet simulate noise-filter.rc.toml
-    """
+    """Run ngspice on the netlist; keep its results in out/NAME/."""
     from ..confirm import simulate
     from ..loading import load
     from ..report.document import simulation_document

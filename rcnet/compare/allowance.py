@@ -6,15 +6,18 @@ is at most  c u sum_ij |inv(A)_ki| |A_ij| |x_j|  (R. Skeel, J. ACM 26:494-526, 1
 network is benign, and grows exactly where a small resistor joins two high impedances or a stopband lies at
 the rounding floor.
 
-That holds while pivots stay good. Where sources tie nodes together, equations without a diagonal of their own
-enter, and ngspice 39 keeps the order of its first frequency for all others: an unknown may then come out of
-another equation as the difference of great terms. For such networks |x_j| makes way for the greatest term of
-any equation that x_j may have been taken from, over its coefficient there.
+That holds while pivots stay good. Where sources tie nodes together, equations without a diagonal of their
+own enter, and ngspice 39 keeps the order of its first frequency for all others: an unknown may then come out
+of another equation as the difference of great terms. For such networks |x_j| makes way for the greatest term
+of any equation that x_j may have been taken from, over its coefficient there, and that twice over. Of 1450
+random networks of all kinds of parts, values over up to twelve decades and frequencies over as many, ngspice
+39 went beyond this in one of a hundred, always by losing all digits: such an answer differs, and is told.
+
+No value is held to less than the rounding of the greatest one: where nothing arrives, simulators show that.
 """
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from typing import Any
 
@@ -34,6 +37,8 @@ UNIT_ROUNDOFF = 2.0**-53
 CONSTANT = 4096.0
 DENSE_LIMIT = 160  # unknowns; above, only what is asked for is solved for
 PIVOT_SHARE = 1e-3  # of a column's greatest entry, what ngspice takes for a pivot (its option pivrel)
+GROWTH_ROUNDS = 2
+FLOOR = 64 * 2.0**-53
 MOST_POINTS = 256  # frequencies the bound is computed at; it is smooth between them
 
 
@@ -49,9 +54,14 @@ def rounding_allowance(
     some = s[picks]
     answer = _unknowns_at(network, eqs, some, drive)
     sizes = _Sizes(eqs, some[0], tied=_ties_nodes(network))
-    loads = np.stack([sizes.load(point, np.abs(answer[:, k])) for k, point in enumerate(some)], axis=1)
+    loads = np.empty((eqs.size, len(some)))
+    floor = np.empty((len(unknowns), len(some)))
+    for number, point in enumerate(some):
+        own = np.abs(answer[:, number])
+        loads[:, number] = sizes.load(point, own)
+        floor[:, number] = FLOOR * sizes.greatest(point, own)[list(unknowns)]
     bound = (_dense if eqs.size <= DENSE_LIMIT else _sparse)(eqs, some, loads, unknowns)
-    bound *= CONSTANT * UNIT_ROUNDOFF
+    bound = CONSTANT * UNIT_ROUNDOFF * bound + floor
     if len(picks) == len(s):
         return bound
     # Between two computed points the larger neighbour, doubled, stands for both.
@@ -101,8 +111,18 @@ class _Sizes:
             return load
         fit = self._fit_for_pivots(sizes) | (self.pivots & (sizes > 0))
         greatest = answer.copy()
-        np.maximum.at(greatest, self.columns[fit], load[self.rows[fit]] / sizes[fit])
-        return self._sum(sizes * greatest[self.columns])
+        for _ in range(GROWTH_ROUNDS):
+            np.maximum.at(greatest, self.columns[fit], load[self.rows[fit]] / sizes[fit])
+            load = self._sum(sizes * greatest[self.columns])
+        return load
+
+    def greatest(self, point: complex, answer: Float) -> Float:
+        """The greatest voltage, or the greatest current at a node, for each unknown."""
+        currents = self._sum(self._at(point) * answer[self.columns])[: self.nodes]
+        most = np.empty(self.count)
+        most[: self.nodes] = answer[: self.nodes].max(initial=0.0)
+        most[self.nodes :] = currents.max(initial=0.0)
+        return most
 
     def _sum(self, terms: Float) -> Float:
         return np.asarray(np.bincount(self.rows, terms, self.count), dtype=np.float64)
@@ -153,13 +173,3 @@ def _sparse(eqs: nodal.Equations, s: Numbers, loads: Float, unknowns: Sequence[i
         else:
             bound[:, number] = loads[:, number] @ np.abs(factors.solve(units, trans="T"))
     return bound
-
-
-def axis_allowance(resolution: Float | None, slope: Numbers | None) -> Float | float:
-    """How far a value may be off because the file's frequencies carry few digits.
-
-    resolution: Hz, (points,), the frequencies' slack; slope: dH/ds, (points,). None for either: nothing.
-    """
-    if resolution is None or slope is None:
-        return 0.0
-    return np.asarray(2 * math.pi * resolution * np.abs(slope))

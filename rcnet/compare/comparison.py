@@ -12,11 +12,11 @@ import numpy as np
 
 from ..circuit import Circuit, Network
 from ..curves import Analysis, Curve, Curves
-from ..errors import RcnetError, ResultsError
-from ..exact import Drive, dc_solvable, require_solvable, response_and_slope, solver_for
+from ..errors import ResultsError
+from ..exact import Drive, dc_solvable, require_solvable, solver_for
 from ..netlist import Names, as_written, safe_names
 from ..values import format_quantity
-from .allowance import DENSE_LIMIT, Float, Numbers, axis_allowance, rounding_allowance
+from .allowance import DENSE_LIMIT, Float, Numbers, rounding_allowance
 from .fsv import Fsv, fsv
 
 Verdict = Literal["agree", "differ"]
@@ -31,7 +31,8 @@ class Difference:
     at: Hz, or 0 for an operating point; exact, other: V or A
     db: 20 log10 |other/exact|, deg: phase of other less that of exact; None where a value is zero, and deg
         also where the curve is real
-    relative: |other - exact| / |exact|, or over the curve's greatest exact value where the exact one is zero
+    relative: |other - exact| / |exact|; where the exact value is zero, over the curve's greatest exact value,
+        and where all are zero, over the greatest of the other
     allowed: how far the other may lie from the exact value here, V or A
     """
 
@@ -301,8 +302,9 @@ def _group(network: Network, analysis: Analysis, group: list[_Pair]) -> list[Cur
         allowed = sum((bound[index[row]] for row in rows[number]), start=np.zeros(len(axis)))
         if curve.resolution is not None:
             allowed = allowed + 2 * curve.resolution
-        if curve.axis_resolution is not None and not dc and target.source is None:
-            allowed = allowed + axis_allowance(curve.axis_resolution, _slope(network, axis, target, drive))
+        if curve.axis_resolution is not None and not dc:
+            moved = _moved(network, axis, curve.axis_resolution, drive, target)
+            allowed = allowed + np.abs(moved - exact[number]).max(axis=0)
         result.append(_judged((target.name, analysis), axis, exact[number], curve.values, allowed))
     return result
 
@@ -338,13 +340,10 @@ def _unknown_rows(network: Network, targets: Sequence[_Target]) -> list[list[int
     ]
 
 
-def _slope(network: Network, axis: Float, target: _Target, drive: Numbers) -> Numbers | None:
-    try:
-        _, slope = response_and_slope(network, 2 * math.pi * axis, target.nodes)
-    except RcnetError:
-        return None
-    driven = [value for value in drive if value]
-    return slope * driven[0] if len(driven) == 1 else slope
+def _moved(network: Network, axis: Float, slack: Float, drive: Numbers, target: _Target) -> Numbers:
+    """The exact curve at both ends of what each frequency, written with few digits, may mean: (2, points)."""
+    ends = [np.maximum(axis - slack, axis * 1e-3), axis + slack]
+    return np.stack([_exact(network, 2j * math.pi * end, drive, [target])[0] for end in ends])
 
 
 def _judged(
@@ -354,7 +353,8 @@ def _judged(
     # Written so that an allowance that is no number counts as none.
     beyond = ~(distance <= allowed)
     sizes = np.abs(exact)
-    scale = np.where(sizes > 0, sizes, max(float(sizes.max(initial=0.0)), np.finfo(float).tiny))
+    greatest = sizes.max(initial=0.0) or np.abs(other).max(initial=0.0) or 1.0
+    scale = np.where(sizes > 0, sizes, greatest)
     with np.errstate(over="ignore"):
         relative = np.minimum(distance / scale, np.finfo(float).max)
 

@@ -13,19 +13,26 @@ from .ac import (
     response_and_slope,
     response_chunks,
 )
+from .modes import ModalSystem, Modes, modal_system, modes, natural_rates
 from .noise import BOLTZMANN, noise, noise_shares, total_noise
 from .one_part import OnePart, between, every_part, one_part
 from .operating_point import operating_point, solve_operating_point, source_currents
+from .periodic import Periodic, periodic, periodic_pairs
 from .sensitivity import response_sensitivity
 from .solver import Drive, Solution, Solver, require_solvable, solver_for
 from .span import Span, span_of
+from .step import discharge, step_response
 from .symbols import Coefficient, Term, TransferFunction, transfer_function
+from .transient import transient
 
 __all__ = [
     "BOLTZMANN",
     "Coefficient",
     "Drive",
+    "ModalSystem",
+    "Modes",
     "OnePart",
+    "Periodic",
     "Solution",
     "Solver",
     "Span",
@@ -34,17 +41,23 @@ __all__ = [
     "ac_drive",
     "between",
     "dc_solvable",
+    "discharge",
     "driving_sources",
     "every_part",
     "input_impedance",
     "limit",
+    "modal_system",
+    "modes",
     "natural_frequencies",
+    "natural_rates",
     "node_pair",
     "noise",
     "noise_shares",
     "one_part",
     "operating_point",
     "output_impedance",
+    "periodic",
+    "periodic_pairs",
     "require_solvable",
     "response",
     "response_and_slope",
@@ -54,6 +67,8 @@ __all__ = [
     "solver_for",
     "source_currents",
     "span_of",
+    "step_response",
     "total_noise",
     "transfer_function",
+    "transient",
 ]

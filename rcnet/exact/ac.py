@@ -45,8 +45,9 @@ def response(
     else:
         shape = () if isinstance(of, str) else (len(of),)
         answer = np.empty((*shape, samples, len(points)), dtype=np.complex128)
-        for part, block in response_chunks(network, points, of, values or {}):
-            answer[..., part, :] = block
+        for part in _parts(samples, of, points, None):
+            table = _value_table(network, given, part)
+            _differences(network, points, of, table, samples, answer[..., part, :])
     return answer
 
 
@@ -70,29 +71,48 @@ def response_chunks(
         raise CircuitError("there are no samples.", remedy="Give an array for at least one part in `values`.")
     if chunk is not None and chunk < 1:
         raise CircuitError(f"the chunk is {chunk!r} samples.", remedy="Give one or more.")
-    outputs = 1 if isinstance(of, str) else max(len(of), 1)
-    step = chunk or max(1, _CHUNK_BYTES // (16 * outputs * max(len(points), 1)))
-    for start in range(0, samples, step):
-        part = slice(start, min(start + step, samples))
+    for part in _parts(samples, of, points, chunk):
         yield part, _differences(network, points, of, _value_table(network, given, part), samples)
 
 
+def _parts(samples: int, of: str | Sequence[str], points: Float, chunk: int | None) -> Iterator[slice]:
+    outputs = 1 if isinstance(of, str) else max(len(of), 1)
+    step = chunk or max(1, _CHUNK_BYTES // (16 * outputs * max(len(points), 1)))
+    return (slice(start, min(start + step, samples)) for start in range(0, samples, step))
+
+
 def _differences(
-    network: Network, points: Float, of: str | Sequence[str], table: Float | None, samples: int = 0
+    network: Network,
+    points: Float,
+    of: str | Sequence[str],
+    table: Float | None,
+    samples: int = 0,
+    out: Complex | None = None,
 ) -> Complex:
-    """The response at `points`, Hz; `table` is (parts,) or, out of `samples` in all, (parts, some of them)."""
+    """The response at `points`, Hz; `table` is (parts,), or (parts, some of `samples`), or None.
+
+    out: where a response of samples goes, or None for an array of its own
+    """
     pairs = [node_pair(network, text) for text in ([of] if isinstance(of, str) else of)]
-    wanted = sorted({node for pair in pairs for node in pair})
+    wanted = list(dict.fromkeys(node for pair in pairs for node in pair if node))
     place = {node: k for k, node in enumerate(wanted)}
     solver, drive, s = solver_for(network), ac_drive(network), _s(network, 2 * math.pi * points)
     if table is None or table.ndim == 1:
         v = solver.voltages_of(s, drive, wanted, table)
     else:
-        v = solver.sample_voltages(s, drive, wanted, table, samples)
-    rows = [v[place[a]] - v[place[b]] if b else v[place[a]] for a, b in pairs]
-    if isinstance(of, str):
-        return np.asarray(rows[0], dtype=np.complex128)
-    return np.array(rows, dtype=np.complex128).reshape(len(rows), *v.shape[1:])
+        # Single nodes, each once, need no difference: the solver may write where the answer is to be.
+        plain = out is not None and wanted == [a for a, b in pairs if not b] and len(wanted) == len(pairs)
+        target = (out[None] if isinstance(of, str) else out) if plain and out is not None else None
+        v = solver.sample_voltages(s, drive, wanted, table, samples, target)
+        if target is not None and out is not None:
+            return out
+    zero = np.zeros(v.shape[1:], dtype=np.complex128)
+    rows = [(v[place[a]] if a else zero) - (v[place[b]] if b else zero) for a, b in pairs]
+    answer = np.array(rows, dtype=np.complex128).reshape(len(rows), *v.shape[1:])
+    answer = answer[0] if isinstance(of, str) else answer
+    if out is not None:
+        out[...] = answer
+    return answer
 
 
 def _frequencies(frequency: npt.ArrayLike) -> Float:

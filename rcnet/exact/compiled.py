@@ -34,7 +34,7 @@ def compiled(function: _Function) -> _Function:
 
 def run_blocks(work: Callable[[int], None], blocks: Sequence[int]) -> None:
     """Call `work` for each block, on as many threads as numba may use (NUMBA_NUM_THREADS)."""
-    threads = min(int(numba.config.NUMBA_NUM_THREADS), len(blocks))
+    threads = min(int(numba.config.NUMBA_NUM_THREADS), len(blocks))  # type: ignore[attr-defined]
     if threads <= 1:
         for block in blocks:
             work(block)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -12,7 +13,7 @@ from ..errors import UndecidedError
 from .roots import zeros
 
 Float = npt.NDArray[np.float64]
-Numbers = npt.NDArray[np.float64] | npt.NDArray[np.complex128]
+Numbers = npt.NDArray[Any]  # float64 where every pole is real, else complex128
 
 _PER_DECADE = 96  # points of time at which a crossing is looked for
 _GONE = 45.0  # time constants after which exp(-t/tau) is below the last digit of anything
@@ -65,7 +66,9 @@ class Decay:
         return zeros(lambda x, _: rate(x), time[towards], time[towards + 1])
 
     def _grid(self) -> Float:
-        """Times dense enough for every mode, from far below the fastest to where the slowest has died away."""
+        """Times dense enough for every mode, from far below the fastest to where the slowest has
+        died away.
+        """
         size = np.abs(self.poles)
         if not len(size):
             return np.array([0.0])

@@ -1,4 +1,4 @@
-"""A network between fixed potentials, reduced to links among inner nodes and shunts to fixed ones, as arrays."""
+"""A network between fixed potentials as arrays: links among its inner nodes, shunts to fixed ones, drive."""
 
 from __future__ import annotations
 
@@ -146,7 +146,9 @@ def load(
     given: (nodes, points), amperes into each node, first column, or None
     """
     extra = np.array([node for node in injected if inner.index[node] >= 0], dtype=np.int64)
-    many = np.empty(0, dtype=np.int64) if given is None else np.flatnonzero(given.any(axis=1) & (inner.index >= 0))
+    many = np.empty(0, dtype=np.int64)
+    if given is not None:
+        many = np.flatnonzero(given.any(axis=1) & (inner.index >= 0))
     at = np.concatenate([inner.feed_at, inner.index[extra], inner.index[many]])
     nodes, place = np.unique(at, return_inverse=True)
     feeds = len(inner.feed_at)

@@ -1,10 +1,12 @@
-"""The compiled kernel of a large network between fixed potentials: which one, when it pays, what it is given."""
+"""The compiled kernel of a large network between fixed potentials: which, and when it pays."""
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
-from functools import partial
+from dataclasses import dataclass
+from functools import cached_property, partial
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -27,13 +29,14 @@ class LargeKernel:
     """The kernel for one network.
 
     is_resistor: (admittances,); own: (admittances,), the network's values, base units
+    prepare: turns sums of admittances into what `run` takes, which gives (wanted, columns, points)
     """
 
     inner: Inner
     is_resistor: npt.NDArray[np.bool_]
     own: Float
-    run: Callable[[Sums, Complex, Load, Indices], Complex]
-    _sums: Sums | None = field(default=None, repr=False)
+    prepare: Callable[[Sums], Any]
+    run: Callable[[Any, Complex, Load, Indices], Complex]
 
     def solve(
         self,
@@ -44,21 +47,41 @@ class LargeKernel:
         wanted: Sequence[int],
         values: Float | None = None,
     ) -> Complex:
-        """Voltages (wanted, columns, points); wanted nodes may be fixed. See `inner.load` for the arguments."""
-        numbers = self.own if values is None else values
-        conductance = np.where(self.is_resistor, 1.0 / numbers, 0.0)
-        capacitance = np.where(self.is_resistor, 0.0, numbers)
-        if values is not None or self._sums is None:
-            added = sums(self.inner, conductance, capacitance)
-            self._sums = added if values is None else self._sums
-        else:
-            added = self._sums
+        """Voltages (wanted, columns, points); wanted nodes may be fixed. Arguments as for `inner.load`."""
+        conductance, capacitance, prepared = self._own if values is None else self._prepared(values)
         driven = load(self.inner, conductance, capacitance, potentials, injected, given)
         places = self.inner.index[list(wanted)]
         answer = np.empty((len(places), potentials.shape[1], len(s)), dtype=np.complex128)
         answer[places < 0] = potentials[list(wanted)][places < 0][:, :, None]
-        answer[places >= 0] = self.run(added, s, driven, places[places >= 0])
+        answer[places >= 0] = self.run(prepared, s, driven, places[places >= 0])
         return answer
+
+    @cached_property
+    def _own(self) -> tuple[Float, Float, Any]:
+        return self._prepared(self.own)
+
+    def _prepared(self, values: Float) -> tuple[Float, Float, Any]:
+        conductance = np.where(self.is_resistor, 1.0 / values, 0.0)
+        capacitance = np.where(self.is_resistor, 0.0, values)
+        return conductance, capacitance, self.prepare(sums(self.inner, conductance, capacitance))
+
+
+@dataclass(frozen=True)
+class Extent:
+    """The least and greatest conductance, siemens, and capacitance, farad; (inf, 0) where there is none."""
+
+    conductance: tuple[float, float]
+    capacitance: tuple[float, float]
+
+
+def extent(is_resistor: npt.NDArray[np.bool_], values: Float) -> Extent:
+    """The extent of `values`, (admittances, ...), base units."""
+    resistances, capacitances = values[is_resistor], values[~is_resistor]
+    none = (math.inf, 0.0)
+    return Extent(
+        (float(1 / resistances.max()), float(1 / resistances.min())) if resistances.size else none,
+        (float(capacitances.min()), float(capacitances.max())) if capacitances.size else none,
+    )
 
 
 def pays(inner_nodes: int, inner_parts: int, points: int) -> bool:
@@ -69,23 +92,23 @@ def pays(inner_nodes: int, inner_parts: int, points: int) -> bool:
 
 
 def samples_pay(steps: int, samples: int, points: int) -> bool:
-    """True if the compiled kernel is worth loading for so many samples of a network of `steps` inner nodes."""
+    """True if the compiled kernel is worth loading for so many samples of `steps` inner nodes."""
     return steps * samples * points >= _SAMPLE_PRODUCTS
 
 
-def in_range(is_resistor: npt.NDArray[np.bool_], values: Float, s: Numbers) -> bool:
+def in_range(values: Extent, s: Numbers) -> bool:
     """True if the kernels hold: no square or product of the admittances leaves a double's range.
 
-    values: (admittances, ...); s: in the first quadrant, or the kernels do not apply
+    s: in the first quadrant, or the kernels do not apply
     """
-    sizes = np.abs(s)[s != 0]
-    if not len(values) or not len(s) or (s.real < 0).any() or (s.imag < 0).any():
+    if not len(s) or (s.real < 0).any() or (s.imag < 0).any():
         return False
-    resistances, capacitances = values[is_resistor], values[~is_resistor]
-    ends = [1 / resistances.max(), 1 / resistances.min()] if resistances.size else []
-    if capacitances.size and sizes.size:
-        ends += [capacitances.min() * sizes.min(), capacitances.max() * sizes.max()]
-    return not ends or bool(min(ends) >= _LEAST and max(ends) <= _GREATEST)
+    sizes = np.abs(s)[s != 0]
+    least, greatest = values.conductance
+    if sizes.size:
+        least = min(least, values.capacitance[0] * float(sizes.min()))
+        greatest = max(greatest, values.capacitance[1] * float(sizes.max()))
+    return least >= _LEAST and greatest <= _GREATEST
 
 
 def kernel_for(
@@ -98,7 +121,11 @@ def kernel_for(
         return None
     inner = inner_network(node_count, ends, fixed)
     if inner.is_forest:
-        return LargeKernel(inner, is_resistor, values, partial(tree_kernel.solve, tree_kernel.plan(inner)))
+        tree = tree_kernel.plan(inner)
+        solved = partial(tree_kernel.solve, tree)
+        return LargeKernel(inner, is_resistor, values, partial(tree_kernel.prepare, tree), solved)
     from . import ldl_analysis, ldl_kernel
 
-    return LargeKernel(inner, is_resistor, values, partial(ldl_kernel.solve, ldl_analysis.analyse(inner)))
+    fronts = ldl_analysis.analyse(inner)
+    solved = partial(ldl_kernel.solve, fronts)
+    return LargeKernel(inner, is_resistor, values, partial(ldl_kernel.prepare, fronts), solved)

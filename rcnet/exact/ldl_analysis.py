@@ -10,19 +10,18 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-import numpy.typing as npt
 
 from .compiled import compiled
 from .inner import Indices, Inner
 
-_PADDING = 0.2  # share of a joined front that may be zeros: fewer, larger fronts run faster
+_PADDING = 0.1  # share of a joined front that may be zeros: fewer, larger fronts run faster
 
 
 @dataclass(frozen=True)
 class LdlPlan:
     """What elimination in fronts needs to know before it sees numbers; node numbers here follow the order.
 
-    place: (nodes,), an inner node's number in the order; node_front: (nodes,), the front that eliminates a node
+    place: (nodes,), an inner node's number in the order; node_front: (nodes,), the front a node goes in
     first: (fronts + 1,), the first node of each front
     row_start: (fronts + 1,); rows: what is left of each front's nodes once its own are gone, ascending
     seat: for each of `rows`, its place in the parent's front
@@ -163,7 +162,7 @@ def _column_counts(start: Indices, other: Indices, up: Indices) -> Indices:
 
 @compiled
 def _fronts(up: Indices, counts: Indices, padding: float) -> tuple[Any, ...]:
-    """Nodes joined in fronts: those of one pattern, and a last child with its parent where few zeros come in."""
+    """Nodes joined in fronts: those of one pattern, and last child with parent where few zeros come in."""
     count = len(up)
     begin = np.empty(count, np.int64)
     zeros = np.zeros(count, np.float64)
@@ -197,8 +196,10 @@ def _fronts(up: Indices, counts: Indices, padding: float) -> tuple[Any, ...]:
 
 
 @compiled
-def _front_rows(start: Indices, other: Indices, up: Indices, first: Indices, node_front: Indices) -> tuple[Any, ...]:
-    """The nodes left in each front once its own are gone: its own neighbours and its children's, ascending."""
+def _front_rows(
+    start: Indices, other: Indices, up: Indices, first: Indices, node_front: Indices
+) -> tuple[Any, ...]:
+    """What is left of each front once its own nodes are gone: their neighbours and its children's."""
     fronts = len(first) - 1
     row_start = np.zeros(fronts + 1, np.int64)
     rows = np.empty(max(len(other), 16), np.int64)

@@ -2,9 +2,9 @@
 
 G + sC of a passive network is complex symmetric with positive semidefinite parts, so that LDL^T without
 pivoting is stable in any order (N. Higham, Math. Comp. 67(224):1591-1599, 1998). Diagonals are never stored
-but formed as sums of the admittances still there, those to fixed nodes kept apart (W. Grassmann, M. Taksar, D.
-Heyman, Oper. Res. 33(5):1107-1116, 1985), so that widely spread values keep their digits. Fronts: J. Liu, SIAM
-Rev. 34:82-109, 1992.
+but formed as sums of the admittances still there, those to fixed nodes kept apart (W. Grassmann, M. Taksar,
+D. Heyman, Oper. Res. 33(5):1107-1116, 1985), so that widely spread values keep their digits. Fronts: J. Liu,
+SIAM Rev. 34:82-109, 1992.
 
 A front of m nodes holds the admittances between them, the strict lower triangle by columns: that of row i and
 column j < i is entry j (m - 1) - j (j - 1)/2 + i - j - 1. Each entry is (2, BLOCK): real and imaginary parts.
@@ -23,11 +23,16 @@ from .ldl_analysis import LdlPlan
 BLOCK = 16  # frequencies that share one pass over the fronts
 
 
-def solve(plan: LdlPlan, numbers: Sums, s: Complex, load: Load, wanted: Indices) -> Complex:
-    """Voltages of the inner nodes `wanted` at each s, (wanted, columns, points); Re s and Im s >= 0."""
-    values = (numbers.link_g[plan.link], numbers.link_c[plan.link])
+def prepare(plan: LdlPlan, numbers: Sums) -> tuple[Float, ...]:
+    """The links in the order of fronts, and the shunts in the order of nodes: g, c, g, c."""
     to_fixed_g, to_fixed_c = np.empty_like(numbers.shunt_g), np.empty_like(numbers.shunt_c)
     to_fixed_g[plan.place], to_fixed_c[plan.place] = numbers.shunt_g, numbers.shunt_c
+    return numbers.link_g[plan.link], numbers.link_c[plan.link], to_fixed_g, to_fixed_c
+
+
+def solve(plan: LdlPlan, prepared: tuple[Float, ...], s: Complex, load: Load, wanted: Indices) -> Complex:
+    """Voltages of the inner nodes `wanted` at each s, (wanted, columns, points); Re s and Im s >= 0."""
+    values, (to_fixed_g, to_fixed_c) = prepared[:2], prepared[2:]
     starts, ends = plan.place[load.nodes], plan.place[wanted]
     carry, _ = _mark(plan.parent, plan.node_front[starts])
     keep, factor_start = _kept(plan.parent, plan.node_front[ends], plan.first, plan.row_start)
@@ -235,7 +240,7 @@ def _hand_on(scaled: Float, base: int, p: int, begin: int, own: Indices, wide: i
 
 @compiled
 def _add_product(first: Float, second: Float, into: Float) -> None:
-    """into += first second, complex, each (2, BLOCK)."""
+    """Add first x second, complex, to `into`; each (2, BLOCK)."""
     for f in range(BLOCK):
         re = first[0, f] * second[0, f] - first[1, f] * second[1, f]
         im = first[0, f] * second[1, f] + first[1, f] * second[0, f]

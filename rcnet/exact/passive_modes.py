@@ -2,14 +2,15 @@
 
 With P = A^T (g + a c) A (see `branches`) the modes solve C v = theta P v, theta = 1/(a + rate). P = L D L^T
 comes from the star-mesh transformation, which subtracts nothing (see `elimination`), so X = c^(1/2) A L^-T
-D^-1/2 has the right columns, and theta are the squares of its singular values. One-sided Jacobi gives those to
-high relative accuracy for a matrix scaled from both sides: Z. Drmac, K. Veselic, SIAM J. Matrix Anal. Appl.
-29(4):1322-1362, 2008 (LAPACK's xGEJSV). That every theta is well determined follows from Courant and Fischer:
-it is the stationary value of a quotient of two sums of positive terms, each proportional to one part.
+D^-1/2 has the right columns, and theta are the squares of its singular values. One-sided Jacobi gives those
+to high relative accuracy for a matrix scaled from both sides: Z. Drmac, K. Veselic, SIAM J. Matrix Anal.
+Appl. 29(4):1322-1362, 2008 (LAPACK's xGEJSV). That every theta is well determined follows from Courant and
+Fischer: it is the stationary value of a quotient of two sums of positive terms, each proportional to one
+part.
 
 The shapes are then refined with products in twice the working precision, which leaves no trace of one mode in
-another however far apart their rates lie: T. Ogita, K. Aishima, Japan J. Indust. Appl. Math. 35:1007-1035, 2018,
-here for the pencil (C, P).
+another however far apart their rates lie: T. Ogita, K. Aishima, Japan J. Indust. Appl. Math. 35:1007-1035,
+2018, here for the pencil (C, P).
 """
 
 from __future__ import annotations
@@ -62,9 +63,20 @@ def passive_modes(branches: Branches, slowest: float) -> PassiveModes:
         shapes[rows, modes:] = shapes[rows[0], modes:]
     shapes[:, modes:] *= _tied(branches, instant)[:, None]
     if floating:
-        shapes[:, : len(floating)] = _whole_groups(branches, floating) / np.sqrt(shift)
-    refined = _refined(branches, weights, shapes, len(floating), modes)
-    return _sorted(branches, (refined[0][:, :modes], refined[1][:, :modes]), len(floating))
+        shapes[:, : len(floating)] = whole_groups(branches, floating) / np.sqrt(shift)
+    return refined_modes(branches, weights, shapes, len(floating), modes)
+
+
+def refined_modes(
+    branches: Branches, weights: Float, shapes: Float, floating: int, modes: int
+) -> PassiveModes:
+    """The modes in the span of approximate ones.
+
+    weights: (branches,), g + a c; shapes: (inner, columns), the first `floating` the exact motions of what
+    floats at dc, those from `modes` on motions that no capacitor sees
+    """
+    refined = _refined(branches, weights, shapes, floating, modes)
+    return _sorted(branches, (refined[0][:, :modes], refined[1][:, :modes]), floating)
 
 
 def _tied(branches: Branches, instant: list[Indices]) -> Float:
@@ -75,7 +87,7 @@ def _tied(branches: Branches, instant: list[Indices]) -> Float:
     return mask
 
 
-def _whole_groups(branches: Branches, floating: list[Indices]) -> Float:
+def whole_groups(branches: Branches, floating: list[Indices]) -> Float:
     """Each floating group moving as a whole, combined so that V^T C V = 1."""
     whole = np.zeros((len(branches.inner), len(floating)))
     for column, rows in enumerate(floating):
@@ -139,7 +151,8 @@ def right_vectors(matrix: Float) -> Float:
     rows, columns = matrix.shape
     if rows <= columns:  # a square matrix might be transposed on the way
         matrix = np.vstack([matrix, np.zeros((columns + 1 - rows, columns))])
-    # joba = 2: both sides may be badly scaled; jobu = 3: no left vectors; jobr = 0: nothing is cut off as small.
+    # joba = 2: both sides may be badly scaled; jobu = 3: no left vectors; jobr = 0: nothing is cut off as
+    # small.
     values, _, right, _, _, info = dgejsv(matrix, joba=2, jobu=3, jobv=0, jobr=0, jobt=1, jobp=1)
     if info != 0 or not np.isfinite(right).all():
         raise UndecidedError("the natural modes do not come out of the singular value iteration.")
@@ -183,7 +196,9 @@ def _across(branches: Branches, shapes: Twofold) -> Twofold:
 
 
 def _form(weights: Float, across: Twofold) -> Twofold:
-    """(A V)^T w (A V): half of each weight's power of two goes to either side, so that both are of one size."""
+    """(A V)^T w (A V): half of each weight's power of two goes to either side, so that both are of
+    one size.
+    """
     used = weights > 0
     mantissa, power = np.frexp(weights[used])
     odd = power % 2
@@ -194,7 +209,7 @@ def _form(weights: Float, across: Twofold) -> Twofold:
 
 
 def _quotients(stored: Twofold, driven: Twofold, modes: int) -> Twofold:
-    """theta = V^T C V / V^T P V of each column, twofold; exactly zero from column `modes` on."""
+    """The quotients V^T C V / V^T P V of each column, twofold; exactly zero from column `modes` on."""
     top: Twofold = (np.diag(stored[0]).copy(), np.diag(stored[1]).copy())
     bottom: Twofold = (np.diag(driven[0]), np.diag(driven[1]))
     high = top[0] / bottom[0]
@@ -205,7 +220,9 @@ def _quotients(stored: Twofold, driven: Twofold, modes: int) -> Twofold:
 
 
 def _correction(stored: Twofold, driven: Twofold, theta: Twofold) -> Float:
-    """E such that V (1 + E) is right to second order; modes too close to tell apart are only made orthogonal."""
+    """E such that V (1 + E) is right to second order; modes too close to tell apart are only made
+    orthogonal.
+    """
     gap = (theta[0] - theta[0][:, None]) + (theta[1] - theta[1][:, None])  # theta_j - theta_i at (i, j)
     with np.errstate(all="ignore"):
         correction = (stored[0] - theta[0] * driven[0]) / gap
@@ -220,7 +237,9 @@ def _correction(stored: Twofold, driven: Twofold, theta: Twofold) -> Float:
 def _turned(
     shapes: Twofold, stored: Twofold, driven: Twofold, theta: Twofold, floating: int, modes: int
 ) -> Twofold | None:
-    """The shapes with each cluster of close modes turned into its own eigenvectors; None where none is close."""
+    """The shapes with each cluster of close modes turned into its own eigenvectors; None where none
+    is close.
+    """
     high, low = shapes[0].copy(), shapes[1].copy()
     order = floating + np.argsort(-theta[0][floating:modes], kind="stable")
     ordered = theta[0][order]
@@ -238,7 +257,10 @@ def _turned(
         _, turn = np.linalg.eigh(difference + difference.T)
         total: Twofold = (np.zeros((len(high), len(cluster))), np.zeros((len(high), len(cluster))))
         for k, column in enumerate(cluster):
-            part = (np.repeat(shapes[0][:, [column]], len(cluster), 1), np.repeat(shapes[1][:, [column]], len(cluster), 1))
+            part = (
+                np.repeat(shapes[0][:, [column]], len(cluster), 1),
+                np.repeat(shapes[1][:, [column]], len(cluster), 1),
+            )
             total = twofold.add(total, twofold.times(part, np.broadcast_to(turn[k], part[0].shape)))
         high[:, cluster], low[:, cluster] = total
     return (high, low) if found else None

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from itertools import pairwise
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -11,7 +13,7 @@ import numpy.typing as npt
 from ..circuit import Points, Square, Step
 
 Float = npt.NDArray[np.float64]
-Numbers = npt.NDArray[np.float64] | npt.NDArray[np.complex128]
+Numbers = npt.NDArray[Any]  # float64 where every pole is real, else complex128
 Indices = npt.NDArray[np.int64]
 
 _SNAP = 4 * np.finfo(float).eps  # a time this close below a corner, relatively, means the corner
@@ -83,7 +85,11 @@ def pieces_of(wave: Square | Step | Points) -> Pieces:
 
 def _made(begin: float, start: float, rows: list[tuple[float, float, float]], period: float | None) -> Pieces:
     """Pieces from (corner, level, slope) rows; a piece that lasts no time is left out."""
-    kept = [row for row, after in zip(rows, [*rows[1:], (period or math.inf, 0.0, 0.0)], strict=True) if after[0] > row[0]]
+    kept = [
+        row
+        for row, after in zip(rows, [*rows[1:], (period or math.inf, 0.0, 0.0)], strict=True)
+        if after[0] > row[0]
+    ]
     corners, levels, slopes = np.array(kept, dtype=np.float64).T
     return Pieces(begin, start, corners, levels, slopes, period)
 
@@ -124,7 +130,7 @@ def _points(wave: Points) -> Pieces:
             pairs.append((wave.period, wave.start))
     rows = [
         (t0 - begin, v0, 0.0 if math.isinf(t1) else (v1 - v0) / (t1 - t0))
-        for (t0, v0), (t1, v1) in zip(pairs[:-1], pairs[1:], strict=True)
+        for (t0, v0), (t1, v1) in pairwise(pairs)
     ]
     return _made(begin, wave.start, rows, wave.period)
 
@@ -136,7 +142,8 @@ def _points(wave: Points) -> Pieces:
 class Followed:
     """How far each term lags under pieces: e' = p e - u', which is zero at rest.
 
-    With the response at rest, H(0) u, a term contributes (residue / -p) e. Poles at exactly zero are left out.
+    With the response at rest, H(0) u, a term contributes (residue / -p) e. Poles at exactly zero are left
+    out.
 
     first: (terms,), e just after the beginning of the first turn
     begun: (pieces, terms), e just after each corner if it was zero at the turn's beginning
@@ -150,12 +157,12 @@ class Followed:
     gained: Numbers
 
     def at(self, time: Float) -> Numbers:
-        """e at times from `begin` on: (times, terms)."""
+        """E at times from `begin` on: (times, terms)."""
         turn, piece, since = self.pieces.located(time)
         return self.in_piece(self.turned(turn), piece, since)
 
     def turned(self, turn: Indices) -> Numbers:
-        """e just after the beginning of each turn, (turns, terms), as a geometric sum."""
+        """E just after the beginning of each turn, (turns, terms), as a geometric sum."""
         if self.pieces.period is None:
             return np.broadcast_to(self.first, (len(turn), len(self.poles)))
         once = self.poles * self.pieces.period
@@ -166,17 +173,19 @@ class Followed:
         return np.asarray(np.exp(many) * self.first + sums * self.gained)
 
     def settled(self) -> Numbers:
-        """e just after the beginning of a turn once every turn is like the last, (terms,)."""
+        """E just after the beginning of a turn once every turn is like the last, (terms,)."""
         assert self.pieces.period is not None
         growth = np.expm1(self.poles * self.pieces.period)
         moving = growth != 0
         return np.asarray(np.where(moving, self.gained / np.where(moving, -growth, 1.0), 0.0))
 
     def in_piece(self, turned: Numbers, piece: Indices, since: Float) -> Numbers:
-        """e at `since` seconds after corners, given e at the turn's beginning: (times, terms)."""
+        """E at `since` seconds after corners, given e at the turn's beginning: (times, terms)."""
         before = np.exp(np.outer(self.pieces.corners[piece], self.poles)) * turned + self.begun[piece]
         grown = np.outer(since, self.poles)
-        return np.asarray(np.exp(grown) * before - self.pieces.slopes[piece][:, None] * _ramp(grown, self.poles, since))
+        return np.asarray(
+            np.exp(grown) * before - self.pieces.slopes[piece][:, None] * _ramp(grown, self.poles, since)
+        )
 
 
 def _ramp(grown: Numbers, poles: Numbers, since: Float) -> Numbers:

@@ -6,7 +6,7 @@ quotients and sums in the same order, for each sample and block of frequencies i
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -26,8 +26,11 @@ _SAMPLES = 512  # samples that one task of a thread works on
 class Program:
     """A pattern as flat lists.
 
-    node: (steps,); start: (steps + 1,) into neighbour and slot; pair_start: (steps + 1,) into first, second, fill
-    part_slot: (admittances,); slots: how many
+    node: (steps,); start: (steps + 1,) into neighbour, slot
+    pair_start: (steps + 1,) into first, second, fill; see `elimination`
+    part_slot: (admittances,); opens: (admittances,), True for the first part of a slot; slots: how many
+    blank: the slots without a part of their own
+    Slots between kept nodes are left out: no voltage depends on them.
     """
 
     node: Indices
@@ -39,30 +42,41 @@ class Program:
     second: Indices
     fill: Indices
     part_slot: Indices
+    opens: npt.NDArray[np.bool_]
+    blank: Indices
     slots: int
 
 
 def program(pattern: Pattern) -> Program:
     """The pattern's steps one after another."""
-    steps = pattern.steps
+    steps, slots = pattern.steps, len(pattern.slot_ends)
+    idle = np.zeros(slots, dtype=bool)
+    idle[np.flatnonzero(np.isin(pattern.slot_ends, pattern.kept).all(axis=1))] = True
+    used = [np.flatnonzero(~idle[step.fill]) for step in steps]
+    part_slot = pattern.part_slots.copy()
+    part_slot[idle[part_slot] & (part_slot >= 0)] = -1
+    opens = np.zeros(len(part_slot), dtype=bool)
+    opens[np.unique(part_slot, return_index=True)[1]] = True
 
-    def joined(lists: list[Indices]) -> Indices:
+    def joined(lists: Iterable[Indices]) -> Indices:
         return np.concatenate([np.empty(0, dtype=np.int64), *lists])
 
-    def starts(lists: list[Indices]) -> Indices:
+    def starts(lists: Iterable[Indices]) -> Indices:
         return np.cumsum([0, *(len(one) for one in lists)], dtype=np.int64)
 
     return Program(
         np.array([step.node for step in steps], dtype=np.int64),
-        starts([step.neighbours for step in steps]),
-        joined([step.neighbours for step in steps]),
-        joined([step.slots for step in steps]),
-        starts([step.first for step in steps]),
-        joined([step.first for step in steps]),
-        joined([step.second for step in steps]),
-        joined([step.fill for step in steps]),
-        pattern.part_slots,
-        len(pattern.slot_ends),
+        starts(step.neighbours for step in steps),
+        joined(step.neighbours for step in steps),
+        joined(step.slots for step in steps),
+        starts(used),
+        joined(step.first[which] for step, which in zip(steps, used, strict=True)),
+        joined(step.second[which] for step, which in zip(steps, used, strict=True)),
+        joined(step.fill[which] for step, which in zip(steps, used, strict=True)),
+        part_slot,
+        opens & (part_slot >= 0),
+        np.setdiff1d(np.arange(slots), part_slot),
+        slots,
     )
 
 
@@ -74,28 +88,43 @@ def solve(
     potentials: Complex,
     currents: Complex,
     wanted: Sequence[int],
-) -> Complex:
-    """Voltages (wanted, columns, samples, points) for part values (admittances, samples) at each s.
+    answer: Complex,
+) -> bool:
+    """Fill `answer`, (wanted, columns, samples, points), volts, for part values (admittances, samples).
 
-    potentials: (nodes, columns), volts, of the fixed nodes; currents: (nodes, columns), amperes put in
+    s: (points,); potentials: (nodes, columns), volts, of the fixed nodes; currents: (nodes, columns), amperes
+    put in. False if a number in the answer is not finite.
     """
     columns, samples = potentials.shape[1], values.shape[1]
     grid = _grid(s, 16 * (steps.slots + len(steps.slot) + columns * len(potentials)))
-    answer = np.empty((len(wanted), columns, samples, len(s)), dtype=np.complex128)
     lists = (steps.node, steps.start, steps.neighbour, steps.slot, steps.pair_start)
-    pairs = (steps.first, steps.second, steps.fill, steps.part_slot, steps.slots)
+    pairs = (steps.first, steps.second, steps.fill, steps.part_slot, steps.opens, steps.blank, steps.slots)
     fed = bool(currents.any())
     seen = np.array(wanted, dtype=np.int64)
+    bad: list[int] = []
 
     def work(start: int) -> None:
         part = slice(start, min(start + _SAMPLES, samples))
         chosen = np.ascontiguousarray(values[:, part].T)
         chosen[:, is_resistor] = 1.0 / chosen[:, is_resistor]
-        _run(lists, pairs, is_resistor, chosen, grid.real.copy(), grid.imag.copy(), potentials, currents, fed,
-             seen, answer[:, :, part])
+        _run(
+            lists,
+            pairs,
+            is_resistor,
+            chosen,
+            grid.real.copy(),
+            grid.imag.copy(),
+            potentials,
+            currents,
+            fed,
+            seen,
+            answer[:, :, part],
+        )
+        if not np.isfinite(answer[:, :, part]).all():
+            bad.append(start)
 
     run_blocks(work, range(0, samples, _SAMPLES))
-    return answer
+    return not bad
 
 
 def _grid(s: Complex, size: int) -> Complex:
@@ -128,7 +157,7 @@ def _run(
     arrays they write being made.
     """
     node, start, neighbour, slot, pair_start = lists
-    first, second, fill, part_slot, slots = pairs
+    first, second, fill, part_slot, opens, blank, slots = pairs
     nodes, columns = potentials.shape
     width = re.shape[1]
     y = np.empty((slots, 2, width))
@@ -140,13 +169,22 @@ def _run(
     _spread(potentials, v)
     for sample in range(values.shape[0]):
         for block in range(re.shape[0]):
-            y[:] = 0.0
+            for own in blank:
+                y[own] = 0.0
             for k in range(len(part_slot)):
                 if part_slot[k] < 0:
                     continue
                 own = np.uint64(part_slot[k])
                 value = values[sample, k]
-                if is_resistor[k]:
+                if opens[k] and is_resistor[k]:
+                    for f in range(width):
+                        y[own, 0, f] = value
+                        y[own, 1, f] = 0.0
+                elif opens[k]:
+                    for f in range(width):
+                        y[own, 0, f] = value * re[block, f]
+                        y[own, 1, f] = value * im[block, f]
+                elif is_resistor[k]:
                     for f in range(width):
                         y[own, 0, f] += value
                 else:
@@ -156,10 +194,11 @@ def _run(
             if fed:
                 _spread(currents, j)
             for step in range(len(node)):
+                own = np.uint64(slot[start[step]])
                 for f in range(width):
-                    work[0, f] = 0.0
-                    work[1, f] = 0.0
-                for k in range(start[step], start[step + 1]):
+                    work[0, f] = y[own, 0, f]
+                    work[1, f] = y[own, 1, f]
+                for k in range(start[step] + 1, start[step + 1]):
                     own = np.uint64(slot[k])
                     for f in range(width):
                         work[0, f] += y[own, 0, f]
@@ -176,8 +215,9 @@ def _run(
                     own = np.uint64(slot[k])
                     to = np.uint64(k)
                     for f in range(width):
-                        share[to, 0, f] = y[own, 0, f] * inverse[here, 0, f] - y[own, 1, f] * inverse[here, 1, f]
-                        share[to, 1, f] = y[own, 0, f] * inverse[here, 1, f] + y[own, 1, f] * inverse[here, 0, f]
+                        a, b = y[own, 0, f], y[own, 1, f]
+                        share[to, 0, f] = a * inverse[here, 0, f] - b * inverse[here, 1, f]
+                        share[to, 1, f] = a * inverse[here, 1, f] + b * inverse[here, 0, f]
                 for k in range(pair_start[step], pair_start[step + 1]):
                     own = np.uint64(slot[start[step] + first[k]])
                     by = np.uint64(start[step] + second[k])

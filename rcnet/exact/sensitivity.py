@@ -134,7 +134,8 @@ class _Parts:
         letters = np.array([chr(code) for code in self.arrays.kinds.tolist()])
         self.rows = np.flatnonzero(~np.isin(letters, ["V", "I"]))
         self.letters = letters[self.rows].tolist()
-        self.names = tuple(network.names[row] for row in self.rows.tolist())
+        names = network.names
+        self.names = tuple(names[row] for row in self.rows.tolist())
         self.admittances = np.isin(letters[self.rows], ["R", "C", "L"])
         self.value = self.arrays.values[self.rows]
         self.nodes = self.arrays.nodes[self.rows]
@@ -224,8 +225,10 @@ def _slowest(network: Network) -> complex:
         raise UndecidedError(
             "the network has no natural mode, or more nodes than are searched for the slowest."
         )
-    order = np.argsort(np.abs(poles.real))
+    order = np.argsort(-poles.real)
     slowest = complex(poles[order[0]])
+    if slowest.real > -1e-9 * abs(slowest):
+        raise UndecidedError("a natural mode does not die away, so the network has no time constant.")
     if abs(slowest.imag) < 1e-6 * abs(slowest):
         slowest = complex(slowest.real)
     for pole in poles[order[1:]]:

@@ -73,7 +73,7 @@ class Solver:
 
     @cached_property
     def kernel(self) -> large.LargeKernel | None:
-        """The compiled kernel, loaded at first use; None without numba, or where elimination does not apply."""
+        """The compiled kernel, loaded at first use; None without numba or where it does not apply."""
         if self.stiff is None:
             return None
         rows, arrays = self.admittance_rows, self.arrays
@@ -121,10 +121,10 @@ class Solver:
         # An R = 0 or a loop of gain one shows as a division by zero; it is caught by looking at the result.
         with np.errstate(all="ignore"):
             if not currents_too and self._compiles(s, values):
-                rows = list(range(self.arrays.node_count)) if wanted is None else list(wanted)
-                found = self._compiled(s, drive, rows, values)
+                chosen = list(range(self.arrays.node_count)) if wanted is None else list(wanted)
+                found = self._compiled(s, drive, chosen, values)
                 solution = Solution(np.empty((self.arrays.node_count, len(s)), found.dtype), None)
-                solution.voltages[rows] = found
+                solution.voltages[chosen] = found
             elif self.pattern is None:
                 solution = self._nodal(s, drive, values)
             else:
@@ -165,22 +165,24 @@ class Solver:
         wanted: Sequence[int],
         values: npt.NDArray[np.float64],
         samples: int | None = None,
+        out: Numbers | None = None,
     ) -> Numbers:
         """Voltages of the `wanted` nodes for many samples of part values, (wanted, samples, points).
 
         values: (parts, samples); samples: how many there are in all, where these are only some of them
+        out: where the voltages go, complex, or None for an array of its own
         """
         count, points = values.shape[1], len(s)
+        answer = np.empty((len(wanted), count, points), dtype=np.complex128) if out is None else out
         if self._compiles(s, None):
-            each = [self.voltages_of(s, drive, wanted, values[:, k]) for k in range(count)]
-            return np.stack(each, axis=1)
+            for k in range(count):
+                answer[:, k] = self.voltages_of(s, drive, wanted, values[:, k])
+            return answer
         if self._samples_pay(s, values, samples or count):
             with np.errstate(all="ignore"):
-                answer = self._compiled_samples(s, drive, wanted, values)
-            if not np.isfinite(answer).all():
-                raise nodal.singular(self._controlled)
+                if not self._compiled_samples(s, drive, wanted, values, answer):
+                    raise nodal.singular(self._controlled)
             return answer
-        answer = np.empty((len(wanted), count, points), dtype=np.complex128)
         step = max(1, self.block() // max(points, 1))
         for start in range(0, count, step):
             part = values[:, start : start + step]
@@ -288,26 +290,33 @@ class Solver:
         """True if the compiled kernel is to answer."""
         if (values is not None and values.ndim == 2) or not self._pays(len(s)):
             return False
-        numbers = (self.arrays.values if values is None else values)[self.admittance_rows]
-        return large.in_range(self.is_resistor, numbers, s)
+        extent = self._extent if values is None else self._extent_of(values)
+        return large.in_range(extent, s)
+
+    @cached_property
+    def _extent(self) -> large.Extent:
+        return self._extent_of(self.arrays.values)
+
+    def _extent_of(self, values: npt.NDArray[np.float64]) -> large.Extent:
+        return large.extent(self.is_resistor, values[self.admittance_rows])
 
     def _compiled(
         self, s: Numbers, drive: Drive, wanted: Sequence[int], values: npt.NDArray[np.float64] | None
     ) -> Numbers:
         assert self.stiff is not None and self.kernel is not None
         controls = self.arrays.nodes[list(self.stiff_columns)][:, 2:4]
-        given = None if values is None else values[self.admittance_rows]
+        numbers = None if values is None else values[self.admittance_rows]
         seen, back = np.unique([*wanted, *controls.ravel().tolist()], return_inverse=True)
         potentials, injected = self._driven(drive)
         columns = self.kernel.solve(
-            s.astype(np.complex128), potentials, injected, drive.currents, seen.tolist(), given
+            s.astype(np.complex128), potentials, injected, drive.currents, seen.tolist(), numbers
         )[back]
         found = self._closed(columns, len(wanted), self._gains(values))
-        given_real = not np.iscomplexobj(s) and not np.iscomplexobj(drive.currents)
-        return found.real if given_real and not drive.sources.imag.any() else found
+        given = np.result_type(s, np.float64 if drive.currents is None else drive.currents)
+        return found if given == np.complex128 or drive.sources.imag.any() else found.real
 
     def _driven(self, drive: Drive) -> tuple[npt.NDArray[np.complex128], dict[int, complex]]:
-        """The fixed nodes' potentials, (nodes, 1 + E sources), and what current sources put into each node."""
+        """The fixed nodes' potentials, (nodes, 1 + E sources), and the amperes put into each node."""
         assert self.stiff is not None
         potentials = np.zeros((self.arrays.node_count, 1 + len(self.stiff_columns), 1), dtype=np.complex128)
         self.stiff.fill(potentials, drive.sources)
@@ -328,7 +337,7 @@ class Solver:
     def _samples_pay(self, s: Numbers, values: npt.NDArray[np.float64], samples: int) -> bool:
         if self.pattern is None or not large.samples_pay(len(self.pattern.steps), samples, len(s)):
             return False
-        return large.in_range(self.is_resistor, values[self.admittance_rows], s) and self._program is not None
+        return large.in_range(self._extent_of(values), s) and self._program is not None
 
     @cached_property
     def _program(self) -> Any:
@@ -341,8 +350,14 @@ class Solver:
         return sample_kernel.program(self.pattern)
 
     def _compiled_samples(
-        self, s: Numbers, drive: Drive, wanted: Sequence[int], values: npt.NDArray[np.float64]
-    ) -> Numbers:
+        self,
+        s: Numbers,
+        drive: Drive,
+        wanted: Sequence[int],
+        values: npt.NDArray[np.float64],
+        answer: Numbers,
+    ) -> bool:
+        """Fill `answer`, (wanted, samples, points); False if a number in it is not finite."""
         from . import sample_kernel
 
         assert self.stiff is not None
@@ -352,20 +367,18 @@ class Solver:
         for node, amount in injected.items():
             currents[node, 0] = amount
         seen = [*wanted, *controls.ravel().tolist()]
-        columns = sample_kernel.solve(
-            self._program,
-            self.is_resistor,
-            values[self.admittance_rows],
-            s.astype(np.complex128),
-            potentials,
-            currents,
-            seen,
+        shape = (len(seen), 1 + len(controls), *answer.shape[1:])
+        columns = np.empty(shape, dtype=np.complex128) if len(controls) else answer[:, None]
+        numbers, points = values[self.admittance_rows], s.astype(np.complex128)
+        finite = sample_kernel.solve(
+            self._program, self.is_resistor, numbers, points, potentials, currents, seen, columns
         )
-        if not len(controls):
-            return columns[:, 0]
-        gains = np.repeat(values[list(self.stiff_columns)], len(s), axis=1)
-        flat = self._closed(columns.reshape(*columns.shape[:2], -1), len(wanted), gains)
-        return flat.reshape(len(wanted), values.shape[1], len(s))
+        if len(controls):
+            gains = np.repeat(values[list(self.stiff_columns)], len(s), axis=1)
+            closed = self._closed(columns.reshape(*shape[:2], -1), len(wanted), gains)
+            answer[:] = closed.reshape(answer.shape)
+            finite = bool(np.isfinite(answer).all())
+        return finite
 
     def _gains(self, values: npt.NDArray[np.float64] | None) -> Numbers:
         numbers = (self.arrays.values if values is None else values)[list(self.stiff_columns)]

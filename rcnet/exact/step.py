@@ -41,7 +41,8 @@ def _require_settling(system: ModalSystem) -> None:
 def disconnected(network: Network) -> Network:
     """The network with every independent source taken out; both its nodes stay, open.
 
-    A voltage source of value zero that an F or H senses is a meter, not a source, and stays as the wire it is.
+    A voltage source of value zero that an F or H senses is a meter, not a source, and stays as the wire it
+    is.
     """
     sensed = {part.senses for part in network.parts if part.senses}
     left = Network(network.title)
@@ -59,8 +60,9 @@ def discharge(network: Network, part: str, voltages: dict[str, float]) -> Decay:
     """A capacitor's voltage after every source has been disconnected.
 
     voltages: of every capacitor at that moment, V
-    Charge kept by capacitors that nothing drains is the sum's base. Raises UndecidedError for networks of more
-    than R, C, V and I, and where a capacitor's own first node is asked of a network too large for its modes.
+    Charge kept by capacitors that nothing drains is the sum's base. Raises UndecidedError for networks of
+    more than R, C, V and I, and where a capacitor's own first node is asked of a network too large for its
+    modes.
     """
     if any(other.kind not in "RCVI" for other in network.parts):
         raise UndecidedError("the discharge is computed for networks of resistors and capacitors only.")
@@ -68,7 +70,9 @@ def discharge(network: Network, part: str, voltages: dict[str, float]) -> Decay:
     # Nothing flows between parts of the network that are not joined: one node of each may be called ground.
     branches = branches_between(left, _one_each(left))
     if len(branches.inner) > MOST_NODES:
-        raise UndecidedError(f"the network has more than {MOST_NODES} inner nodes, too many to list every mode.")
+        raise UndecidedError(
+            f"the network has more than {MOST_NODES} inner nodes, too many to list every mode."
+        )
     found = passive_modes(branches, span_of(left).low)
     row = np.full(left.arrays().node_count, -1)
     row[branches.inner] = np.arange(len(branches.inner))
@@ -94,6 +98,8 @@ def _one_each(network: Network) -> list[int]:
     import scipy.sparse
     import scipy.sparse.csgraph
 
-    graph = scipy.sparse.coo_matrix((np.ones(len(ends)), (ends[:, 0], ends[:, 1])), shape=(len(label), len(label)))
+    graph = scipy.sparse.coo_matrix(
+        (np.ones(len(ends)), (ends[:, 0], ends[:, 1])), shape=(len(label), len(label))
+    )
     count, piece = scipy.sparse.csgraph.connected_components(graph, directed=False)
     return [int(np.flatnonzero(piece == k)[0]) for k in range(count)]

@@ -28,11 +28,12 @@ def transient(network: Network, time: npt.ArrayLike, of: str | Sequence[str]) ->
     time: (times,), zero or more, in any order; of: a node, a pair `"a b"`, or a list of these
     Returns (times,), or (of, times) for a list.
 
-    Before t = 0 every source has kept its waveform's value at t = 0, or its dc value where it has no waveform,
-    for ever; nodes that only capacitors hold have carried no charge. At a vertical edge the value is the one
-    just after it. Each mode is followed in closed form from the last corner before each time: there is no time
-    step. Raises CircuitError for wrong names and times, UnsolvableError where there is no unique solution, and
-    UndecidedError where there is no steady state to start from or the modes cannot be had to full accuracy.
+    Before t = 0 every source has kept its waveform's value at t = 0, or its dc value where it has no
+    waveform, for ever; nodes that only capacitors hold have carried no charge. At a vertical edge the value
+    is the one just after it. Each mode is followed in closed form from the last corner before each time:
+    there is no time step. Raises CircuitError for wrong names and times, UnsolvableError where there is no
+    unique solution, and UndecidedError where there is no steady state to start from or the modes cannot be
+    had to full accuracy.
     """
     points = _times(time)
     single = isinstance(of, str)
@@ -42,8 +43,11 @@ def transient(network: Network, time: npt.ArrayLike, of: str | Sequence[str]) ->
     answer = np.zeros((len(pairs), len(points)))
     if names and pairs:
         system = modal_system(network, pairs, names)
-        for number, name in enumerate(names):
-            answer += _from_source(network, pairs, system, number, network.sources[name], points)
+        with np.errstate(over="ignore", invalid="ignore"):
+            for number, name in enumerate(names):
+                answer += _from_source(network, pairs, system, number, network.sources[name], points)
+        if not np.isfinite(answer).all():
+            raise UndecidedError("the circuit is unstable, and its output has outgrown every number by then.")
     return answer[0] if single else answer
 
 
@@ -60,7 +64,9 @@ def _times(time: npt.ArrayLike) -> Float:
 def driving(network: Network) -> list[str]:
     """The sources that do anything over time: those with a waveform, or a dc value other than zero."""
     return [
-        name for name, source in network.sources.items() if source.waveform is not None or source.dc not in (None, 0.0)
+        name
+        for name, source in network.sources.items()
+        if source.waveform is not None or source.dc not in (None, 0.0)
     ]
 
 

@@ -22,6 +22,7 @@ from .compiled import compiled, run_blocks
 from .inner import Complex, Float, Indices, Inner, Load, Sums
 
 BLOCK = 16  # frequencies that share one pass over the tree
+_TOGETHER = 50_000  # nodes of the blocks that one call may take, as long as every thread gets some
 _Small = npt.NDArray[np.int32]
 
 
@@ -60,7 +61,9 @@ def plan(inner: Inner) -> TreePlan:
 
 
 @compiled
-def _postorder(count: int, start: Indices, other: Indices, number: Indices, roots: Indices) -> tuple[Any, ...]:
+def _postorder(
+    count: int, start: Indices, other: Indices, number: Indices, roots: Indices
+) -> tuple[Any, ...]:
     up = np.full(count, -2, np.int64)
     by = np.full(count, -1, np.int64)
     queue = np.empty(count, np.int64)
@@ -127,38 +130,70 @@ def _postorder(count: int, start: Indices, other: Indices, number: Indices, root
     return order, place, parent, link, slot, depth
 
 
-def solve(tree: TreePlan, numbers: Sums, s: Complex, load: Load, wanted: Indices) -> Complex:
-    """Voltages of the inner nodes `wanted` at each s, (wanted, columns, points); Re s and Im s >= 0."""
-    values = (
+def prepare(tree: TreePlan, numbers: Sums) -> tuple[Float, ...]:
+    """The link to the parent and the shunts of each node, in order of position: g, c, g, c."""
+    return (
         np.append(numbers.link_g, 0.0)[tree.link],
         np.append(numbers.link_c, 0.0)[tree.link],
         numbers.shunt_g[tree.order],
         numbers.shunt_c[tree.order],
     )
+
+
+def solve(tree: TreePlan, values: tuple[Float, ...], s: Complex, load: Load, wanted: Indices) -> Complex:
+    """Voltages of the inner nodes `wanted` at each s, (wanted, columns, points); Re s and Im s >= 0."""
     starts, ends = tree.place[load.nodes], tree.place[wanted]
     carry, carried = _mark(tree.parent, starts)
     keep, kept = _mark(tree.parent, ends)
     places = (tree.parent, tree.own, tree.target, keep, carry)
     answer = np.empty((len(wanted), load.columns, len(s)), dtype=np.complex128)
 
+    # Small trees take several blocks at a time, so that what Python does between them does not count.
+    several = BLOCK * max(1, min(_TOGETHER // len(tree.parent), len(s) // (4 * BLOCK)))
+
     def work(start: int) -> None:
-        points = slice(start, min(start + BLOCK, len(s)))
+        points = slice(start, min(start + several, len(s)))
         size = points.stop - start
-        here = np.full(BLOCK, s[points][-1])  # the last point fills an incomplete block
-        here[:size] = s[points]
-        currents = np.zeros((carried, load.columns, 2, BLOCK))
+        here = np.full((-(-size // BLOCK), BLOCK), s[points][-1])  # the last point fills an incomplete block
+        here.reshape(-1)[:size] = s[points]
+        currents = np.zeros((carried, load.columns, 2, here.size))
         flow = load.at(s[points], points)
         currents[carry[starts], :, 0, :size] = flow.real
         currents[carry[starts], :, 1, :size] = flow.imag
-        shares = np.empty((kept, 2, BLOCK))
-        volts = np.zeros((kept, load.columns, 2, BLOCK))
-        _sweep(values, places, here.real.copy(), here.imag.copy(), tree.depth, currents, shares, volts)
-        _descend(tree.parent, keep, shares, volts)
-        found = volts[keep[ends]]
-        answer[:, :, points] = found[:, :, 0, :size] + 1j * found[:, :, 1, :size]
+        volts = np.empty((len(ends), load.columns, 2, here.size))
+        _blocks(
+            values, places, here.real.copy(), here.imag.copy(), tree.depth, currents, keep[ends], kept, volts
+        )
+        answer[:, :, points] = volts[:, :, 0, :size] + 1j * volts[:, :, 1, :size]
 
-    run_blocks(work, range(0, len(s), BLOCK))
+    run_blocks(work, range(0, len(s), several))
     return answer
+
+
+@compiled
+def _blocks(
+    values: Any,
+    places: Any,
+    re: Float,
+    im: Float,
+    depth: int,
+    currents: Float,
+    rows: Indices,
+    kept: int,
+    volts: Float,
+) -> None:
+    """One block after another: from `currents`, (.., columns, 2, points), `volts` of the kept `rows`."""
+    own = np.empty((currents.shape[0], currents.shape[1], 2, BLOCK))
+    shares = np.empty((kept, 2, BLOCK))
+    found = np.empty((kept, currents.shape[1], 2, BLOCK))
+    for block in range(len(re)):
+        points = slice(block * BLOCK, block * BLOCK + BLOCK)
+        own[:] = currents[:, :, :, points]
+        found[:] = 0.0
+        _sweep(values, places, re[block], im[block], depth, own, shares, found)
+        _descend(places[0], places[3], shares, found)
+        for k in range(len(rows)):
+            volts[k, :, :, points] = found[rows[k]]
 
 
 @compiled
@@ -270,7 +305,7 @@ def _special(
 
 @compiled
 def _add_product(first: Float, second: Float, into: Float) -> None:
-    """into += first second, complex, each (2, BLOCK)."""
+    """Add first x second, complex, to `into`; each (2, BLOCK)."""
     for f in range(BLOCK):
         re = first[0, f] * second[0, f] - first[1, f] * second[1, f]
         im = first[0, f] * second[1, f] + first[1, f] * second[0, f]

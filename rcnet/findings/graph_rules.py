@@ -124,9 +124,11 @@ def dangling(circuit: Circuit) -> Iterator[Remark]:
         for node in dict.fromkeys(part.nodes):
             touches[node] += 1
             last[node] = part.name
-    looked_at = {*circuit.output, *(node for claim in circuit.claims for node in claim.of)}
+    meant = {GROUND, *circuit.output, *(node for claim in circuit.claims for node in claim.of)}
+    # A node that floats is reported as that.
+    meant.update(node for group in floating_nodes(circuit.network, dc=False) for node in group)
     for node, count in touches.items():
-        if count == 1 and node != GROUND and node not in looked_at:
+        if count == 1 and node not in meant:
             yield Remark(
                 f"node {node!r} is touched by {last[node]} alone, so no current flows there.",
                 "Check the spelling of the node's name.",

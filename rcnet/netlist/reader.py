@@ -194,6 +194,8 @@ class _Reader:
             if line.text.split(" ", 1)[0].lower() == self.section_end:
                 self.section_end = None
             return
+        if "\r" in line.text:
+            return  # it is among the problems already
         if not line.text.isprintable():
             odd = next(character for character in line.text if not character.isprintable())
             raise CircuitError(

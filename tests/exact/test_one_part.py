@@ -35,7 +35,7 @@ def without(network: Network, gone: str, joined: tuple[str, str] | None = None) 
 
 @pytest.mark.parametrize("name", NETWORKS)
 def test_scaling_by_any_factor_is_the_changed_network(name: str) -> None:
-    """From a thousandth to a thousandfold, every part of every kind, within 1e-11 of the greatest response."""
+    """From a thousandth to a thousandfold, every part of every kind, within 1e-11 of the greatest value."""
     network, factors = NETWORKS[name](), [1e-3, 0.5, 1.0, 2.0, 1e3]
     for part, found in every_part(network, FREQUENCIES, "out").items():
         scaled = found.scaled(factors)

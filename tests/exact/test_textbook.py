@@ -6,10 +6,12 @@ A. Morgan-Voyce's (IRE Trans. Circuit Theory CT-6:321-322, 1959), the line's W. 
 
 from __future__ import annotations
 
+import gc
 import itertools
 import math
 import random
 import warnings
+import weakref
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -546,6 +548,19 @@ def test_a_changed_network_is_solved_anew() -> None:
     assert response(network, [1.0], "out")[0] == pytest.approx(1 / 3, rel=1e-15)
     assert response(network.with_values({"R1": 2 * R}), [1.0], "out")[0] == pytest.approx(0.2, rel=1e-15)
     assert response(network, [1.0], "out")[0] == pytest.approx(1 / 3, rel=1e-15)
+
+
+@pytest.mark.parametrize("kind", ["eliminated", "general"])
+def test_a_network_nobody_holds_is_let_go(kind: str) -> None:
+    """What is kept of a network for its next analysis does not keep the network itself."""
+    network = ladder(2)
+    if kind == "general":
+        network.add_inductor("L1", "n1", "out", 1e-3)
+    response(network, [1.0], "out")
+    watched = weakref.ref(network)
+    del network
+    gc.collect()
+    assert watched() is None
 
 
 @pytest.mark.parametrize("kind", ["ladder", "buffered", "general"])

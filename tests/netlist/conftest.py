@@ -15,7 +15,9 @@ from rcnet.curves import Curve, Curves
 from rcnet.curves.raw import parse_raw
 from rcnet.errors import ResultsError
 
-_TROUBLE = re.compile(r"^.*\b(?:error|warning|singular|aborted|mOhm|gmin step).*$", re.IGNORECASE | re.MULTILINE)
+_TROUBLE = re.compile(
+    r"^.*\b(?:error|warning|singular|aborted|mOhm|gmin step).*$", re.IGNORECASE | re.MULTILINE
+)
 
 
 @dataclass(frozen=True)

@@ -88,7 +88,7 @@ def test_ngspice_makes_no_use_of_such_a_sweep(
 ) -> None:
     """It refuses, never ends, gives no point, or one point only."""
     line = card(sweep) if analysis == "ac" else card(sweep).replace(".ac", ".noise v(in) V1")
-    ran = ngspice(f"* t\nV1 in 0 DC 0 AC 1\nR1 in 0 1k\n{line}\n.end\n", timeout=2)
+    ran = ngspice(f"* t\nV1 in 0 DC 0 AC 1\nR1 in 0 1k\n{line}\n.end\n", timeout=0.7)
     if ran.code == 0 and ran.curves is not None:
         assert fault == "one point only"
         assert len(ran.curve("v(in)").axis) == 1
@@ -126,7 +126,9 @@ def test_a_sweep_without_points_is_empty(sweep: Sweep) -> None:
 
 
 @pytest.mark.parametrize(
-    "sweep", [Sweep(1.0, 10.0, 10**9), Sweep(1.0, 10.0, 10**9, "oct"), Sweep(1.0, 10.0, 10**9, "lin")], ids=card
+    "sweep",
+    [Sweep(1.0, 10.0, 10**9), Sweep(1.0, 10.0, 10**9, "oct"), Sweep(1.0, 10.0, 10**9, "lin")],
+    ids=card,
 )
 def test_too_many_points_are_refused(sweep: Sweep) -> None:
     """Memory is not filled with a sweep nobody can use."""

@@ -46,7 +46,9 @@ NODES = st.sampled_from(ODD) | st.text(
 TAILS = st.sampled_from(["", "1", "2", "a", "A", "é", ".x", "+", "µ", "x" * 199]) | st.text(
     st.characters(exclude_categories=("C", "Z")), max_size=4
 ).filter(str.isprintable)
-SIZES = st.floats(1e-300, 1e300) | st.sampled_from([5e-324, 0.1, 4700.0, 1e-7, 0.7, 1 / 3, 1.7976931348623157e308])
+SIZES = st.floats(1e-300, 1e300) | st.sampled_from(
+    [5e-324, 0.1, 4700.0, 1e-7, 0.7, 1 / 3, 1.7976931348623157e308]
+)
 SIGNED = st.floats(-1e300, 1e300) | st.just(-0.0)
 LEVELS = st.floats(-1e6, 1e6)
 TIMES = st.floats(1e-9, 1e3)
@@ -201,7 +203,7 @@ def same_waveform(edged: Waveform | None, back: Waveform | None, run: TransientR
 def test_what_is_written_comes_back(circuit: Circuit) -> None:
     """Parts, nodes, values to the bit, drives, waveforms with their edges, analyses, output, temperature."""
     written = write(circuit)
-    back = parse_netlist(written.text, "x.cir")
+    back = read_same(written)
     nodes = {old: new.lower() for old, new in written.names.nodes.items()}
     parts = dict(written.names.parts)
     want = renamed_graph(written.circuit.network, nodes, parts)
@@ -244,13 +246,17 @@ def test_every_line_is_short_safe_and_known(circuit: Circuit, comments: list[str
         assert len(line) < 80
         assert line.isprintable()
         assert not line.endswith("\\")
-        assert re.match(r"\* |\*$|[RCLEGFHVI+]|\.(op|ac|tran|noise|print|save|options|end)\b", line, re.IGNORECASE)
+        assert re.match(
+            r"\* |\*$|[RCLEGFHVI+]|\.(op|ac|tran|noise|print|save|options|end)\b", line, re.IGNORECASE
+        )
         assert line.startswith("*") or line.isascii()
     assert lines[0].startswith("* ")
     names = [name.lower() for name in written.names.parts.values()]
     assert len(set(names)) == len(names)
     # A long name may be broken over lines, and one that breaks behind a backslash shows a slash there.
-    said = "".join(line.removeprefix("*").replace(" ", "").replace("\\", "/") for line in lines if line[0] == "*")
+    said = "".join(
+        line.removeprefix("*").replace(" ", "").replace("\\", "/") for line in lines if line[0] == "*"
+    )
     for what, old, new in written.names.renamed:
         assert f'{what}{new}is"{old}"'.replace("\\", "/") in said
 
@@ -377,7 +383,7 @@ def test_too_many_repeats_are_refused(period: float) -> None:
     assert "at most 20000 points" in (caught.value.remedy or "")
 
 
-# --------------------------------------------------------------------------------------- what cannot be written
+# ---------------------------------------------------------------------------------- what cannot be written
 
 
 def test_noise_needs_an_output() -> None:
@@ -461,7 +467,7 @@ def test_ngspice_gives_our_answer_for_a_written_network(ngspice: Callable[..., A
 
 @pytest.mark.ngspice
 def test_ngspice_runs_all_four_analyses_of_one_netlist(ngspice: Callable[..., Any]) -> None:
-    """Operating point, ac, transient and noise of one written file come out, with the values of an RC filter."""
+    """Operating point, ac, transient and noise come out of one file, with the values of an RC filter."""
     network = filter_circuit().network.with_source(
         Source("Vin", ("in", "0"), ac=1.0, waveform=Step(1.0, 3.0, 1e-3))
     )
