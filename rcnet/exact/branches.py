@@ -23,6 +23,8 @@ from .solver import solver_for
 Float = npt.NDArray[np.float64]
 Indices = npt.NDArray[np.int64]
 
+_MANY = 2000  # branches, from which on compiled graph code pays for its start
+
 
 @dataclass(frozen=True)
 class Branches:
@@ -58,18 +60,35 @@ class Branches:
 
         Each group is an array of rows of `inner`; a node that no such branch touches is a group of its own.
         """
+        label = _components(len(self.inner) + 1, self.ends[weights > 0])  # -1 stands for all that is fixed
+        loose = np.flatnonzero(label[:-1] != label[-1])
+        order = loose[np.argsort(label[loose], kind="stable")]
+        cuts = np.flatnonzero(np.diff(label[order])) + 1
+        return [np.asarray(rows, dtype=np.int64) for rows in np.split(order, cuts) if len(rows)]
+
+
+def _components(count: int, ends: Indices) -> Indices:
+    """A label for each of `count` nodes, equal for those that edges between `ends` join; -1 is the
+    last node.
+    """
+    if len(ends) > _MANY:
         import scipy.sparse
         import scipy.sparse.csgraph
 
-        count = len(self.inner)
-        used = weights > 0
-        a, b = np.where(self.ends[used] < 0, count, self.ends[used]).T
-        graph = scipy.sparse.coo_matrix((np.ones(len(a)), (a, b)), shape=(count + 1, count + 1))
-        _, label = scipy.sparse.csgraph.connected_components(graph, directed=False)
-        order = np.argsort(label[:count], kind="stable")
-        cuts = np.flatnonzero(np.diff(label[:count][order])) + 1
-        split = np.split(order, cuts) if count else []
-        return [np.asarray(rows, dtype=np.int64) for rows in split if label[rows[0]] != label[count]]
+        a, b = (ends % count).T
+        graph = scipy.sparse.coo_matrix((np.ones(len(a)), (a, b)), shape=(count, count))
+        return np.asarray(scipy.sparse.csgraph.connected_components(graph, directed=False)[1], dtype=np.int64)
+    parent = list(range(count))
+
+    def root(node: int) -> int:
+        while parent[node] != node:
+            parent[node] = parent[parent[node]]
+            node = parent[node]
+        return node
+
+    for a, b in (ends % count).tolist():
+        parent[root(a)] = root(b)
+    return np.array([root(node) for node in range(count)], dtype=np.int64)
 
 
 def branches_of(network: Network) -> Branches | None:

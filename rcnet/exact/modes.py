@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import weakref
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -10,7 +11,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from ..circuit import Network
+from ..circuit import Network, PartArrays
 from ..errors import CircuitError, UndecidedError
 from . import twofold
 from .ac import dc_solvable, node_pair
@@ -26,8 +27,9 @@ Float = npt.NDArray[np.float64]
 Numbers = npt.NDArray[Any]  # float64 where every pole is real, else complex128
 Pair = tuple[int, int]
 
-MOST_NODES = 1500  # inner nodes of a passive network up to which every mode is listed
+MOST_NODES = 1000  # inner nodes of a passive network up to which every mode is listed
 FULL_NODES = 300  # beyond, a model of fewer modes with the same response is faster and as good
+_MOST_KEPT = 32  # systems of one network
 _ROUNDING = 4e-15  # of the greatest voltage anywhere: what the exact response of a general network may lack
 _AGREES = 1e-11  # of the greatest response: how far the sum over modes may lie from the exact response
 
@@ -180,6 +182,32 @@ def modal_system(
     every: with all modes, also in a large network, where fewer would give the same responses
     Raises UnsolvableError, and UndecidedError where the modes cannot be had to the accuracy promised.
     """
+    kept = _kept(network)
+    key = (tuple(of), tuple(sources), every)
+    if key not in kept:
+        if len(kept) >= _MOST_KEPT:
+            kept.clear()
+        kept[key] = _built(network, of, sources, every=every)
+    return kept[key]
+
+
+Key = tuple[tuple[Pair, ...], tuple[str, ...], bool]
+_systems: weakref.WeakKeyDictionary[Network, tuple[PartArrays, dict[Key, ModalSystem]]] = (
+    weakref.WeakKeyDictionary()
+)
+
+
+def _kept(network: Network) -> dict[Key, ModalSystem]:
+    """What has been computed for a network while it is unchanged; a unit of each source is meant."""
+    arrays = network.arrays()
+    entry = _systems.get(network)
+    if entry is None or entry[0] is not arrays:
+        entry = (arrays, {})
+        _systems[network] = entry
+    return entry[1]
+
+
+def _built(network: Network, of: Sequence[Pair], sources: Sequence[str], *, every: bool) -> ModalSystem:
     require_solvable(network)
     branches = branches_of(network)
     poles: Numbers
@@ -200,8 +228,7 @@ def modal_system(
     if integrating.any():
         regular = direct + system.weights.real.sum(axis=-1)
         system = ModalSystem(poles, residues, np.where(integrating, regular, static), direct)
-    _check(network, of, sources, system)
-    return system
+    return _checked(network, of, sources, system)
 
 
 def sampled(network: Network, of: Sequence[Pair], sources: Sequence[str], s: Complex) -> Complex:
@@ -297,18 +324,25 @@ def _driven(
     return np.asarray(high + low)
 
 
-def _check(network: Network, of: Sequence[Pair], sources: Sequence[str], system: ModalSystem) -> None:
-    """Raise UndecidedError unless the sum over modes is the exact response at frequencies over the whole
-    span.
+def _checked(
+    network: Network, of: Sequence[Pair], sources: Sequence[str], system: ModalSystem
+) -> ModalSystem:
+    """The system, compared with the exact response at frequencies over the whole span.
+
+    What rounding left of residues at outputs a source does not reach is taken away. Raises UndecidedError
+    where the two differ.
     """
     moving = np.abs(system.poles[system.poles != 0])
     if not len(moving) or not len(sources) or not len(of):
-        return
+        return system
     low, high = moving.min() / 11, moving.max() * 13  # no point falls on an undamped pole
     count = min(60, max(5, math.ceil(2 * math.log10(high / low)) + 1))
     s = 1j * np.geomspace(low, high, count)
     voltages = _voltages(network, of, sources, s)
     exact = _differences(voltages, of)
+    reached = (exact != 0).any(axis=-1) | (system.static != 0) | (system.direct != 0)
+    residues = np.where(reached[..., None], system.residues, 0.0)
+    system = ModalSystem(system.poles, residues, system.static, system.direct)
     error = np.abs(system.at(s) - exact).max(axis=-1)
     # A difference of nearly equal voltages has fewer digits in the exact response than in the modes.
     a, b = np.array(of, dtype=np.int64).T
@@ -323,3 +357,4 @@ def _check(network: Network, of: Sequence[Pair], sources: Sequence[str], system:
             f"the natural modes give the response only to {share:.1e} of its greatest value;"
             f" {_AGREES:.0e} is asked.",
         )
+    return system

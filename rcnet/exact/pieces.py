@@ -159,7 +159,8 @@ class Followed:
     def at(self, time: Float) -> Numbers:
         """E at times from `begin` on: (times, terms)."""
         turn, piece, since = self.pieces.located(time)
-        return self.in_piece(self.turned(turn), piece, since)
+        turns, place = np.unique(turn, return_inverse=True)
+        return self.in_piece(self.turned(turns)[place], piece, since)
 
     def turned(self, turn: Indices) -> Numbers:
         """E just after the beginning of each turn, (turns, terms), as a geometric sum."""
@@ -181,7 +182,8 @@ class Followed:
 
     def in_piece(self, turned: Numbers, piece: Indices, since: Float) -> Numbers:
         """E at `since` seconds after corners, given e at the turn's beginning: (times, terms)."""
-        before = np.exp(np.outer(self.pieces.corners[piece], self.poles)) * turned + self.begun[piece]
+        # A piece seldom holds one time only: what has died away by its corner is computed once.
+        before = np.exp(np.outer(self.pieces.corners, self.poles))[piece] * turned + self.begun[piece]
         grown = np.outer(since, self.poles)
         return np.asarray(
             np.exp(grown) * before - self.pieces.slopes[piece][:, None] * _ramp(grown, self.poles, since)

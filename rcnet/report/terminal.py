@@ -190,7 +190,10 @@ def _error_of_hand(result: ClaimResult) -> str:
         return " (the same)"
     if result.claim.measure.unit in ("dB", "deg"):
         return f" ({result.hand - result.exact:+.2g})"
-    return f" ({100 * (result.hand / result.exact - 1):+.2g} %)" if result.exact else ""
+    if not result.exact:
+        return ""
+    error = 100 * (result.hand / result.exact - 1)
+    return f" ({error:+.0f} %)" if 100 <= abs(error) < 1e5 else f" ({error:+.2g} %)"
 
 
 # ---------------------------------------------------------------------- compare

@@ -170,6 +170,17 @@ def test_source_currents_in_the_operating_point_are_right() -> None:
             assert reference.relative_error(source_currents(network)["V1"], -leaving) <= 1e-13
 
 
+def test_source_currents_count_what_current_sources_bring() -> None:
+    """1 mA between two equal resistors returns half each way; 2 mA on the source's own node through it."""
+    network = Network()
+    network.add_voltage_source("V1", "a", "0", dc=0)
+    network.add_resistor("R1", "a", "b", 1e3)
+    network.add_resistor("R2", "b", "0", 1e3)
+    network.add_current_source("I1", "0", "b", dc=1e-3)
+    network.add_current_source("I2", "0", "a", dc=2e-3)
+    assert source_currents(network) == pytest.approx({"V1": 2.5e-3}, rel=1e-14)
+
+
 # ---------------------------------------------------------------------- sources on top of sources
 
 
