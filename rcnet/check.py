@@ -53,7 +53,7 @@ def check(circuit: Circuit | Network) -> Check:
 def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
     """A warning where the hand formula leads to another verdict than the network does."""
     claim = result.claim
-    place = claim.place or Place(circuit.file or circuit.name, None)
+    place = claim.hand_place or claim.place or Place(circuit.file or circuit.name, None)
     if result.hand_why is not None:
         message = f"{claim.says!r}: the hand formula gives no number: {result.hand_why}"
         return [

@@ -89,6 +89,7 @@ class Claim:
     """One thing the designer says is true of the circuit.
 
     of: one node or a pair; options: the measure's options by name, base units
+    place, hand_place: where the claim and its hand formula stand
     """
 
     says: str
@@ -99,6 +100,7 @@ class Claim:
     hand: Expression | None = None
     over_tolerance: bool = False
     place: Place | None = None
+    hand_place: Place | None = None
 
 
 @dataclass(frozen=True, slots=True)

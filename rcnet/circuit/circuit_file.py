@@ -409,9 +409,16 @@ class _Reader:
             self.complain((*path, "says"), f"says is {shown(says)}, not text.", 'Write says = "...".')
         if len(self.problems) > before or bound is None:
             return None
-        place = self.place(*path)
         return Claim(
-            says or _plain(spec, options, bound), spec, of, options, bound, hand, over is not None, place
+            says or _plain(spec, options, bound),
+            spec,
+            of,
+            options,
+            bound,
+            hand,
+            over is not None,
+            self.place(*path),
+            self.place(*path, "hand") if hand is not None else None,
         )
 
     def bound(self, path: KeyPath, spec: MeasureSpec, table: dict[str, Any]) -> Bound | None:

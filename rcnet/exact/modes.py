@@ -228,7 +228,12 @@ def _built(network: Network, of: Sequence[Pair], sources: Sequence[str], *, ever
     if integrating.any():
         regular = direct + system.weights.real.sum(axis=-1)
         system = ModalSystem(poles, residues, np.where(integrating, regular, static), direct)
-    return _checked(network, of, sources, system)
+    system = _checked(network, of, sources, system)
+    if every:
+        return system
+    # A mode no source reaches or no output shows may grow as it likes.
+    kept = (system.residues != 0).any(axis=(0, 1))
+    return ModalSystem(poles[kept], system.residues[..., kept], system.static, system.direct)
 
 
 def sampled(network: Network, of: Sequence[Pair], sources: Sequence[str], s: Complex) -> Complex:
