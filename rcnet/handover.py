@@ -159,13 +159,17 @@ def _facts(circuit: Circuit, done: Check, names: Names) -> list[str]:
         lines.append(DESPITE_ERRORS)
         lines += [f"  {finding.message}" for finding in done.errors]
     severities = [finding.severity for finding in done.findings]
-    counted = ", ".join(f"{severities.count(word)} {word}s" for word in ("error", "warning", "note"))
+    counted = ", ".join(_counted(severities.count(word), word) for word in ("error", "warning", "note"))
     lines.append(f"checked: {counted}")
     if done.claims:
         verdicts = [result.verdict for result in done.claims]
         hold, fail, open_ = (verdicts.count(word) for word in ("holds", "fails", "undecided"))
-        lines.append(f"claims: {hold} hold, {fail} fail, {open_} undecided")
+        lines.append(f"{_counted(len(verdicts), 'claim')}: {hold} true, {fail} false, {open_} undecided")
     return lines + _expectations(circuit, names)
+
+
+def _counted(count: int, word: str) -> str:
+    return f"{count} {word}{'' if count == 1 else 's'}"
 
 
 def _expectations(circuit: Circuit, names: Names) -> list[str]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal
 
@@ -49,7 +50,7 @@ def judge(circuit: Circuit) -> tuple[ClaimResult, ...]:
 def _judge(circuit: Circuit, claim: Claim) -> ClaimResult:
     hand, hand_why = _hand(circuit, claim)
     try:
-        exact = evaluate(circuit.network, claim.measure.name, " ".join(claim.of) or None, claim.options)
+        exact = evaluate(circuit.network, claim.measure.name, " ".join(claim.of) or None, _options(circuit, claim))
     except UndecidedError as exc:
         why = f"{exc.message} {exc.remedy}" if exc.remedy else exc.message
         return ClaimResult(claim, None, hand, "undecided", why=why, hand_why=hand_why)
@@ -62,6 +63,13 @@ def _judge(circuit: Circuit, claim: Claim) -> ClaimResult:
         return ClaimResult(claim, exact, hand, "undecided", margin, why=why, hand_why=hand_why)
     verdict: Verdict = "holds" if claim.bound.holds(exact) else "fails"
     return ClaimResult(claim, exact, hand, verdict, margin, hand_why=hand_why)
+
+
+def _options(circuit: Circuit, claim: Claim) -> Mapping[str, float | str]:
+    """The claim's options; thermal noise is that of the circuit's own temperature, in kelvin."""
+    if claim.measure.name != "noise":
+        return claim.options
+    return {**claim.options, "temperature": circuit.conditions.nominal + 273.15}
 
 
 def _hand(circuit: Circuit, claim: Claim) -> tuple[float | None, str | None]:

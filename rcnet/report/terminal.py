@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from ..check import Check
     from ..claims import ClaimResult
     from ..compare import Comparison, CurveComparison, Difference
-    from ..confirm import Confirmation
+    from ..confirmation import Confirmation
     from ..curves import Curve
     from ..findings import Finding
 

@@ -9,7 +9,7 @@ import pytest
 
 from rcnet.check import check
 from rcnet.circuit import Circuit, parse_circuit_file
-from rcnet.claims import COMPUTED, ClaimResult, judge, overall
+from rcnet.claims import ClaimResult, judge, overall
 
 # 1 kohm and 100 nF: the corner lies at 1/(2 pi RC) = 1591.549430918953 Hz.
 CORNER = 1e4 / (2 * math.pi)
@@ -151,12 +151,12 @@ def test_undecided(case: str) -> None:
     assert not check(circuit(claim)).passes()
 
 
-def test_measure_that_is_not_computed_yet(monkeypatch: pytest.MonkeyPatch) -> None:
-    """A measure of the interface without a function behind it is undecided, and says that it is to come."""
-    monkeypatch.delitem(COMPUTED, "dissipation", raising=False)
-    got = result('measure = "dissipation"\npart = "R1"\nat_most = 1')
-    assert got.verdict == "undecided"
-    assert got.why == "dissipation is not computed yet. It comes with a later version."
+def test_noise_is_that_of_the_circuits_temperature() -> None:
+    """All the noise of one RC is sqrt(kT/C) (Nyquist 1928), T being the temperature the circuit file names."""
+    claim = 'measure = "noise"\nfrom = 0\nto = inf\nat_most = "1 mV"'
+    for celsius in (27, 85):
+        got = result(claim, head=f"{HEAD}[conditions]\ntemperature = {celsius}\n")
+        assert got.exact == pytest.approx(math.sqrt(1.380649e-23 * (celsius + 273.15) / 100e-9), rel=1e-12)
 
 
 def test_claim_over_tolerances() -> None:

@@ -201,7 +201,7 @@ def test_the_seal_tells_findings_and_claims() -> None:
     """The counts of findings by severity and of claims by verdict."""
     text = sealed()
     assert "*   checked: 0 errors, 0 warnings, 0 notes\n" in text
-    assert "*   claims: 1 hold, 1 fail, 0 undecided\n" in text
+    assert "*   2 claims: 1 true, 1 false, 0 undecided\n" in text
 
 
 def exact(frequency: float) -> complex:
