@@ -1,14 +1,14 @@
 """The errors rcnet raises: what went wrong, where, and what to do about it.
 
-    RcnetError
-    ├── InputError           a file, an option or a value from outside is wrong
-    │   ├── QuantityError    a number with a prefix and a unit cannot be read
-    │   ├── CircuitError     a circuit file, a netlist or a call describes no valid circuit
-    │   └── ResultsError     a results file cannot be read, or is not about this circuit
-    ├── UnsolvableError      the network has no unique solution
-    ├── UndecidedError       a measure does not exist for this network
-    ├── SimulatorError       a simulator is missing, failed, or did something else than asked
-    └── OutputError          a result cannot be written
+RcnetError
+├── InputError           a file, an option or a value from outside is wrong
+│   ├── QuantityError    a number with a prefix and a unit cannot be read
+│   ├── CircuitError     a circuit file, a netlist or a call describes no valid circuit
+│   └── ResultsError     a results file cannot be read, or is not about this circuit
+├── UnsolvableError      the network has no unique solution
+├── UndecidedError       a measure does not exist for this network
+├── SimulatorError       a simulator is missing, failed, or did something else than asked
+└── OutputError          a result cannot be written
 """
 
 from __future__ import annotations
@@ -70,7 +70,12 @@ class RcnetError(Exception):
     def at(self, file: str | None = None, line: int | None = None) -> RcnetError:
         """The same error with a place filled in wherever a problem has none yet."""
         placed = (
-            Problem(p.message, p.file if p.file is not None else file, p.line if p.line is not None else line, p.remedy)
+            Problem(
+                p.message,
+                p.file if p.file is not None else file,
+                p.line if p.line is not None else line,
+                p.remedy,
+            )
             for p in self.problems
         )
         return type(self)(problems=placed)

@@ -26,6 +26,7 @@ RANKS = {
     "opinion": 5,
     "check": 6,
     "handover": 7,
+    "answers": 8,
     "confirmation": 8,
     "report": 9,
     "confirm": 10,
@@ -48,7 +49,9 @@ def _imported_rooms(path: Path) -> set[str]:
         if isinstance(node, ast.ImportFrom) and node.level == depth:
             names = [node.module.split(".")[0]] if node.module else [alias.name for alias in node.names]
             rooms.update(names)
-        elif isinstance(node, ast.ImportFrom) and node.level == 0 and (node.module or "").startswith("rcnet."):
+        elif (
+            isinstance(node, ast.ImportFrom) and node.level == 0 and (node.module or "").startswith("rcnet.")
+        ):
             rooms.add((node.module or "").split(".")[1])
     return rooms
 

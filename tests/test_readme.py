@@ -55,7 +55,9 @@ def test_console_block_shows_what_happens(number: int, tmp_path: Path) -> None:
 def test_python_block_runs(number: int, tmp_path: Path) -> None:
     """Every Python example in the README runs as written."""
     block = _PYTHON.findall(README.read_text(encoding="utf-8"))[number]
-    done = subprocess.run([sys.executable, "-c", block], cwd=tmp_path, capture_output=True, text=True, check=False)
+    done = subprocess.run(
+        [sys.executable, "-c", block], cwd=tmp_path, capture_output=True, text=True, check=False
+    )
 
     assert done.returncode == 0, done.stderr
 

@@ -478,6 +478,17 @@ class Network:
         """One measure, a float in the unit of the measures table; see `rcnet.claims.measure`."""
         return _analysis("rcnet.claims", "measure")(self, name, of, **options)  # type: ignore[no-any-return]
 
+    # ------------------------------------------------------------------ users of PySpice
+
+    def to_pyspice(self) -> Any:
+        """The network as a PySpice `Circuit`; see `rcnet.netlist.pyspice.to_pyspice`."""
+        return _analysis("rcnet.netlist.pyspice", "to_pyspice")(self)
+
+    @classmethod
+    def from_pyspice(cls, circuit: Any) -> Network:
+        """A network from a PySpice `Circuit`; see `rcnet.netlist.pyspice.from_pyspice`."""
+        return _analysis("rcnet.netlist.pyspice", "from_pyspice")(circuit)  # type: ignore[no-any-return]
+
 
 def _analysis(room: str, name: str) -> Any:
     # The analyses live in rooms above this one. A method looks its own up when called, so that no import

@@ -50,7 +50,9 @@ def judge(circuit: Circuit) -> tuple[ClaimResult, ...]:
 def _judge(circuit: Circuit, claim: Claim) -> ClaimResult:
     hand, hand_why = _hand(circuit, claim)
     try:
-        exact = evaluate(circuit.network, claim.measure.name, " ".join(claim.of) or None, _options(circuit, claim))
+        exact = evaluate(
+            circuit.network, claim.measure.name, " ".join(claim.of) or None, _options(circuit, claim)
+        )
     except UndecidedError as exc:
         why = f"{exc.message} {exc.remedy}" if exc.remedy else exc.message
         return ClaimResult(claim, None, hand, "undecided", why=why, hand_why=hand_why)

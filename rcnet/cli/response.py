@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -23,6 +22,7 @@ if TYPE_CHECKING:
     epilog=examples(
         "rcnet response noise-filter.rc.toml --at '1 kHz' --at '50 Hz'",
         "rcnet response noise-filter.rc.toml --from 10 --to '1 MHz' -o response.csv",
+        "rcnet response valve-positioner.rc.toml --until '50 ms' --points 11",
     ),
 )
 @file_argument
@@ -36,10 +36,12 @@ if TYPE_CHECKING:
 @click.option("--to", "stop", metavar="F", help="Highest frequency.")
 @click.option("--per-decade", type=click.IntRange(1, 100_000), help="Points a decade.")
 @click.option("--at", "at", multiple=True, metavar="F", help="A single frequency; may be repeated.")
+@click.option("--until", metavar="T", help="Give the waveform from t = 0 to this time, as '5 ms'.")
+@click.option("--points", type=click.IntRange(2), help="How many times, evenly spaced.  [default: 201]")
 def command(
-    file: str, as_json: bool, as_csv: bool, output: str | None, nodes: tuple[str, ...], **sweep: Any
+    file: str, as_json: bool, as_csv: bool, output: str | None, nodes: tuple[str, ...], **wanted: Any
 ) -> int:
-    """Give the exact response of a circuit, per unit of its source."""
+    """Give the exact response of a circuit, or its waveforms."""
     from ..curves import write_csv
     from ..loading import load
     from ..report.document import response_document
@@ -50,7 +52,7 @@ def command(
         raise click.UsageError("--json does not go with --csv.")
     as_text = None if output is None else _writer(output)
     circuit = load(file)
-    curves = _curves(circuit, nodes, _axis(circuit, **sweep))
+    curves = _asked(circuit, nodes, **wanted)
     if output is not None and as_text is not None:
         write_file(output, as_text(curves))
     if as_json:
@@ -76,54 +78,29 @@ def _writer(output: str) -> Callable[[Curves], str]:
     raise InputError(what, file=output, remedy="Let the name end in .csv or .json.")
 
 
-def _axis(
-    circuit: Circuit, start: str | None, stop: str | None, per_decade: int | None, at: tuple[str, ...]
-) -> list[float]:
-    from ..values import parse_quantity
+def _asked(
+    circuit: Circuit,
+    nodes: tuple[str, ...],
+    *,
+    start: str | None,
+    stop: str | None,
+    per_decade: int | None,
+    at: tuple[str, ...],
+    until: str | None,
+    points: int | None,
+) -> Curves:
+    """The curves along time where times are asked for, else along frequency."""
+    from .. import answers
 
-    if not at:
-        return _sweep(circuit, start, stop, per_decade)
-    if start or stop or per_decade:
-        raise InputError(
-            "--at does not go with --from, --to or --per-decade.", remedy="Give one or the other."
-        )
-    points = sorted({parse_quantity(text, "Hz", "--at") for text in at})
-    if points[0] < 0 or not math.isfinite(points[-1]):
-        raise InputError("--at is no finite frequency from zero up.", remedy="Give hertz, as 1 kHz.")
-    return points
-
-
-def _sweep(circuit: Circuit, start: str | None, stop: str | None, per_decade: int | None) -> list[float]:
-    """The frequencies asked for; what the options leave open is as in the circuit's own ac analysis."""
-    from ..circuit import Sweep
-    from ..circuit.circuit_file import checked_sweep
-    from ..handover import with_analyses
-    from ..netlist import frequencies
-    from ..values import parse_quantity
-
-    own = with_analyses(circuit).analyses.ac
-    if own is None and not (start and stop):
-        raise InputError("the circuit asks for no ac analysis.", remedy="Give --from and --to.")
-    sweep = own or Sweep(1.0, 1.0, 20)
-    if start or stop or per_decade:
-        sweep = Sweep(
-            parse_quantity(start, "Hz", "--from") if start else sweep.start,
-            parse_quantity(stop, "Hz", "--to") if stop else sweep.stop,
-            per_decade or (sweep.points if sweep.kind == "dec" else 20),
-        )
-        sweep = checked_sweep(sweep, "the sweep")
-    return [float(point) for point in frequencies(sweep)]
-
-
-def _curves(circuit: Circuit, nodes: tuple[str, ...], axis: list[float]) -> Curves:
-    import numpy as np
-
-    from ..curves import Curve, Curves
-
-    named = list(nodes) or ([" ".join(circuit.output)] if circuit.output else list(circuit.network.nodes[1:]))
-    values = circuit.network.response(axis, named)
-    curves = [
-        Curve(f"v({','.join(name.split())})", "ac", np.asarray(axis), values[row], "1")
-        for row, name in enumerate(named)
-    ]
-    return Curves("exact", tuple(curves), circuit.title)
+    timed = bool(until or points)
+    kinds = {"--at": bool(at), "--from, --to or --per-decade": bool(start or stop or per_decade)}
+    given = [name for name, present in {**kinds, "--until or --points": timed}.items() if present]
+    if len(given) > 1:
+        raise InputError(f"{given[0]} does not go with {given[1]}.", remedy="Give one or the other.")
+    if timed:
+        return answers.time_curves(circuit, nodes, answers.even_times(until, points or 201))
+    if at:
+        return answers.response_curves(circuit, nodes, answers.listed_frequencies(at))
+    return answers.response_curves(
+        circuit, nodes, answers.swept_frequencies(circuit, start, stop, per_decade)
+    )

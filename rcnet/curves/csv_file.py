@@ -87,11 +87,11 @@ class _Table:
         return np.ascontiguousarray(self.numbers[:, index])
 
     def uncertainty(self, index: int) -> FloatArray:
-        """How far each cell may lie from what was meant, by the digits of its column.
+        """How far each cell may lie from what was meant, by its column's digits.
 
         Half a unit of the last decimal place where every cell has the same number of decimals (zeros kept, so
-        the column was printed with a fixed number); else the smaller of that and half a unit of the last of the
-        column's most significant digits. 0 where the column has full doubles.
+        the column was printed with a fixed number); else the smaller of that and half a unit of the last of
+        the column's most significant digits. 0 where the column has full doubles.
         """
         values = self.column(index)
         digits = int(self.significant[index])
@@ -258,7 +258,9 @@ def _body(text: str, header: _Header, source: str) -> tuple[_Table, tuple[str, .
         )
     cut = "The last line has no end; if the file was cut short there, its last number is wrong."
     remarks = (cut,) if stop == len(text) else ()
-    return _Table(source, header, np.concatenate(blocks), decimals, fewest, significant, has_exponent), remarks
+    return _Table(
+        source, header, np.concatenate(blocks), decimals, fewest, significant, has_exponent
+    ), remarks
 
 
 def _chunks(text: str, header: _Header, stop: int) -> Iterator[tuple[int, str]]:

@@ -153,7 +153,7 @@ def body(circuit: Circuit, names: Names) -> list[str]:
     lines: list[str] = []
     for part in network.parts:
         source = network.sources.get(part.name)
-        lines += wrap(_part_line(part, names) if source is None else _source_line(source, names, circuit))
+        lines += wrap(_part_line(part, names) if source is None else source_line(source, names, circuit))
     settings = [f"{key}={value}" if value else key for key, value in circuit.options.items()]
     if circuit.conditions.nominal != 27.0:
         settings.append(f"temp={write_spice_number(circuit.conditions.nominal)}")
@@ -169,7 +169,8 @@ def _part_line(part: Part, names: Names) -> str:
     return " ".join([*words, write_spice_number(part.value)])
 
 
-def _source_line(source: Source, names: Names, circuit: Circuit) -> str:
+def source_line(source: Source, names: Names, circuit: Circuit) -> str:
+    """An independent source's line: name, nodes, DC, AC, waveform; not yet wrapped."""
     words = [names.parts[source.name], *(names.nodes[node] for node in source.nodes)]
     words += ["DC", write_spice_number(source.operating_value)]
     if source.ac is not None:

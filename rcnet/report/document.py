@@ -142,7 +142,9 @@ def _number(value: complex | float) -> Any:
 
 
 def response_document(curves: list[Curve]) -> dict[str, Any]:
-    """The document of `response`: curves of one axis."""
+    """The document of `response`: curves of one axis, frequency or time."""
+    if curves and curves[0].analysis == "transient":
+        return {"time": curves[0].axis.tolist(), "curves": {c.name: c.values.tolist() for c in curves}}
     values = {
         curve.name: {"real": curve.values.real.tolist(), "imag": curve.values.imag.tolist()}
         for curve in curves

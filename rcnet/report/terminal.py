@@ -355,21 +355,31 @@ def show_total(words: Sequence[str], out: Console) -> None:
 
 
 def show_response(curves: Sequence[Curve], out: Console) -> None:
-    """Curves of one axis as a table of dB and degrees; side by side as many as fit."""
-    columns = [_column("frequency", [format_quantity(f, "Hz", 6) for f in curves[0].axis.tolist()])]
+    """Curves of one axis as a table, of dB and degrees or of volts; side by side as many as fit."""
+    timed = curves[0].analysis == "transient"
+    heading, unit = ("time", "s") if timed else ("frequency", "Hz")
+    columns = [_column(heading, [format_quantity(x, unit, 6) for x in curves[0].axis.tolist()])]
     block: list[list[str]] = []
     for curve in curves:
-        values = curve.values.tolist()
-        pair = [
-            _column(f"{curve.name} dB", [f"{20 * math.log10(abs(v)):.4f}" if v else "-inf" for v in values]),
-            _column("deg", [f"{math.degrees(math.atan2(v.imag, v.real)):.3f}" if v else "-" for v in values]),
-        ]
+        pair = _waveform_column(curve) if timed else _phasor_columns(curve)
         if block and sum(len(column[0]) + 2 for column in columns + block + pair) - 2 > out.width:
             _show_rows(columns + block, out)
             out.print()
             block = []
         block += pair
     _show_rows(columns + block, out)
+
+
+def _waveform_column(curve: Curve) -> list[list[str]]:
+    return [_column(curve.name, [format_quantity(value, "V", 6) for value in curve.values.tolist()])]
+
+
+def _phasor_columns(curve: Curve) -> list[list[str]]:
+    values = curve.values.tolist()
+    return [
+        _column(f"{curve.name} dB", [f"{20 * math.log10(abs(v)):.4f}" if v else "-inf" for v in values]),
+        _column("deg", [f"{math.degrees(math.atan2(v.imag, v.real)):.3f}" if v else "-" for v in values]),
+    ]
 
 
 def _column(heading: str, cells: list[str]) -> list[str]:

@@ -26,7 +26,9 @@ def read_bytes(path: str | os.PathLike[str], limit: int = MAX_RESULTS_BYTES) -> 
     than `limit` bytes. Raises InputError.
     """
     name = os.fspath(path)
-    flags = os.O_RDONLY | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0) | getattr(os, "O_CLOEXEC", 0)
+    flags = (
+        os.O_RDONLY | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0) | getattr(os, "O_CLOEXEC", 0)
+    )
     try:
         descriptor = os.open(name, flags)
     except (OSError, ValueError) as exc:
@@ -36,7 +38,9 @@ def read_bytes(path: str | os.PathLike[str], limit: int = MAX_RESULTS_BYTES) -> 
         os.close(descriptor)
         if stat.S_ISDIR(status.st_mode):
             raise InputError("this is a folder, not a file.", file=name, remedy="Name a file inside it.")
-        raise InputError("this is a device, a pipe or a socket.", file=name, remedy="Only ordinary files are read.")
+        raise InputError(
+            "this is a device, a pipe or a socket.", file=name, remedy="Only ordinary files are read."
+        )
     with os.fdopen(descriptor, "rb") as handle:
         if status.st_size > limit:
             raise InputError(
@@ -60,14 +64,20 @@ def read_text(path: str | os.PathLike[str], limit: int = MAX_TEXT_BYTES) -> str:
     if b"\0" in data:
         line = data.count(b"\n", 0, data.index(b"\0")) + 1
         raise InputError(
-            "the file holds a NUL byte, so it is not text.", file=name, line=line, remedy="Save it as UTF-8 text."
+            "the file holds a NUL byte, so it is not text.",
+            file=name,
+            line=line,
+            remedy="Save it as UTF-8 text.",
         )
     try:
         return data.decode("utf-8-sig")
     except UnicodeDecodeError as exc:
         line = data.count(b"\n", 0, exc.start) + 1
         raise InputError(
-            f"byte 0x{data[exc.start]:02x} is not UTF-8.", file=name, line=line, remedy="Save the file as UTF-8 text."
+            f"byte 0x{data[exc.start]:02x} is not UTF-8.",
+            file=name,
+            line=line,
+            remedy="Save the file as UTF-8 text.",
         ) from exc
 
 

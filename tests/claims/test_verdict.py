@@ -152,7 +152,7 @@ def test_undecided(case: str) -> None:
 
 
 def test_noise_is_that_of_the_circuits_temperature() -> None:
-    """All the noise of one RC is sqrt(kT/C) (Nyquist 1928), T being the temperature the circuit file names."""
+    """All the noise of one RC is sqrt(kT/C) (Nyquist 1928), T the temperature the circuit file names."""
     claim = 'measure = "noise"\nfrom = 0\nto = inf\nat_most = "1 mV"'
     for celsius in (27, 85):
         got = result(claim, head=f"{HEAD}[conditions]\ntemperature = {celsius}\n")

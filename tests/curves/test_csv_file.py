@@ -175,7 +175,7 @@ RESOLUTIONS = {
 
 @pytest.mark.parametrize("case", RESOLUTIONS)
 def test_resolution_of_a_real_column(case: str) -> None:
-    """Half a unit of the last decimal where all have as many; else the smaller of that and the last digit's."""
+    """Half a unit of the last decimal where all have as many; else the smaller of the two."""
     cells, expected = RESOLUTIONS[case]
     curve = _one("time,v(out)\n" + "".join(f"{n},{cell}\n" for n, cell in enumerate(cells)))
     if expected is None:
