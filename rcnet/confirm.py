@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
 
-from .check import check
+from .check import Check, check
 from .circuit import Circuit
 from .compare import compare
 from .confirmation import Confirmation
@@ -45,11 +45,9 @@ def confirm(
     """
     whole = with_analyses(circuit)
     with _kept_in(folder) as kept:
-        done = check(whole)
-        if done.errors and not anyway:
+        done, written = _checked_and_written(whole, kept, anyway=anyway)
+        if written is None:
             return Confirmation(done, None, None, None, None)
-        written = sealed_netlist(whole, done, anyway=anyway)
-        kept.keep("netlist.cir", written.text)
         opinion = _asked(written, kept, which, timeout, runner)
         comparison = None
         if opinion is not None:
@@ -69,11 +67,9 @@ def simulate(
     """
     whole = with_analyses(circuit)
     with _kept_in(folder) as kept:
-        done = check(whole)
-        if done.errors and not anyway:
+        done, written = _checked_and_written(whole, kept, anyway=anyway)
+        if written is None:
             return Confirmation(done, None, None, None, None)
-        written = sealed_netlist(whole, done, anyway=anyway)
-        kept.keep("netlist.cir", written.text)
         opinion = _asked(written, kept, which, timeout, None)
         return Confirmation(done, written, opinion, None, kept.path, tuple(kept.names))
 
@@ -83,6 +79,16 @@ def forget(folder: Path) -> None:
     if folder.is_dir():
         for name in RESULT_FILES:
             remove_file(folder / name)
+
+
+def _checked_and_written(whole: Circuit, kept: _Folder, *, anyway: bool) -> tuple[Check, Written | None]:
+    """What was found, and the netlist, kept; None for it where errors forbid it."""
+    done = check(whole)
+    if done.errors and not anyway:
+        return done, None
+    written = sealed_netlist(whole, done, anyway=anyway)
+    kept.keep("netlist.cir", written.text)
+    return done, written
 
 
 def _asked(
