@@ -27,6 +27,11 @@ def rendered(block: str, folder: Path) -> str:
     return "\n".join(lines) + "\n"
 
 
+def _without_rounding(block: str) -> str:
+    """Where the last digits differ most, and by how much, depends on the processor."""
+    return re.sub(r"^.*\(rounding\)$", "(rounding)", block, flags=re.MULTILINE)
+
+
 def _output(command: str, folder: Path) -> list[str]:
     words = command.split()
     assert words[0] == "rcnet", "only rcnet is run from the README"
@@ -48,7 +53,7 @@ def test_console_block_shows_what_happens(number: int, tmp_path: Path) -> None:
     """Every command in the README prints what stands below it."""
     block = _CONSOLE.findall(README.read_text(encoding="utf-8"))[number]
 
-    assert rendered(block, tmp_path) == block
+    assert _without_rounding(rendered(block, tmp_path)) == _without_rounding(block)
 
 
 @pytest.mark.parametrize("number", range(len(_PYTHON.findall(README.read_text(encoding="utf-8")))))
