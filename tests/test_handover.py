@@ -248,7 +248,7 @@ DEFECTS = {
     "digits lost": ("write_spice_number", lambda value: f"{value:.3g}", "R1"),
     "node": ("_part_line", lambda part, names: f"{part.name} in 0 1233.3", "R1"),
     "part dropped": ("_part_line", lambda part, names: "* gone", "the number of parts"),
-    "source": ("_source_line", lambda source, names, circuit: "Vin in 0 DC 0 AC 2 90", "Vin"),
+    "source": ("source_line", lambda source, names, circuit: "Vin in 0 DC 0 AC 2 90", "Vin"),
     "waveform": ("_waveform", lambda source, circuit: "SIN(0 1 51)", "Vin"),
     "analysis": ("analysis_lines", lambda circuit, names, analysis: [".ac dec 3 1 10"], "an analysis"),
     "nonsense": ("_part_line", lambda part, names: f"{part.name} in", "cannot be read back"),
