@@ -10,8 +10,8 @@ import os
 import re
 import subprocess
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
-from functools import reduce
+from dataclasses import dataclass, field
+from functools import partial, reduce
 from itertools import pairwise
 from pathlib import Path
 from typing import Any
@@ -47,6 +47,8 @@ class Outside:
     peak: where the response is greatest, rad/s; 0 and inf stand for the limits
     edges: an interval in Hz that holds each half-power frequency; part: one whose change shows
     seen: the voltage compared with ngspice where it is not the output, and its name
+    kelvin: the temperature of its resistors; step: its step response over the final value, where that has a
+        closed form; more: measures that need more than the response, by name
     """
 
     values: Values
@@ -57,6 +59,9 @@ class Outside:
     edges: Mapping[str, tuple[float, float]]
     part: str
     seen: tuple[str, Function] | None = None
+    kelvin: str = "300.15"
+    step: Callable[[Any], Any] | None = None
+    more: Mapping[str, Callable[[Values, Mapping[str, Any]], Any]] = field(default_factory=dict)
 
 
 # ---------------------------------------------------------------------- two-port chains
@@ -107,12 +112,13 @@ def twin_t(s: Any, p: Values) -> tuple[Any, Any, Any]:
     """y11, y21 and y22 of the twin-T: two tees in parallel, whose admittances add."""
     total = [mpmath.mpf(0)] * 3
     tees = [
-        (p["R1"], p["R2"], 1 / (s * p["C3"])),
-        (1 / (s * p["C1"]), 1 / (s * p["C2"]), p["R3"]),
+        (1 / mpmath.mpf(p["R1"]), 1 / mpmath.mpf(p["R2"]), s * p["C3"]),
+        (s * p["C1"], s * p["C2"], 1 / mpmath.mpf(p["R3"])),
     ]
     for a, b, c in tees:
-        d = a * b + a * c + b * c
-        total = [x + y for x, y in zip(total, ((b + c) / d, -c / d, (a + c) / d), strict=True)]
+        star = a + b + c
+        delta = a * (b + c) / star, -a * b / star, b * (a + c) / star
+        total = [x + y for x, y in zip(total, delta, strict=True)]
     return total[0], total[1], total[2]
 
 
@@ -153,8 +159,186 @@ def leak_peak(p: Values) -> Any:
     return 1 / mpmath.sqrt(p["C1"] * p["C2"] * (p["R1"] * (p["Rmic"] + bias) + p["Rmic"] * bias))
 
 
+# ---------------------------------------------------------------------- noise, waveforms, discharge
+
+BOLTZMANN = mpmath.mpf("1.380649e-23")  # J/K, exact (SI, 2019)
+LINE = 50 * 8.2 * 50 * 4.7e-9  # total R times total C of the cable, s
+
+
+def nyquist(back: Function, p: Values, kelvin: Any, low: Any, high: Any) -> Any:
+    """Rms noise of a passive port, 4kT times the area under Re Z (H. Nyquist, Phys. Rev. 32:110-113, 1928).
+
+    Integrated in the logarithm of the frequency, by Gauss's rule in pieces no wider than two. Zero and
+    infinity are put where 1e-13 of the area is beyond them.
+    """
+    begin = mpmath.log(low) if low else mpmath.mpf(-24)
+    end = mpmath.log(high) if high != mpmath.inf else mpmath.mpf(40)
+    edges = mpmath.linspace(begin, end, int(mpmath.ceil((end - begin) / 2)) + 1)
+    with mpmath.workdps(20):
+        area = mpmath.quad(
+            lambda x: mpmath.re(back(2j * mpmath.pi * mpmath.exp(x), p)) * mpmath.exp(x),
+            edges,
+            method="gauss-legendre",
+            maxdegree=4,
+        )
+    return mpmath.sqrt(4 * BOLTZMANN * kelvin * area)
+
+
+def buffered_noise(p: Values, options: Mapping[str, Any]) -> Any:
+    """Each section's k T/C, less what the sections after it take away.
+
+    The areas under 1/(1 + x^2)^n, n = 1, 2, 3, are to one another as 1, 1/2 and 3/8.
+    """
+    assert (options["from"], options["to"]) == (0.0, np.inf)
+    return mpmath.sqrt(mpmath.mpf(15) / 8 * BOLTZMANN * mpmath.mpf("300.15") / p["C3"])
+
+
+def band_pass_slowest(p: Values, options: Mapping[str, Any]) -> Any:
+    """The greater root of tau^2 - (R1 C1 + R2 C2 + R1 C2) tau + R1 C1 R2 C2."""
+    one, two = p["R1"] * p["C1"], p["R2"] * p["C2"]
+    total = one + two + p["R1"] * p["C2"]
+    return (total + mpmath.sqrt(mpmath.mpf(total) ** 2 - 4 * one * two)) / 2
+
+
+def cable_step(time: Any) -> Any:
+    """The step response of fifty equal sections (A. M. Morgan-Voyce, IRE Trans. CT-6:279-296, 1959)."""
+    n, rc, missing = 50, mpmath.mpf(LINE) / 2500, mpmath.mpf(0)
+    for k in range(1, n + 1):
+        half = (2 * k - 1) * mpmath.pi / (2 * n + 1) / 2
+        decay = mpmath.exp(-4 * mpmath.sin(half) ** 2 * time / rc)
+        missing -= (-1) ** k * 2 * mpmath.cos(half) ** 2 / ((2 * n + 1) * mpmath.sin(half)) * decay
+    return 1 - missing
+
+
+class Square:
+    """The steady state of dx/dt = A x + b u, y = c x + d u, under a square wave with sloping edges.
+
+    In each of four stretches u runs straight, and (x, u, du/dt) is carried on by a matrix exponential.
+    """
+
+    def __init__(self, a: Any, b: Any, *wave: str) -> None:
+        """wave: low, high, frequency, duty, and the length of either edge, in decimal."""
+        low, high, hertz, duty, edge = map(mpmath.mpf, wave)
+        self.period = 1 / hertz
+        top = duty * self.period - edge
+        rate = (high - low) / edge
+        rest = self.period - 2 * edge - top
+        stretches = [(edge, low, rate), (top, high, 0), (edge, high, -rate), (rest, low, 0)]
+        n = a.rows
+        self.matrix = mpmath.zeros(n + 2)
+        for row in range(n):
+            for column in range(n):
+                self.matrix[row, column] = a[row, column]
+            self.matrix[row, n] = b[row]
+        self.matrix[n, n + 1] = 1
+        free, once = mpmath.zeros(n, 1), mpmath.eye(n)
+        for length, u, slope in stretches:
+            free = self.on(free, u, slope, length)[:n, 0]
+            once = mpmath.expm(a * length) * once
+        x = mpmath.lu_solve(mpmath.eye(n) - once, free)
+        self.stretches = []
+        for length, u, slope in stretches:
+            self.stretches.append((length, self.on(x, u, slope, 0)))
+            x = self.on(x, u, slope, length)[:n, 0]
+
+    def on(self, x: Any, u: Any, slope: Any, time: Any) -> Any:
+        """(x, u, du/dt) after some time."""
+        return mpmath.expm(self.matrix * time) * mpmath.matrix([*x, u, slope])
+
+    def extremes(self, c: Any) -> tuple[Any, Any]:
+        """The least and the greatest of y = c (x, u, 0): at a corner, or where y turns between two."""
+        found: list[Any] = []
+
+        def rate(t: Any, z: Any) -> Any:
+            return (c * self.matrix * mpmath.expm(self.matrix * t) * z)[0]
+
+        for length, z in self.stretches:
+            ends = [mpmath.mpf(0), length]
+            if rate(ends[0], z) * rate(ends[1], z) < 0:
+                turn = mpmath.findroot(partial(rate, z=z), tuple(ends), solver="anderson", tol=1e-30)
+                ends.append(turn)
+            found.extend((c * mpmath.expm(self.matrix * t) * z)[0] for t in ends)
+        return min(found), max(found)
+
+    def mean_square(self, c: Any) -> Any:
+        """The mean of y^2, from one exponential a stretch (C. F. Van Loan, IEEE AC-23:395-404, 1978)."""
+        n, total = self.matrix.rows, mpmath.mpf(0)
+        square = c.T * c
+        for length, z in self.stretches:
+            block = mpmath.zeros(2 * n)
+            for row in range(n):
+                for column in range(n):
+                    block[row, column] = -self.matrix[column, row]
+                    block[row, n + column] = square[row, column]
+                    block[n + row, n + column] = self.matrix[row, column]
+            grown = mpmath.expm(block * length)
+            total += (z.T * grown[n:, n:].T * grown[:n, n:] * z)[0]
+        return total / self.period
+
+
+def valve_ripple(p: Values, options: Mapping[str, Any]) -> Any:
+    """Peak to peak at the positioner: the states are the voltages of C1 and C2."""
+    g1, g2, load = (1 / mpmath.mpf(p[name]) for name in ("R1", "R2", "Rload"))
+    a = mpmath.matrix(
+        [[-(g1 + g2) / p["C1"], g2 / p["C1"]], [g2 / p["C2"], -(g2 + load) / p["C2"]]],
+    )
+    wave = Square(a, mpmath.matrix([g1 / p["C1"], 0]), "0", "3.3", "1e3", "0.4", "1e-6")
+    least, greatest = wave.extremes(mpmath.matrix([[0, 1, 0, 0]]))
+    return greatest - least
+
+
+def reed_discharge(p: Values, options: Mapping[str, Any]) -> Any:
+    """From the greatest voltage that C1 reaches, through Rin alone: R C ln(V0/V)."""
+    assert options["part"] == "C1"
+    source, leak = p["Rpull"] + p["R1"], p["Rin"]
+    a = mpmath.matrix([[-(1 / mpmath.mpf(source) + 1 / mpmath.mpf(leak)) / p["C1"]]])
+    wave = Square(a, mpmath.matrix([1 / (source * p["C1"])]), "0", "3.3", "25", "0.5", "10e-6")
+    return leak * p["C1"] * mpmath.log(wave.extremes(mpmath.matrix([[1, 0, 0]]))[1] / options["to"])
+
+
+def sender_discharge(p: Values, options: Mapping[str, Any]) -> Any:
+    """From the level after the step, 7 V, through Rload alone."""
+    assert options["part"] == "C1"
+    start = 7 * mpmath.mpf(p["Rload"]) / (p["Rsender"] + p["R1"] + p["Rload"])
+    return p["Rload"] * (p["C1"] + p["Cload"]) * mpmath.log(start / options["to"])
+
+
+def shunt_wave(p: Values) -> tuple[Square, Any]:
+    """The shunt's filter at 20 kHz, its states the voltages of p and n, and the row that gives that of hi."""
+    g = {name: 1 / mpmath.mpf(p[name]) for name in ("Rshunt", "R1", "R2", "Ramp")}
+    c1, c2, c3 = (mpmath.mpf(p[name]) for name in ("C1", "C2", "C3"))
+    at_hi = g["Rshunt"] + g["R1"]  # hi = (u + g1 p)/at_hi
+    into_p = g["R1"] - g["R1"] ** 2 / at_hi
+    storing = mpmath.matrix([[c1 + c2, -c1], [-c1, c1 + c3]]) ** -1
+    leading = mpmath.matrix([[into_p + g["Ramp"], -g["Ramp"]], [-g["Ramp"], g["R2"] + g["Ramp"]]])
+    driven = mpmath.matrix([g["R1"] / at_hi, 0])
+    wave = Square(-storing * leading, storing * driven, "0.9", "1.5", "20e3", "0.5", "1e-6")
+    return wave, mpmath.matrix([[g["R1"] / at_hi, 0, 1 / at_hi, 0]])
+
+
+def shunt_ripple(p: Values, options: Mapping[str, Any]) -> Any:
+    """Peak to peak from p to n."""
+    least, greatest = shunt_wave(p)[0].extremes(mpmath.matrix([[1, -1, 0, 0]]))
+    return greatest - least
+
+
+def shunt_heat(p: Values, options: Mapping[str, Any]) -> Any:
+    """The mean square of hi over Rshunt."""
+    assert options["part"] == "Rshunt"
+    wave, hi = shunt_wave(p)
+    return wave.mean_square(hi) / p["Rshunt"]
+
+
+def divider_voltage(p: Values, options: Mapping[str, Any]) -> Any:
+    """What R1 has of the link's 325 V."""
+    assert options["part"] == "R1"
+    return 325 * p["R1"] / (p["R1"] + par(mpmath.mpf(p["R2"]), p["Rlogger"]))
+
+
 CABLE = {f"R{k}": 8.2 for k in range(1, 51)} | {f"C{k}": 4.7e-9 for k in range(1, 51)}
 THREE = {"R1": 1e4, "C1": 15e-9, "R2": 1e4, "C2": 15e-9, "R3": 1e4, "C3": 15e-9}
+
+LEAK = chain(leak_chain)
 
 OUTSIDE: dict[str, Outside] = {
     "noise-filter": Outside(
@@ -175,6 +359,7 @@ OUTSIDE: dict[str, Outside] = {
         peak=lambda p: 0,
         edges={"upper": (0.1, 1e3)},
         part="Rsender",
+        more={"discharge_time": sender_discharge},
     ),
     "valve-positioner": Outside(
         {"R1": 4.7e3, "C1": 1e-6, "R2": 47e3, "C2": 100e-9, "Rload": 1e6},
@@ -184,6 +369,7 @@ OUTSIDE: dict[str, Outside] = {
         peak=lambda p: 0,
         edges={"upper": (0.1, 1e4)},
         part="R2",
+        more={"ripple": valve_ripple},
     ),
     "reed-debounce": Outside(
         {"Rpull": 22e3, "R1": 1e3, "C1": 100e-9, "Rin": 10e6},
@@ -191,13 +377,20 @@ OUTSIDE: dict[str, Outside] = {
         peak=lambda p: 0,
         edges={"upper": (1, 1e4)},
         part="C1",
+        more={"discharge_time": reed_discharge},
     ),
     "leak-microphone": Outside(
         {"Rmic": 2.2e3, "C1": 22e-9, "Rup": 220e3, "Rdown": 220e3, "R1": 10e3, "C2": 1e-9},
-        **chain(leak_chain),
+        **LEAK,
         peak=leak_peak,
         edges={"lower": (1, 800), "upper": (1100, 1e6)},
         part="Rdown",
+        kelvin="283.15",
+        more={
+            # 5 mV at 700 Hz on the capsule; C1 keeps its resting level off the output.
+            "harmonic": lambda p, options: abs(LEAK["gain"](1400j * mpmath.pi, p)) / 200,
+            "mean": lambda p, options: mpmath.mpf("3.3") * p["Rdown"] / (p["Rup"] + p["Rdown"]),
+        },
     ),
     "band-pass": Outside(
         {"C1": 100e-9, "R1": 15e3, "R2": 10e3, "C2": 10e-9},
@@ -212,6 +405,7 @@ OUTSIDE: dict[str, Outside] = {
         peak=lambda p: 1 / mpmath.sqrt(p["C1"] * p["R1"] * p["C2"] * p["R2"]),
         edges={"lower": (1, 400), "upper": (420, 1e5)},
         part="R1",
+        more={"time_constant": band_pass_slowest},
     ),
     "buffered-cascade": Outside(
         THREE,
@@ -221,6 +415,7 @@ OUTSIDE: dict[str, Outside] = {
         peak=lambda p: 0,
         edges={"upper": (10, 1e4)},
         part="R2",
+        more={"noise": buffered_noise},
     ),
     "unbuffered-cascade": Outside(
         THREE,
@@ -263,6 +458,7 @@ OUTSIDE: dict[str, Outside] = {
         peak=lambda p: 0,
         edges={"upper": (10, 1e5)},
         part="C25",
+        step=cable_step,
     ),
     "compensated-divider": Outside(
         {"R1": 8.2e6, "C1": 22e-12, "R2": 1e6, "C2": 98e-12, "Rlogger": 10e6, "Clogger": 100e-12},
@@ -275,6 +471,10 @@ OUTSIDE: dict[str, Outside] = {
         peak=lambda p: mpmath.inf,
         edges={},
         part="C2",
+        more={
+            "peak_voltage": divider_voltage,
+            "dissipation": lambda p, options: divider_voltage(p, options) ** 2 / p["R1"],
+        },
     ),
     "pump-current": Outside(
         {"Rshunt": 0.05, "R1": 1e3, "R2": 1e3, "C1": 100e-9, "C2": 10e-9, "C3": 10e-9, "Ramp": 200e3},
@@ -285,6 +485,7 @@ OUTSIDE: dict[str, Outside] = {
         edges={"upper": (10, 1e5)},
         part="C1",
         seen=("v(p)", lambda s, p: shunt_filter(s, p, (1, 0, 0))[1]),
+        more={"ripple": shunt_ripple, "dissipation": shunt_heat},
     ),
 }  # fmt: skip
 
@@ -342,8 +543,41 @@ class ByHand:
         """-H'/H at s; its real part is the group delay, and at zero the Elmore delay."""
         return -mpmath.diff(lambda x: self.o.gain(x, self.p), s) / self.o.gain(s, self.p)
 
+    def step(self, time: Any) -> Any:
+        """The step response over its final value: a closed form, or Laplace's inversion by Talbot's contour
+        (A. Talbot, J. Inst. Maths Applics 23:97-120, 1979).
+        """
+        if self.o.step is not None:
+            return self.o.step(time)
+        final = self.o.gain(mpmath.mpf(0), self.p)
+        return mpmath.invertlaplace(lambda s: self.o.gain(s, self.p) / s, time, method="talbot") / final
+
+    def reached(self, share: Any) -> Any:
+        """When the step response reaches a share of its final value.
+
+        Without zeros and with real poles it rises all the way (W. C. Elmore, J. Appl. Phys. 19:55-63, 1948).
+        The notch's dips, and passes each share above a half once on its way back, after its Elmore delay.
+        """
+        elmore = mpmath.re(self.slope(mpmath.mpf(0)))
+        between = (elmore * (1 if share > 0.8 else 0.01), 20 * elmore)
+        with mpmath.workdps(25):
+            # In the logarithm what is missing falls nearly straight.
+            return mpmath.findroot(
+                lambda t: mpmath.log((1 - self.step(t)) / (1 - share)),
+                between,
+                solver="anderson",
+                tol=1e-30,
+                maxsteps=60,
+            )
+
+    def noise(self, low: float, high: float) -> Any:
+        """The rms noise of the output, all resistors at one temperature."""
+        return nyquist(self.o.back, self.p, mpmath.mpf(self.o.kelvin), low, high)
+
     def measure(self, name: str, options: Mapping[str, Any]) -> float:
         """Any measure the starters claim."""
+        if name in self.o.more:
+            return float(self.o.more[name](self.p, options))
         at = mpmath.mpf(options.get("at", 0.0))
         s = 2j * mpmath.pi * at
         found = {
@@ -358,6 +592,10 @@ class ByHand:
             "input_impedance": lambda: abs(self.o.drive(s, self.p)),
             "output_impedance": lambda: abs(self.o.back(s, self.p)),
             "elmore_delay": lambda: mpmath.re(self.slope(mpmath.mpf(0))),
+            "delay": lambda: self.reached(mpmath.mpf("0.5")),
+            "rise_time": lambda: self.reached(mpmath.mpf("0.9")) - self.reached(mpmath.mpf("0.1")),
+            "settling_time": lambda: self.reached(1 - mpmath.mpf(options["band"])),
+            "noise": lambda: self.noise(options["from"], options["to"]),
         }[name]()
         return float(found)
 
@@ -381,10 +619,10 @@ class TestFile:
         assert passive == dict(OUTSIDE[name].values)
 
     def test_every_claim_holds_without_errors(self, name: str) -> None:
-        """Three to six claims, all hold; the only findings are the hand formulas meant to mislead."""
+        """Four to seven claims, all hold; the only findings are the hand formulas meant to mislead."""
         circuit = rcnet.load(STARTERS[name])
         done = rcnet.check(circuit)
-        assert 3 <= len(done.claims) <= 6
+        assert 4 <= len(done.claims) <= 7
         assert [result.verdict for result in done.claims] == ["holds"] * len(done.claims)
         assert [finding.code for finding in done.findings] == ["hand-misleads"] * (name in MISLEADING)
         assert all(MISLEADING[name] in finding.message for finding in done.findings)
@@ -447,7 +685,6 @@ class TestFile:
 
 # name: the starter, the measure and its options, the published value, relative tolerance.
 F1 = 1 / (2 * np.pi * 1e4 * 15e-9)  # of one section of the two cascades
-LINE = 50 * 8.2 * 50 * 4.7e-9  # total R times total C of the cable, s
 PUBLISHED: dict[str, tuple[str, str, dict[str, Any], float, float]] = {
     # Isolated equal sections: sqrt(2^(1/3) - 1) f1.
     "three sections apart": ("buffered-cascade", "cutoff", {}, 0.509824528533959 * F1, 1e-12),
@@ -462,6 +699,20 @@ PUBLISHED: dict[str, tuple[str, str, dict[str, Any], float, float]] = {
         2.38418346515 / (2 * np.pi * LINE),
         1e-11,
     ),
+    "10-90 % rise of three sections in a ladder": (
+        "unbuffered-cascade",
+        "rise_time",
+        {},
+        11.2775661424191 * 1.5e-4,
+        1e-12,
+    ),
+    "noise of three sections in a ladder, sqrt(kT/C)": (
+        "unbuffered-cascade",
+        "noise",
+        {"from_": 0, "to": np.inf},
+        np.sqrt(1.380649e-23 * 300.15 / 15e-9),
+        1e-12,
+    ),
     "Elmore delay of fifty lengths": ("instrument-cable", "elmore_delay", {}, LINE * 51 / 100, 1e-12),
     # W. Thomson 1855: the evenly distributed line, 0.387125842/(R C); fifty lengths are 2 % below.
     "distributed line": (
@@ -471,6 +722,8 @@ PUBLISHED: dict[str, tuple[str, str, dict[str, Any], float, float]] = {
         0.387125842025788656 / LINE,
         0.025,
     ),
+    "half of a step on the line": ("instrument-cable", "delay", {}, 0.378747838271396 * LINE, 0.025),
+    "10-90 % rise on the line": ("instrument-cable", "rise_time", {}, 0.900946091804982 * LINE, 0.025),
     # Unloaded CR network: H = -1/29 at 0.0649747334361397/(RC) = 955.5 Hz; here 1 Mohm loads it.
     "a factor of 29": ("phase-shift", "attenuation", {"at": 955.5}, 29.2479599579791, 2e-3),
     "half a turn": ("phase-shift", "phase", {"at": 955.5}, -180.0, 2e-3),

@@ -25,6 +25,8 @@ if TYPE_CHECKING:
 
 WIDTH = 80
 MOST_LISTED = 12  # curves or spans shown one by one; the JSON document holds them all
+# A hand value closer than this to the exact one is shown as the same: no part is made that well.
+SAME = {"dB": 1e-3, "deg": 1e-2, "share": 1e-4}
 ROUNDING = 1e-9  # a difference below this share of the value is told as such; its decibels say nothing
 
 # A word always says what a colour says.
@@ -152,22 +154,14 @@ def show_findings(findings: Iterable[Finding], out: Console) -> None:
 
 def show_claims(claims: Sequence[ClaimResult], out: Console) -> None:
     """Each claim: its verdict and what it says; below, what is exact, what was wanted, what the hand says."""
-    from rich.cells import cell_len
-
     if not claims:
         return
     margin = max(len(result.verdict) for result in claims) + 2
-    numbers = [_numbers(result) for result in claims]
-    widths = [max((cell_len(row[k]) for row in numbers if len(row) > k + 1), default=0) for k in range(2)]
-    for result, row in zip(claims, numbers, strict=True):
+    for result in claims:
         verdict = _word(result.verdict)
         verdict.pad_right(margin - len(result.verdict))
         _say(out, verdict, result.claim.says, indent=2, hang=margin)
-        aligned = "".join(cell + " " * (widths[k] - cell_len(cell) + 3) for k, cell in enumerate(row[:-1]))
-        if row and cell_len(aligned + row[-1]) + 2 + margin <= out.width:
-            out.print(_styled(" " * (2 + margin) + aligned + row[-1]), soft_wrap=True)
-        elif row:
-            _say(out, "; ".join(row), indent=2 + margin)
+        _say(out, "; ".join(_numbers(result)), indent=2 + margin)
         if result.why:
             _say(out, result.why, indent=2 + margin)
 
@@ -186,13 +180,15 @@ def _error_of_hand(result: ClaimResult) -> str:
     assert result.hand is not None
     if result.exact is None:
         return ""
-    if abs(result.hand - result.exact) <= ROUNDING * abs(result.exact):
+    off = result.hand - result.exact
+    unit = result.claim.measure.unit
+    if unit in ("dB", "deg"):
+        return " (the same)" if abs(off) < SAME[unit] else f" ({off:+.2g} {unit})"
+    if abs(off) <= SAME["share"] * abs(result.exact):
         return " (the same)"
-    if result.claim.measure.unit in ("dB", "deg"):
-        return f" ({result.hand - result.exact:+.2g})"
     if not result.exact:
         return ""
-    error = 100 * (result.hand / result.exact - 1)
+    error = 100 * off / result.exact
     return f" ({error:+.0f} %)" if 100 <= abs(error) < 1e5 else f" ({error:+.2g} %)"
 
 
