@@ -9,6 +9,7 @@ from .circuit import Circuit, Network
 from .compare import Comparison
 from .compare import compare as _compare
 from .curves import Curves
+from .errors import InputError
 from .handover import sealed_netlist
 from .netlist import network_of, parse_netlist
 from .system.files import write_file
@@ -32,4 +33,9 @@ def compare(circuit: Circuit | Network, curves: Curves) -> Comparison:
 
     Raises ResultsError where nothing in the results is about this circuit.
     """
+    if not isinstance(circuit, (Circuit, Network)) or not isinstance(curves, Curves):
+        raise InputError(
+            "compare takes a circuit and curves.",
+            remedy="Read them with rcnet.load and rcnet.read_results first.",
+        )
     return _compare(network_of(circuit), curves, who=Path(curves.source).name)

@@ -53,7 +53,7 @@ def confirm(
         if opinion is not None:
             from .report.document import comparison_document, to_json
 
-            comparison = compare(whole, opinion.curves, written.names, opinion.who)
+            comparison = compare(whole, opinion.curves, written.names, opinion.who, may_be_empty=True)
             kept.keep("comparison.json", to_json(comparison_document(comparison)))
         return Confirmation(done, written, opinion, comparison, kept.path, tuple(kept.names))
 

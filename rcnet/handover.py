@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from dataclasses import replace
-from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 
 import numpy as np
@@ -36,6 +35,8 @@ _MOST_PARTS = 5000  # up to here a look at all frequencies takes a moment only
 
 def package_version() -> str:
     """The version of rcnet that is running."""
+    from importlib.metadata import PackageNotFoundError, version
+
     try:
         return version("rcnet")
     except PackageNotFoundError:  # pragma: no cover - only from a folder that was never installed

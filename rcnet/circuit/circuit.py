@@ -138,6 +138,11 @@ class Circuit:
     lines: tuple[str, ...] = ()
 
     @property
+    def analysis(self) -> Analyses:
+        """What is asked of a simulator; the same as `analyses`, by the name of the circuit file's table."""
+        return self.analyses
+
+    @property
     def title(self) -> str:
         """The network's title."""
         return self.network.title

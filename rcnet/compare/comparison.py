@@ -5,7 +5,7 @@ from __future__ import annotations
 import cmath
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -20,6 +20,7 @@ from .allowance import DENSE_LIMIT, Float, Numbers, rounding_allowance
 from .fsv import Fsv, fsv
 
 Verdict = Literal["agree", "differ"]
+UNNAMED = "response"  # what a trace is called whose file names no node
 MOST_NODES_IN_LARGE = 16  # of a network too large to bound every node, this many are compared
 COARSE = 1e-3  # an allowance above this share of a value, a hundredth of a decibel, is worth telling
 
@@ -92,23 +93,64 @@ class Comparison:
 
     @property
     def verdict(self) -> Verdict:
-        """`agree` if every curve compared agrees."""
+        """`agree` if every curve compared agrees; so too where there was none to compare."""
         return "differ" if any(curve.verdict == "differ" for curve in self.curves) else "agree"
 
 
 def compare(
-    circuit: Circuit, curves: Curves, names: Names | None = None, who: str | None = None
+    circuit: Circuit,
+    curves: Curves,
+    names: Names | None = None,
+    who: str | None = None,
+    *,
+    may_be_empty: bool = False,
 ) -> Comparison:
     """Hold results against the exact curves, at the results' own points.
 
     names: the names used in the netlist the results come from; by default those `write` gives
     who: what the results are called in reports; by default where they come from
-    Raises ResultsError where nothing in the results is about this circuit, UnsolvableError where the circuit
-    has no solution to compare with.
+    may_be_empty: accept results of analyses that are not compared yet; they are listed as such
+    Results that differ, but agree per unit of the one source carrying ac (as rcnet writes responses), are said
+    to in a remark. Raises ResultsError where nothing in the results is about this circuit, UnsolvableError
+    where the circuit has no solution to compare with.
     """
+    driven = _compared(circuit, curves, names, who, may_be_empty)
+    unit = _unit(circuit)
+    if driven.verdict == "agree" or unit is None:
+        return driven
+    name, phasor = unit
+    if _compared(circuit, _times(curves, phasor), names, who, may_be_empty).verdict == "differ":
+        return driven
+    remark = f"with an ac value of 1 for {name}, as results per unit of the source have it, the two agree."
+    return replace(driven, remarks=(*driven.remarks, remark))
+
+
+def _unit(circuit: Circuit) -> tuple[str, complex] | None:
+    """The one source carrying ac and its phasor, where that is not simply one."""
+    driving = [source for source in circuit.network.sources.values() if source.ac]
+    return (driving[0].name, driving[0].phasor) if len(driving) == 1 and driving[0].phasor != 1 else None
+
+
+def _times(curves: Curves, factor: complex) -> Curves:
+    return replace(curves, curves=tuple(_scaled(curve, factor) for curve in curves))
+
+
+def _scaled(curve: Curve, factor: complex) -> Curve:
+    if curve.analysis != "ac":
+        return curve
+    values = np.asarray(curve.values * factor, dtype=np.complex128)
+    slack = None if curve.resolution is None else curve.resolution * abs(factor)
+    return replace(curve, values=values, resolution=slack)
+
+
+def _compared(
+    circuit: Circuit, curves: Curves, names: Names | None, who: str | None, may_be_empty: bool
+) -> Comparison:
     held = as_written(circuit)
-    targets = _Targets(held.network, names or safe_names(held.network))
+    targets = _Targets(held.network, names or safe_names(held.network), circuit.output)
     chosen, uncompared = _sorted_out(curves, targets)
+    if may_be_empty and all(curve.analysis not in ("ac", "operating point") for curve in curves):
+        return Comparison(circuit, who or curves.source, (), tuple(uncompared), curves.remarks)
     _require_about(held, curves, chosen)
     groups: dict[tuple[Analysis, bytes], list[_Pair]] = {}
     for pair in chosen:
@@ -121,7 +163,7 @@ def compare(
             uncompared += [Uncompared(curve.name, analysis, why) for curve, _ in kept]
         else:
             compared += _group(held.network, analysis, kept)
-    if not compared:
+    if not compared and not may_be_empty:
         raise ResultsError(
             f"nothing in the results can be compared: {uncompared[0].why}",
             file=curves.source,
@@ -173,8 +215,9 @@ _Pair = tuple[Curve, _Target]
 class _Targets:
     """Finds what a curve's name means: a node by the netlist's name or the circuit's own, case ignored."""
 
-    def __init__(self, network: Network, names: Names) -> None:
+    def __init__(self, network: Network, names: Names, output: Sequence[str]) -> None:
         self.network = network
+        self.output = output
         self.nodes = _lookup(names.nodes)
         self.parts = _lookup(names.parts)
 
@@ -185,6 +228,8 @@ class _Targets:
                 "noise": "noise is not compared yet.",
             }.get(curve.analysis, "this kind of plot is not compared.")
             return None, why
+        if curve.name == UNNAMED:
+            return self.unnamed()
         letter, _, inside = curve.name.lower().partition("(")
         words = [word.strip() for word in inside.rstrip(")").split(",")]
         if letter == "i" and len(words) == 1:
@@ -198,6 +243,13 @@ class _Targets:
         first, second = found[0] or 0, (found[1] or 0) if len(found) > 1 else 0
         label = ",".join(self.network.nodes[node or 0] for node in found)
         return _Target((first, second), name=f"v({label})"), ""
+
+    def unnamed(self) -> tuple[_Target | None, str]:
+        """A bench instrument's trace names no node; it is the output's."""
+        if not self.output:
+            return None, "the trace names no node, and the circuit no output."
+        ends = [self.network.node_index(node) for node in self.output]
+        return _Target((ends[0], ends[1] if len(ends) > 1 else 0), name=f"v({','.join(self.output)})"), ""
 
     def current(self, name: str) -> tuple[_Target | None, str]:
         row = self.parts.get(name)
@@ -357,6 +409,8 @@ def _judged(
     scale = np.where(sizes > 0, sizes, greatest)
     with np.errstate(over="ignore"):
         relative = np.minimum(distance / scale, np.finfo(float).max)
+    # Rounding beside an exact zero is no share of anything.
+    relative[(sizes == 0) & ~beyond] = 0.0
 
     def difference(k: int) -> Difference:
         return _difference(float(axis[k]), exact[k], other[k], float(relative[k]), float(allowed[k]))

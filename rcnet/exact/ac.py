@@ -355,16 +355,19 @@ def _impedance(network: Network, omega: Float, at: Callable[[Complex], Complex])
 def natural_frequencies(network: Network) -> Complex:
     """The natural frequencies, rad/s, of a network of moderate size, by a dense eigenproblem.
 
-    Good to about eight digits; it serves to place sample points, not to report numbers.
+    Good to about eight digits; it serves to place sample points, not to report numbers. Those that no double
+    holds are left out.
     """
     eqs = nodal.equations(network)
     if not 0 < eqs.size <= 300:
         return np.empty(0, dtype=np.complex128)
     constant, slope = eqs.dense(eqs.constant), eqs.dense(eqs.slope)
     shift = span_of(network).low
-    try:
-        inverse = np.linalg.eigvals(np.linalg.solve(constant + shift * slope, slope))
-    except np.linalg.LinAlgError:
-        return np.empty(0, dtype=np.complex128)
-    kept = inverse[np.abs(inverse) > 1e-12 * max(np.abs(inverse).max(initial=0.0), 1e-300)]
-    return np.asarray(shift - 1 / kept, dtype=np.complex128)
+    with np.errstate(all="ignore"):  # values near the ends of what a double holds show as infinities
+        try:
+            inverse = np.linalg.eigvals(np.linalg.solve(constant + shift * slope, slope))
+        except np.linalg.LinAlgError:
+            return np.empty(0, dtype=np.complex128)
+        kept = inverse[np.abs(inverse) > 1e-12 * max(np.abs(inverse).max(initial=0.0), 1e-300)]
+        found = np.asarray(shift - 1 / kept, dtype=np.complex128)
+    return found[np.isfinite(found)]

@@ -20,6 +20,7 @@ from .ac import dc_solvable
 from .residual import Residual
 from .solver import Drive, Solver, solver_for
 from .span import span_of
+from .twofold import two_sum
 
 Complex = npt.NDArray[np.complex128]
 Float = npt.NDArray[np.float64]
@@ -298,13 +299,6 @@ def _balances_to_nodes(eqs: nodal.Equations, x: Numbers, rest: Numbers) -> Numbe
             total[node] = x[row]
             seen.add(node)
         else:
-            total[node], error = _sum(total[node], x[row])
+            total[node], error = two_sum(total[node], x[row])
             left[node] += error
     return np.stack([total, left])
-
-
-def _sum(a: Numbers, b: Numbers) -> tuple[Numbers, Numbers]:
-    """The sum and its rounding error (D. Knuth, The Art of Computer Programming 2, section 4.2.2)."""
-    total = a + b
-    other = total - a
-    return total, (a - (total - other)) + (b - other)

@@ -62,6 +62,8 @@ class Branches:
         """
         label = _components(len(self.inner) + 1, self.ends[weights > 0])  # -1 stands for all that is fixed
         loose = np.flatnonzero(label[:-1] != label[-1])
+        if not len(loose):
+            return []
         order = loose[np.argsort(label[loose], kind="stable")]
         cuts = np.flatnonzero(np.diff(label[order])) + 1
         return [np.asarray(rows, dtype=np.int64) for rows in np.split(order, cuts) if len(rows)]

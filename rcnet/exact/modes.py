@@ -20,7 +20,6 @@ from .contour import expanded, member_residues, pole_places
 from .passive_modes import PassiveModes, passive_modes
 from .reduction import fixed_potentials, reduced_modes
 from .solver import Drive, require_solvable, solver_for
-from .span import span_of
 
 Complex = npt.NDArray[np.complex128]
 Float = npt.NDArray[np.float64]
@@ -171,7 +170,7 @@ def natural_rates(network: Network) -> Complex:
         raise UndecidedError(
             f"the network has more than {MOST_NODES} inner nodes, too many to list every mode."
         )
-    return np.asarray(0.0 - passive_modes(branches, span_of(network).low).rates, dtype=np.complex128)
+    return np.asarray(0.0 - passive_modes(branches, solver_for(network).span.low).rates, dtype=np.complex128)
 
 
 def modal_system(
@@ -218,11 +217,13 @@ def _built(network: Network, of: Sequence[Pair], sources: Sequence[str], *, ever
         found = reduced_modes(network, branches, of, sources)
         poles, residues = _passive_residues(network, branches, found, of, sources)
     else:
-        found = passive_modes(branches, span_of(network).low)
+        found = passive_modes(branches, solver_for(network).span.low)
         poles, residues = _passive_residues(network, branches, found, of, sources)
     if np.iscomplexobj(poles) and not poles.imag.any():
         poles, residues = poles.real, residues.real
-    static, direct = _limits(network, of, sources)
+    # A passive network has no pole at exactly zero unless charge cannot drain.
+    drained = bool(poles.all()) if branches is not None else dc_solvable(network)
+    static, direct = _limits(network, of, sources, 0.0 if drained else solver_for(network).span.far_below)
     system = ModalSystem(poles, residues, static, direct)
     integrating = system.integrating
     if integrating.any():
@@ -249,13 +250,12 @@ def _voltages(network: Network, of: Sequence[Pair], sources: Sequence[str], s: N
     for name in sources:
         drive = np.zeros(len(network), dtype=np.complex128)
         drive[network.part_index(name)] = 1.0
+        block = solver.block()
         blocks = [
-            solver.solve(s[start : start + solver.block()], Drive(drive), wanted).voltages[wanted]
-            for start in range(0, len(s), solver.block())
+            solver.solve(s[start : start + block], Drive(drive), wanted).voltages
+            for start in range(0, len(s), block)
         ]
-        full = np.zeros((network.arrays().node_count, len(s)), dtype=blocks[0].dtype)
-        full[wanted] = np.hstack(blocks)
-        rows.append(full)
+        rows.append(np.hstack(blocks) if len(blocks) > 1 else blocks[0])
     return np.array(rows)
 
 
@@ -264,13 +264,12 @@ def _differences(voltages: Numbers, of: Sequence[Pair]) -> Numbers:
     return np.asarray(voltages[:, a] - voltages[:, b])
 
 
-def _limits(network: Network, of: Sequence[Pair], sources: Sequence[str]) -> tuple[Float, Float]:
-    """The responses at zero and infinite frequency, zero where no more than rounding is left of a
+def _limits(network: Network, of: Sequence[Pair], sources: Sequence[str], low: float) -> tuple[Float, Float]:
+    """The responses at `low` and at infinite frequency, zero where no more than rounding is left of a
     difference.
     """
-    span = span_of(network)
-    low = 0.0 if dc_solvable(network) else span.far_below
-    points = np.array([low, span.far_above, min(span.far_above * 1e8, 1e158)])
+    far = solver_for(network).span.far_above
+    points = np.array([low, far, min(far * 1e8, 1e158)])
     voltages = np.real(_voltages(network, of, sources, points))
     values = _differences(voltages, of)
     a, b = np.array(of, dtype=np.int64).T
@@ -315,17 +314,12 @@ def _driven(
         return np.asarray((high + low)[0])
     level = fixed_potentials(network, name)[branches.held] * (branches.held >= 0)
     used = np.flatnonzero(level)
-    inner = branches.ends[used].max(axis=1)
-    shape = _rows(found.shapes, inner)
-
-    def flow(weights: Float) -> twofold.Twofold:
-        return twofold.sum_rows(
-            twofold.times(shape, np.broadcast_to((weights * level)[used, None], shape[0].shape))
-        )
-
-    high, low = twofold.subtract(
-        flow(branches.conductance), twofold.times(flow(branches.capacitance), found.rates)
-    )
+    capacitive = branches.capacitance[used, None] > 0
+    flow = _rows(found.shapes, branches.ends[used].max(axis=1))
+    flow = twofold.times(flow, ((branches.conductance + branches.capacitance) * level)[used, None])
+    if capacitive.any():
+        flow = twofold.times(flow, np.where(capacitive, -found.rates, 1.0))
+    high, low = twofold.sum_rows(flow)
     return np.asarray(high + low)
 
 
@@ -342,7 +336,7 @@ def _checked(
         return system
     low, high = moving.min() / 11, moving.max() * 13  # no point falls on an undamped pole
     count = min(60, max(5, math.ceil(2 * math.log10(high / low)) + 1))
-    s = 1j * np.geomspace(low, high, count)
+    s = 1j * low * (high / low) ** np.linspace(0.0, 1.0, count)
     voltages = _voltages(network, of, sources, s)
     exact = _differences(voltages, of)
     reached = (exact != 0).any(axis=-1) | (system.static != 0) | (system.direct != 0)

@@ -125,10 +125,9 @@ def _inverse_factor(branches: Branches, weights: Float) -> Float:
     """
     count = len(branches.inner)
     mesh = np.zeros((count + 1, count + 1))  # the last row is all that is fixed
-    a, b = branches.ends.T
-    np.add.at(mesh, (a, b), weights)
-    np.add.at(mesh, (b, a), weights)
-    np.fill_diagonal(mesh, 0.0)
+    diagonal = mesh.reshape(-1)[:: count + 2]
+    np.add.at(mesh, (branches.ends, branches.ends[:, ::-1]), weights[:, None])
+    diagonal[:] = 0.0
     order = np.arange(count)
     shares = np.zeros((count, count))  # row k: what each later pivot contributes to pivot k's voltage
     totals = np.zeros(count)
@@ -144,7 +143,7 @@ def _inverse_factor(branches: Branches, weights: Float) -> Float:
         shares[k, k + 1 :] = share[:-1]
         rest = mesh[k + 1 :, k + 1 :]
         rest += own[:, None] * share
-        np.fill_diagonal(rest, 0.0)
+        diagonal[k + 1 :] = 0.0
     basis = np.eye(count)
     for k in range(count - 2, -1, -1):
         basis[k, k + 1 :] += shares[k, k + 1 :] @ basis[k + 1 :, k + 1 :]
@@ -185,10 +184,11 @@ def _refined(branches: Branches, weights: Float, start: Float, floating: int, mo
     The first `floating` columns are exact and stay; the columns from `modes` on are those no capacitor sees.
     """
     shapes: Twofold = (start, np.zeros_like(start))
+    capacitance, admittance = _roots(branches.capacitance), _roots(weights)
     for attempt in range(_MOST_REFINEMENTS):
         across = _across(branches, shapes)
-        stored = _form(branches.capacitance, across)
-        driven = _form(weights, across)
+        stored = _form(capacitance, across)
+        driven = _form(admittance, across)
         theta = _quotients(stored, driven, modes)
         if attempt < 2 and (turned := _turned(shapes, stored, driven, theta, floating, modes)) is not None:
             shapes = turned
@@ -212,17 +212,16 @@ def _across(branches: Branches, shapes: Twofold) -> Twofold:
     return twofold.subtract((padded[0][a], padded[1][a]), (padded[0][b], padded[1][b]))
 
 
-def _form(weights: Float, across: Twofold) -> Twofold:
-    """(A V)^T w (A V): half of each weight's power of two goes to either side, so that both are of
-    one size.
-    """
-    used = weights > 0
-    mantissa, power = np.frexp(weights[used])
-    odd = power % 2
-    half = np.ldexp(1.0, (power - odd) // 2)[:, None]
-    right = (across[0][used] * half, across[1][used] * half)
-    left = twofold.times(right, np.broadcast_to((mantissa * 2.0**odd)[:, None], right[0].shape))
-    return twofold.cross_product(left, right)
+def _roots(weights: Float) -> tuple[Indices, Twofold]:
+    """Which weights are not zero, and a column of their square roots."""
+    used = np.flatnonzero(weights)
+    return used, twofold.square_root(weights[used, None])
+
+
+def _form(roots: tuple[Indices, Twofold], across: Twofold) -> Twofold:
+    """(A V)^T w (A V)."""
+    used, root = roots
+    return twofold.gram(twofold.product((across[0][used], across[1][used]), root))
 
 
 def _quotients(stored: Twofold, driven: Twofold, modes: int) -> Twofold:
@@ -257,15 +256,15 @@ def _turned(
     """The shapes with each cluster of close modes turned into its own eigenvectors; None where none
     is close.
     """
-    high, low = shapes[0].copy(), shapes[1].copy()
     order = floating + np.argsort(-theta[0][floating:modes], kind="stable")
     ordered = theta[0][order]
-    cuts = np.flatnonzero(-np.diff(ordered) > _CLUSTER * ordered[:-1]) + 1
-    found = False
+    cuts = np.flatnonzero(ordered[:-1] - ordered[1:] > _CLUSTER * ordered[:-1]) + 1
+    if len(cuts) >= len(order) - 1:
+        return None
+    high, low = shapes[0].copy(), shapes[1].copy()
     for cluster in np.split(order, cuts):
         if len(cluster) < 2:
             continue
-        found = True
         block = np.ix_(cluster, cluster)
         common = np.full((len(cluster), len(cluster)), theta[0][cluster[0]])
         difference = twofold.subtract(
@@ -280,4 +279,4 @@ def _turned(
             )
             total = twofold.add(total, twofold.times(part, np.broadcast_to(turn[k], part[0].shape)))
         high[:, cluster], low[:, cluster] = total
-    return (high, low) if found else None
+    return high, low

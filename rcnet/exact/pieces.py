@@ -71,7 +71,11 @@ class Pieces:
     def value(self, time: Float) -> Float:
         """The waveform at times (times,); just after a vertical edge."""
         _, piece, since = self.located(np.maximum(time, self.begin))
-        return np.where(time < self.begin, self.start, self.levels[piece] + self.slopes[piece] * since)
+        return np.where(time < self.begin, self.start, self.value_in(piece, since))
+
+    def value_in(self, piece: Indices, since: Float) -> Float:
+        """The waveform `since` seconds after corners."""
+        return np.asarray(self.levels[piece] + self.slopes[piece] * since)
 
 
 def pieces_of(wave: Square | Step | Points) -> Pieces:
@@ -156,11 +160,14 @@ class Followed:
     begun: Numbers
     gained: Numbers
 
-    def at(self, time: Float) -> Numbers:
-        """E at times from `begin` on: (times, terms)."""
-        turn, piece, since = self.pieces.located(time)
-        turns, place = np.unique(turn, return_inverse=True)
-        return self.in_piece(self.turned(turns)[place], piece, since)
+    def at(self, turn: Indices, piece: Indices, since: Float) -> Numbers:
+        """E `since` seconds after corners, as `Pieces.located` has it: (times, terms)."""
+        first, last = (int(turn.min()), int(turn.max())) if len(turn) else (0, 0)
+        if last - first < len(turn):  # a turn seldom holds one time only
+            turned = self.turned(np.arange(first, last + 1))[turn - first]
+        else:
+            turned = self.turned(turn)
+        return self.in_piece(turned, piece, since)
 
     def turned(self, turn: Indices) -> Numbers:
         """E just after the beginning of each turn, (turns, terms), as a geometric sum."""
@@ -185,9 +192,12 @@ class Followed:
         # A piece seldom holds one time only: what has died away by its corner is computed once.
         before = np.exp(np.outer(self.pieces.corners, self.poles))[piece] * turned + self.begun[piece]
         grown = np.outer(since, self.poles)
-        return np.asarray(
-            np.exp(grown) * before - self.pieces.slopes[piece][:, None] * _ramp(grown, self.poles, since)
-        )
+        lag = np.exp(grown) * before
+        slopes = self.pieces.slopes[piece]
+        sloped = np.flatnonzero(slopes)
+        if len(sloped):
+            lag[sloped] -= slopes[sloped, None] * _ramp(grown[sloped], self.poles, since[sloped])
+        return np.asarray(lag)
 
 
 def _ramp(grown: Numbers, poles: Numbers, since: Float) -> Numbers:
@@ -212,4 +222,5 @@ def followed(pieces: Pieces, poles: Numbers) -> Followed:
 
 def _over(start: Numbers, poles: Numbers, length: float, slope: float) -> Numbers:
     grown = poles * length
-    return np.asarray(np.exp(grown) * start - slope * _ramp(grown[None], poles, np.array([length]))[0])
+    kept = np.exp(grown) * start
+    return np.asarray(kept - slope * _ramp(grown[None], poles, np.array([length]))[0] if slope else kept)

@@ -7,11 +7,11 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from .twofold import two_product, two_sum
+
 Numbers = npt.NDArray[Any]
 Float = npt.NDArray[np.float64]
 Indices = npt.NDArray[np.int64]
-
-_SPLITTER = 134217729.0  # 2^27 + 1, halves a double's 53 digits (T. Dekker, Numer. Math. 18:224-242, 1971)
 
 
 class Residual:
@@ -41,12 +41,12 @@ class Residual:
         along, across = self.slope[:, None] * np.real(s), self.slope[:, None] * np.imag(s)
         fixed = np.broadcast_to(self.constant[:, None], (len(self.constant), len(s)))
         factors = np.concatenate([fixed, fixed, along, along, -across, across])
-        product, missing = _product(factors, np.concatenate([np.real(x), np.imag(x)])[self.column])
+        product, missing = two_product(factors, np.concatenate([np.real(x), np.imag(x)])[self.column])
         total = np.concatenate([np.real(b), np.imag(b)]).astype(np.float64)
         carried = np.zeros_like(total)
         for turn in self.turns:
             row = self.row[turn]
-            total[row], error = _sum(total[row], -product[turn])
+            total[row], error = two_sum(total[row], -product[turn])
             carried[row] += error - missing[turn]
         total += carried
         if np.iscomplexobj(x) or np.iscomplexobj(b) or np.iscomplexobj(s):
@@ -63,24 +63,3 @@ def _turns(rows: Indices) -> list[Indices]:
     by_rank = np.argsort(rank, kind="stable")
     cuts = np.flatnonzero(np.diff(rank[by_rank])) + 1
     return np.split(order[by_rank], cuts)
-
-
-def _sum(a: Float, b: Float) -> tuple[Float, Float]:
-    """The sum a + b and its rounding error (D. Knuth, The Art of Computer Programming 2, section 4.2.2)."""
-    total = a + b
-    other = total - a
-    return total, (a - (total - other)) + (b - other)
-
-
-def _product(a: Float, b: Float) -> tuple[Float, Float]:
-    """The product a b and its rounding error (G. Veltkamp's way, in Dekker 1971)."""
-    product = a * b
-    a_high, a_low = _halves(a)
-    b_high, b_low = _halves(b)
-    return product, a_low * b_low - (((product - a_high * b_high) - a_low * b_high) - a_high * b_low)
-
-
-def _halves(a: Float) -> tuple[Float, Float]:
-    scaled = a * _SPLITTER
-    high = scaled - (scaled - a)
-    return high, a - high

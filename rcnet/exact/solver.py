@@ -57,7 +57,8 @@ class Solver:
         # The table of solvers must not keep a network alive.
         self._network = weakref.ref(network)
         self.arrays = network.arrays()
-        self.middle = span_of(network).middle
+        self.span = span_of(network)
+        self.middle = self.span.middle
         self.stiff = _stiff_tree(network, self.arrays)
         codes = self.arrays.kinds
         self.admittance_rows = np.flatnonzero((codes == ord("R")) | (codes == ord("C")))
@@ -277,13 +278,15 @@ class Solver:
         stiff.fill(columns, drive.sources if dtype == np.complex128 else drive.sources.real)
         inflow = self._inflow(drive, columns.shape, dtype)
         substitute(factors, columns, inflow, seen)
-        weights = _closure(columns, controls, gains)
-        if weights is None:
-            raise nodal.singular(self._controlled)
-        voltages = np.einsum("ncs,cs->ns", columns, weights)
+        voltages, arriving = columns[:, 0], None if inflow is None else inflow[:, 0]
+        if stiff.controlled:
+            weights = _closure(columns, controls, gains)
+            if weights is None:
+                raise nodal.singular(self._controlled)
+            voltages = np.einsum("ncs,cs->ns", columns, weights)
+            arriving = None if inflow is None else np.einsum("ncs,cs->ns", inflow, weights)
         if not currents_too:
             return Solution(voltages, None)
-        arriving = None if inflow is None else np.einsum("ncs,cs->ns", inflow, weights)
         return Solution(voltages, self._source_currents(factors, voltages, arriving))
 
     def _compiles(self, s: Numbers, values: npt.NDArray[np.float64] | None) -> bool:
@@ -481,7 +484,7 @@ class _StiffTree:
 
 def _stiff_tree(network: Network, arrays: PartArrays) -> _StiffTree | None:
     """The tree, or None where the network holds more than R, C, V, I, E or a voltage source floats."""
-    letters = {chr(code) for code in np.unique(arrays.kinds).tolist()}
+    letters = {chr(code) for code in set(arrays.kinds.tobytes())}
     if letters - set("RCVIE"):
         return None
     rows = np.flatnonzero((arrays.kinds == ord("V")) | (arrays.kinds == ord("E"))).tolist()

@@ -13,8 +13,8 @@ from ..errors import CircuitError, UndecidedError
 from .ac import node_pair
 from .modes import ModalSystem, modal_system, sampled
 from .pieces import Pieces, followed, pieces_of
-from .residual import _product as product_error
 from .solver import require_solvable
+from .twofold import two_product
 
 Float = npt.NDArray[np.float64]
 Pair = tuple[int, int]
@@ -91,15 +91,17 @@ def _from_source(
         steady = sampled(network, pairs, [source.name], np.array([2j * math.pi * wave.frequency]))[0, :, 0]
         return _under_sine(system, number, wave, steady, time)
     pieces = pieces_of(wave)
-    answer = static[:, None] * pieces.value(time)
-    if integrating.any():
-        total = (system.residues[number][:, system.poles == 0]).real.sum(axis=-1)
-        answer += total[:, None] * np.where(time < pieces.begin, 0.0, _integral(pieces, time))
+    answer = np.repeat(static[:, None] * start, len(time), axis=1)
     moving = system.poles != 0
     lag = followed(pieces, system.poles[moving])
     weights = system.weights[number][:, moving]
     for part in blocks(np.flatnonzero(time >= pieces.begin), len(system.poles)):
-        answer[:, part] += np.real(lag.at(time[part]) @ weights.T).T
+        turn, piece, since = pieces.located(time[part])
+        lacking = np.real(lag.at(turn, piece, since) @ weights.T).T
+        answer[:, part] = static[:, None] * pieces.value_in(piece, since) + lacking
+    if integrating.any():
+        total = (system.residues[number][:, ~moving]).real.sum(axis=-1)
+        answer += total[:, None] * np.where(time < pieces.begin, 0.0, _integral(pieces, time))
     return np.asarray(answer)
 
 
@@ -121,7 +123,7 @@ def _integral(pieces: Pieces, time: Float) -> Float:
 
 def turns_of(frequency: float, since: Float) -> Float:
     """The part of a turn, in [-1/2, 1/2], that frequency times seconds leaves beyond whole turns."""
-    whole, missing = product_error(np.full_like(since, frequency), since)
+    whole, missing = two_product(np.full_like(since, frequency), since)
     return np.asarray((whole - np.rint(whole)) + missing)
 
 

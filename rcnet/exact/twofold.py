@@ -1,4 +1,4 @@
-"""Matrix products in twice the working precision.
+"""Sums and products in twice the working precision.
 
 A twofold array is a pair (high, low) of float64 arrays whose exact sum is meant. Products of matrices are
 made of products of slices so narrow that ordinary matrix products of them commit no rounding error: K. Ozaki,
@@ -8,23 +8,45 @@ T. Ogita, S. Oishi, S. Rump, Numer. Algorithms 59(1):95-118, 2012.
 from __future__ import annotations
 
 import math
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-from .residual import _product as product_error
-from .residual import _sum as sum_error
-
 Float = npt.NDArray[np.float64]
+Numbers = npt.NDArray[Any]
 Twofold = tuple[Float, Float]
 
 _CHUNK = 8192  # rows sliced at once
 _SLICES = 5  # 5 slices of some 22 bits: 2^-100 of the greatest entry of a row
 
+_SPLITTER = 134217729.0  # 2^27 + 1, halves a double's 53 digits (T. Dekker, Numer. Math. 18:224-242, 1971)
+
+
+def two_sum(a: Numbers, b: Numbers) -> tuple[Numbers, Numbers]:
+    """The sum a + b and its rounding error (D. Knuth, The Art of Computer Programming 2, section 4.2.2)."""
+    total = a + b
+    other = total - a
+    return total, (a - (total - other)) + (b - other)
+
+
+def two_product(a: Float, b: Float) -> tuple[Float, Float]:
+    """The product a b and its rounding error (G. Veltkamp's way, in Dekker 1971)."""
+    product = a * b
+    a_high, a_low = _halves(a)
+    b_high, b_low = _halves(b)
+    return product, a_low * b_low - (((product - a_high * b_high) - a_low * b_high) - a_high * b_low)
+
+
+def _halves(a: Float) -> tuple[Float, Float]:
+    scaled = a * _SPLITTER
+    high = scaled - (scaled - a)
+    return high, a - high
+
 
 def add(a: Twofold, b: Twofold) -> Twofold:
     """The sum a + b, to about 2^-104 of the greater."""
-    high, error = sum_error(a[0], b[0])
+    high, error = two_sum(a[0], b[0])
     return renormalised(high, error + (a[1] + b[1]))
 
 
@@ -33,60 +55,84 @@ def subtract(a: Twofold, b: Twofold) -> Twofold:
     return add(a, (-b[0], -b[1]))
 
 
+def square_root(a: Float) -> Twofold:
+    """The square root of positive numbers, to about 2^-104."""
+    mantissa, power = np.frexp(a)  # the square of a small root's last digits would be too small for a double
+    odd = power % 2
+    root = np.sqrt(mantissa * 2.0**odd)
+    square, error = two_product(root, root)
+    rest = ((mantissa * 2.0**odd - square) - error) / (2 * root)
+    half = (power - odd) // 2
+    return np.ldexp(root, half), np.ldexp(rest, half)
+
+
 def times(a: Twofold, b: Float) -> Twofold:
     """The product a b for an ordinary array b."""
-    high, error = product_error(a[0], b)
+    high, error = two_product(a[0], b)
     return renormalised(high, error + a[1] * b)
+
+
+def product(a: Twofold, b: Twofold) -> Twofold:
+    """The product a b, entry by entry, to about 2^-103."""
+    high, error = two_product(a[0], b[0])
+    return renormalised(high, error + (a[0] * b[1] + a[1] * b[0]))
 
 
 def renormalised(high: Float, low: Float) -> Twofold:
     """The same sum with the high part the nearest double."""
-    return sum_error(high, low)
+    return two_sum(high, low)
 
 
 def sum_rows(a: Twofold) -> Twofold:
     """The sum over the first axis."""
-    high, low = np.zeros(a[0].shape[1:]), np.zeros(a[0].shape[1:])
-    for row in range(len(a[0])):
-        high, error = sum_error(high, a[0][row])
+    if not len(a[0]):
+        return np.zeros(a[0].shape[1:]), np.zeros(a[0].shape[1:])
+    high, low = a[0][0], a[1][0]
+    for row in range(1, len(a[0])):
+        high, error = two_sum(high, a[0][row])
         low = low + (error + a[1][row])
     return renormalised(high, low)
 
 
-def cross_product(a: Twofold, b: Twofold) -> Twofold:
-    """The product a^T b for a, b of shapes (terms, columns), to 2^-100 of the product of the columns'
-    greatest entries.
+def gram(a: Twofold) -> Twofold:
+    """The product a^T a for a of shape (terms, columns), to 2^-100 of the product of the columns' greatest
+    entries.
     """
     if len(a[0]) > _CHUNK:
         parts = [slice(start, start + _CHUNK) for start in range(0, len(a[0]), _CHUNK)]
-        products = [cross_product((a[0][p], a[1][p]), (b[0][p], b[1][p])) for p in parts]
+        products = [gram((a[0][p], a[1][p])) for p in parts]
         return sum_rows((np.array([p[0] for p in products]), np.array([p[1] for p in products])))
-    terms = max(len(a[0]), 1)
-    bits = (53 - math.ceil(math.log2(terms + 1))) // 2
-    left, left_scale = _sliced(a, bits)
-    right, right_scale = _sliced(b, bits)
-    high = np.zeros((a[0].shape[1], b[0].shape[1]))
+    bits = (53 - math.ceil(math.log2(2 * max(len(a[0]), 1)))) // 2
+    slices, scale = _sliced(a, bits)
+    turned = slices.swapaxes(1, 2)
+    high = turned[0] @ slices[0]
     low = np.zeros_like(high)
-    for order in range(_SLICES):
-        for i in range(order + 1):
-            high, error = sum_error(high, left[i].T @ right[order - i])
-            low += error
+    # Products of slices i and j are multiples of one number for each i + j, and because slices after the first
+    # hold a sign in their bits, all of them together sum to less than 2 terms 2^(2 bits) of it: no rounding.
+    for order in range(1, _SLICES):
+        share = (turned[: order + 1] @ slices[order::-1]).sum(axis=0)
+        high, error = two_sum(high, share)
+        low += error
     high, low = renormalised(high, low)
-    scale = left_scale[:, None] * right_scale
-    return high * scale, low * scale
+    both = scale[:, None] * scale
+    return high * both, low * both
 
 
-def _sliced(a: Twofold, bits: int) -> tuple[list[Float], Float]:
-    """Slices of `bits` bits each, largest first, of the columns scaled by a power of two to at most one."""
+def _sliced(a: Twofold, bits: int) -> tuple[Float, Float]:
+    """Slices (slices, terms, columns) of `bits` bits each, largest first, of the columns scaled by a power of
+    two to at most one, and the scale.
+    """
     greatest = np.abs(a[0]).max(axis=0, initial=0.0)
     scale = np.exp2(np.ceil(np.log2(np.where(greatest > 0, greatest, 1.0))))
     high, low = a[0] / scale, a[1] / scale
-    slices = []
+    slices = np.empty((_SLICES, *high.shape))
     for number in range(_SLICES):
         # Adding and taking away 2^(52 - bits of this slice and those before) rounds to a multiple of its last
         # bit.
         cutter = 1.5 * 2.0 ** (52 - bits * (number + 1))
-        top = (high + cutter) - cutter
-        slices.append(top)
-        high, low = renormalised(high - top, low)
+        slices[number] = top = (high + cutter) - cutter
+        # What is left of the high part is zero or no smaller than the low one: Dekker's sum will do.
+        rest = high - top
+        high = rest + low
+        low = low - (high - rest)
     return slices, scale

@@ -204,6 +204,8 @@ def show_comparison(comparison: Comparison, out: Console, *, quiet: bool = False
 
 
 def _verdict_of(comparison: Comparison) -> tuple[Text, str]:
+    if not comparison.curves:
+        return _word("not compared"), f" with {comparison.second_opinion}"
     agrees = comparison.verdict == "agree"
     return _word(
         "agrees" if agrees else "differs"
@@ -214,6 +216,8 @@ def _counted_curves(comparison: Comparison) -> str:
     """`4 ac curves`, or `1 of 4 ac curves` where one differs."""
     total = Counter(curve.analysis for curve in comparison.curves)
     wrong = Counter(curve.analysis for curve in comparison.curves if curve.verdict == "differ")
+    if not total:
+        return "it has no curve of a kind that is compared now"
     return ", ".join(
         f"{f'{wrong[name]} of ' if wrong else ''}{_counted(count, f'{name} curve')}"
         for name, count in total.items()
@@ -228,7 +232,7 @@ def _show_details(comparison: Comparison, out: Console) -> None:
         _show_curve(curve, out)
     if len(differing) > MOST_LISTED:
         _say(out, f"and {len(differing) - MOST_LISTED} more curves that differ", indent=4)
-    if not differing:
+    if comparison.curves and not differing:
         worst = max(comparison.curves, key=lambda curve: curve.worst.relative)
         amount = _amount(worst.worst)
         _say(out, f"largest difference: {worst.name}{_where(worst)}: {amount}", indent=4, hang=2)

@@ -223,7 +223,26 @@ def test_source_of_another_amplitude() -> None:
     net.add_capacitor("C1", "out", "0", C)
     phasor = 3 * np.exp(1j * np.radians(40))
     assert held(ac(h() * phasor), against=circuit(net)).verdict == "agree"
-    assert held(ac(h()), against=circuit(net)).verdict == "differ"
+    per_unit = held(ac(h()), against=circuit(net))
+    assert per_unit.verdict == "differ"
+    assert any("ac value of 1 for Vin" in remark for remark in per_unit.remarks)
+    assert held(ac(2 * h()), against=circuit(net)).remarks == ()
+
+
+def test_a_trace_without_a_name_is_the_outputs() -> None:
+    """Bench instruments name no node: such a trace is held against the circuit's output."""
+    (found,) = held(ac(h(), "response")).curves
+    assert (found.name, found.verdict) == ("v(out)", "agree")
+    (found,) = held(ac(1.01 * h(), "response")).curves
+    assert found.verdict == "differ"
+
+
+def test_results_not_compared_yet_may_be_all_there_is() -> None:
+    """The main job lists transients and noise as not compared where a circuit asks for nothing else."""
+    slow = Curve("v(out)", "transient", np.array([0.0, 1e-3]), np.array([0.0, 1.0]), "V")
+    found = compare(circuit(), Curves("results.raw", (slow,)), may_be_empty=True)
+    assert (found.verdict, found.curves) == ("agree", ())
+    assert [left.name for left in found.uncompared] == ["v(out)"]
 
 
 def test_what_cannot_be_compared_is_told() -> None:
