@@ -29,6 +29,8 @@ from .toml_lines import line_table
 SUFFIX = ".rc.toml"
 MAX_FILE_BYTES = 16 * 1024 * 1024
 MAX_PROBLEMS = 50
+# Hz, stated in messages. Beyond them s or 1/s times a part value may leave the range of doubles.
+LOWEST_FREQUENCY, HIGHEST_FREQUENCY = 1e-30, 1e30
 
 # The library's reader takes time in the square of a key's dots.
 _DEEP_KEY = re.compile(r"""(?<![\w-])(?:(?:[\w-]++|"[^"\n]*"|'[^'\n]*')[ \t]*+\.[ \t]*+){40}""")
@@ -75,6 +77,14 @@ def _syntax_error(exc: tomllib.TOMLDecodeError, text: str, file: str) -> Circuit
     found = re.search(r"\(at line (\d+), column (\d+)\)", str(exc))
     line = int(found[1]) if found else len(text.rstrip().split("\n"))
     why = re.sub(r"\s*\(at .*\)$", "", str(exc))
+    key, sign, _ = text.split("\n")[line - 1].partition("=")
+    if why == "Cannot overwrite a value" and sign:
+        return CircuitError(
+            f"the key {shown(key.strip())} stands here for the second time.",
+            file=file,
+            line=line,
+            remedy="Give it another name, or take one of the two out.",
+        )
     return CircuitError(
         f"this is not valid TOML: {why[:1].lower()}{why[1:]}.", file=file, line=line, remedy="Mend this line."
     )
@@ -532,6 +542,11 @@ def checked_sweep(sweep: Sweep, name: str) -> Sweep:
         raise CircuitError(
             f"{name} runs from {sweep.start!r} Hz to {sweep.stop!r} Hz.",
             remedy="Start above zero and end higher than the start.",
+        )
+    if sweep.start < LOWEST_FREQUENCY or sweep.stop > HIGHEST_FREQUENCY:
+        raise CircuitError(
+            f"{name} runs from {sweep.start!r} Hz to {sweep.stop!r} Hz.",
+            remedy=f"Keep it between {LOWEST_FREQUENCY:g} Hz and {HIGHEST_FREQUENCY:g} Hz.",
         )
     steps = math.log10(sweep.stop / sweep.start) * sweep.points
     if math.floor(steps) < 1:

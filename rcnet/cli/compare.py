@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from .options import FAILED, OK, examples, file_argument, json_option, print_json, quiet_option
+from .options import FAILED, OK, examples, file_argument, json_option, print_json, quiet_option, spare
 
 
 @click.command(
@@ -32,6 +32,7 @@ def command(file: str, results: str, as_json: bool, quiet: bool, output: str | N
     from ..report.terminal import console, show_comparison
     from ..system.files import write_file
 
+    spare(output, file, results)
     comparison = compare(load(file), read_results(results), who=Path(results).name)
     document = comparison_document(comparison)
     if output is not None:

@@ -15,12 +15,12 @@ from .options import (
     OK,
     anyway_option,
     complain,
-    error_document,
     examples,
     files_argument,
     folder_names,
     folder_option,
     json_option,
+    listed_error_document,
     opinion_option,
     print_json,
     quiet_option,
@@ -71,7 +71,7 @@ def command(files: tuple[str, ...], as_json: bool, quiet: bool, strict: bool, ou
                 done = _confirm(file, Path(output) / names[file], **ask)
             except RcnetError as exc:
                 complain(exc.at(file))
-                documents.append(error_document(exc.at(file)))
+                documents.append(listed_error_document(exc.at(file), file, files))
                 words.append("error")
                 code = IMPOSSIBLE
                 continue

@@ -2,15 +2,29 @@
 
 from __future__ import annotations
 
+import contextlib
 import importlib
 import os
+import signal
 import sys
+import threading
+from collections.abc import Iterator
+from contextlib import contextmanager
 from typing import Any
 
 import click
 
-from ..errors import RcnetError
-from .options import IMPOSSIBLE, INTERRUPTED, complain, examples, json_wanted
+from ..errors import InputError, RcnetError
+from .options import (
+    IMPOSSIBLE,
+    INTERRUPTED,
+    TERMINATED,
+    complain,
+    error_document,
+    examples,
+    json_wanted,
+    print_json,
+)
 
 _VERBS = ("confirm", "check", "response", "netlist", "simulate", "compare", "new")
 _READER_GONE = 141  # what a shell reports for a program that wrote to a closed pipe
@@ -39,7 +53,7 @@ class _Verbs(click.Group):
             code = IMPOSSIBLE
         except BrokenPipeError:
             # Whoever read the output has gone; there is nobody to tell.
-            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+            _discard_output()
             code = _READER_GONE
         ctx.exit(code if isinstance(code, int) else 0)
 
@@ -66,7 +80,7 @@ def _print_version(ctx: click.Context, _: click.Parameter, wanted: bool) -> None
 _CODES = """
 \b
 Exit codes: 0 everything holds and agrees, 1 something fails or differs,
-            2 it could not be done, 130 interrupted
+            2 it could not be done, 130 interrupted, 143 terminated
 """
 
 
@@ -100,31 +114,104 @@ def group() -> None:
     """
 
 
+class _Terminated(BaseException):
+    """The program was asked to end; on its way out it ends what it started."""
+
+
+@contextmanager
+def _termination_raised() -> Iterator[None]:
+    """SIGTERM as an exception, where there are signals; by default it would leave children and files behind."""
+    if os.name != "posix" or threading.current_thread() is not threading.main_thread():
+        yield
+        return
+
+    def end(*_: object) -> None:
+        # A second one must not cut the cleaning up short.
+        signal.signal(signal.SIGTERM, signal.SIG_IGN)
+        raise _Terminated
+
+    before = signal.signal(signal.SIGTERM, end)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGTERM, before)
+
+
 def run(arguments: list[str] | None = None) -> None:
     """Run the command line; never a traceback for what a user can cause."""
+    if sys.stdout is None:
+        _tell("standard output cannot be written: it is closed. Give it a place to go to.")
+        sys.exit(IMPOSSIBLE)
     for stream in (sys.stdout, sys.stderr):
         # A file's name, or an ohm sign, that the terminal cannot show must not end the program.
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="backslashreplace")
+    given = sys.argv[1:] if arguments is None else arguments
+    try:
+        with _termination_raised():
+            code = _ended(given)
+    except _Terminated:
+        _tell("terminated.")
+        code = TERMINATED
+    try:
+        sys.stdout.flush()
+    except OSError as exc:
+        code = _unwritten(exc)
+    sys.exit(code)
+
+
+def _ended(arguments: list[str]) -> int:
+    """Run the verb; what it raises becomes a sentence and an exit code."""
     try:
         code = group.main(args=arguments, prog_name="rcnet", standalone_mode=False)
+        return code if isinstance(code, int) else 0
     except click.ClickException as exc:
         exc.show()
-        code = IMPOSSIBLE
+        if "--json" in arguments:
+            print_json(error_document(InputError(exc.format_message(), remedy="See `rcnet --help`.")))
+        return IMPOSSIBLE
     except (click.Abort, KeyboardInterrupt):
-        click.echo("rcnet: interrupted.", err=True)
-        code = INTERRUPTED
+        _tell("interrupted.")
+        return INTERRUPTED
     except (MemoryError, RecursionError):
-        click.echo("rcnet: the circuit is too large for this machine's memory. Split it.", err=True)
-        code = IMPOSSIBLE
+        _tell("the circuit is too large for this machine's memory. Split it.")
+        return IMPOSSIBLE
     except Exception as exc:
+        if isinstance(exc, OSError) and (refused := _refused_output()) is not None:
+            return _unwritten(refused)
         if os.environ.get("RCNET_DEBUG"):
             raise
         told = f"{type(exc).__name__}: {exc}".rstrip(": ")
-        click.echo(
-            f"rcnet: this is a defect of rcnet, not of your files: {told}. Please report it with the circuit "
-            "and with what RCNET_DEBUG=1 adds.",
-            err=True,
+        _tell(
+            f"this is a defect of rcnet, not of your files: {told}. Please report it with the circuit "
+            "and with what RCNET_DEBUG=1 adds."
         )
-        code = IMPOSSIBLE
-    sys.exit(code if isinstance(code, int) else 0)
+        return IMPOSSIBLE
+
+
+def _refused_output() -> OSError | None:
+    """Why standard output takes nothing: what it did not take is still in its buffer, and is tried again."""
+    try:
+        sys.stdout.flush()
+    except OSError as exc:
+        return exc
+    return None
+
+
+def _unwritten(exc: OSError) -> int:
+    """Tell that standard output takes nothing, and see that the interpreter does not try once more."""
+    _discard_output()
+    if isinstance(exc, BrokenPipeError):
+        return _READER_GONE
+    reason = exc.strerror or str(exc)
+    _tell(f"standard output cannot be written: {reason[:1].lower()}{reason[1:]}. Send it to another place.")
+    return IMPOSSIBLE
+
+
+def _discard_output() -> None:
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+def _tell(sentence: str) -> None:
+    with contextlib.suppress(OSError):
+        click.echo(f"rcnet: {sentence}", err=True)

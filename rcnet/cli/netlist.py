@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import click
 
-from .options import FAILED, OK, anyway_option, examples, file_argument, json_option, print_json
+from .options import FAILED, OK, anyway_option, examples, file_argument, json_option, print_json, spare
 
 
 @click.command("netlist", epilog=examples("rcnet netlist noise-filter.rc.toml -o noise-filter.cir"))
@@ -22,6 +22,8 @@ def command(file: str, as_json: bool, quiet: bool, output: str | None, anyway: b
     from ..report.terminal import console, show_findings
     from ..system.files import write_file
 
+    to_file = output not in (None, "-")
+    spare(output if to_file else None, file)
     circuit = with_analyses(load(file))
     done = check(circuit)
     refused = bool(done.errors) and not anyway
@@ -32,10 +34,10 @@ def command(file: str, as_json: bool, quiet: bool, output: str | None, anyway: b
             err=True,
         )
     text = None if refused else sealed_netlist(circuit, done, anyway=anyway).text
-    if text is not None and output not in (None, "-"):
+    if text is not None and to_file:
         write_file(str(output), text)
     if as_json:
         print_json(netlist_document(done, text))
-    elif text is not None and output in (None, "-"):
+    elif text is not None and not to_file:
         click.echo(text, nl=False)
     return FAILED if refused else OK

@@ -15,13 +15,14 @@ from .options import OK, examples, json_option, print_json
 @click.argument("starter", required=False, metavar="[STARTER]")
 @json_option
 @click.option("-o", "--output", type=click.Path(), help="The file to make; STARTER.rc.toml here otherwise.")
-def command(starter: str | None, output: str | None, as_json: bool) -> int:
+@click.option("--quiet", is_flag=True, help="Print names only.")
+def command(starter: str | None, output: str | None, as_json: bool, quiet: bool) -> int:
     """List the starter circuits, or copy one to begin from."""
     from ..resources import starters
 
     found = starters()
     if starter is None:
-        _list(found, as_json=as_json)
+        _list(found, as_json=as_json, quiet=quiet)
         return OK
     if starter not in found:
         near = difflib.get_close_matches(starter, found, n=1)
@@ -30,12 +31,17 @@ def command(starter: str | None, output: str | None, as_json: bool) -> int:
     target = _copy(starter, found[starter], output)
     if as_json:
         print_json({"name": starter, "file": str(target)})
+    elif quiet:
+        click.echo(target)
     else:
         click.echo(f"{target} is yours to edit; then: rcnet confirm {target}")
     return OK
 
 
-def _list(found: dict[str, Path], *, as_json: bool) -> None:
+def _list(found: dict[str, Path], *, as_json: bool, quiet: bool) -> None:
+    if quiet and not as_json:
+        click.echo("\n".join(found))
+        return
     from ..circuit import load_circuit_file
 
     titles = {name: load_circuit_file(path).title for name, path in found.items()}
@@ -54,6 +60,11 @@ def _copy(starter: str, source: Path, output: str | None) -> Path:
     target = Path(output or f"{starter}{SUFFIX}")
     if target.is_dir():
         target /= f"{starter}{SUFFIX}"
+    if not target.name.lower().endswith(".toml"):
+        raise InputError(
+            f"a circuit file is not called {target.name!r}: its name would make it a netlist.",
+            remedy=f"Let the name end in {SUFFIX}, as {target.stem}{SUFFIX}.",
+        )
     if target.exists() or target.is_symlink():
         raise OutputError(
             "a file of that name is there already.", file=str(target), remedy="Name another with --output."

@@ -10,11 +10,11 @@ from typing import Any, TypeVar
 
 import click
 
-from ..errors import RcnetError
+from ..errors import OutputError, RcnetError
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
-OK, FAILED, IMPOSSIBLE, INTERRUPTED = 0, 1, 2, 130
+OK, FAILED, IMPOSSIBLE, INTERRUPTED, TERMINATED = 0, 1, 2, 130, 143
 _JSON = "rcnet.json"
 
 
@@ -92,6 +92,32 @@ def error_document(error: RcnetError) -> dict[str, Any]:
             {"message": p.message, "file": p.file, "line": p.line, "remedy": p.remedy} for p in error.problems
         ]
     }
+
+
+def listed_error_document(error: RcnetError, file: str, files: Iterable[str]) -> dict[str, Any]:
+    """An error as an element of the list for several files; as a document of its own for one file."""
+    from ..circuit import circuit_name
+
+    alone = len(list(files)) == 1
+    named: dict[str, Any] = {} if alone else {"circuit": circuit_name(file), "verdict": None}
+    return {**named, **error_document(error)}
+
+
+def spare(output: str | None, *inputs: str) -> None:
+    """Refuse an output that would replace an input, however its path is spelt. Raises OutputError."""
+    if output is None:
+        return
+    for given in inputs:
+        try:
+            same = Path(output).samefile(given)
+        except (OSError, ValueError):
+            continue  # one of the two is not there; whoever reads or writes it says so
+        if same:
+            raise OutputError(
+                f"this would overwrite the input {given!r}.",
+                file=output,
+                remedy="Choose another place with --output.",
+            )
 
 
 def with_progress(items: Iterable[Any], count: int, *, hidden: bool) -> Iterable[Any]:

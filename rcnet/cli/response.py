@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
 
 from ..errors import InputError
-from .options import OK, examples, file_argument, json_option, print_json
+from .options import OK, examples, file_argument, json_option, print_json, spare
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -27,10 +28,11 @@ if TYPE_CHECKING:
 )
 @file_argument
 @json_option
+@click.option("--quiet", is_flag=True, help="Leave out the headings of the table.")
 @click.option("--csv", "as_csv", is_flag=True, help="Print CSV.")
 @click.option("-o", "--output", type=click.Path(), help="Write to a file; its suffix (.csv, .json) says how.")
 @click.option(
-    "--of", "nodes", multiple=True, metavar="NODE", help='A node, or a pair "a b"; may be repeated.'
+    "--of", "nodes", multiple=True, metavar="NODE", help='A node, a pair "a b" or "v(a,b)"; may be repeated.'
 )
 @click.option("--from", "start", metavar="F", help="Lowest frequency, as 10 or '1 kHz'.")
 @click.option("--to", "stop", metavar="F", help="Highest frequency.")
@@ -39,7 +41,13 @@ if TYPE_CHECKING:
 @click.option("--until", metavar="T", help="Give the waveform from t = 0 to this time, as '5 ms'.")
 @click.option("--points", type=click.IntRange(2), help="How many times, evenly spaced.  [default: 201]")
 def command(
-    file: str, as_json: bool, as_csv: bool, output: str | None, nodes: tuple[str, ...], **wanted: Any
+    file: str,
+    as_json: bool,
+    quiet: bool,
+    as_csv: bool,
+    output: str | None,
+    nodes: tuple[str, ...],
+    **wanted: Any,
 ) -> int:
     """Give the exact response of a circuit, or its waveforms."""
     from ..curves import write_csv
@@ -51,8 +59,9 @@ def command(
     if as_json and as_csv:
         raise click.UsageError("--json does not go with --csv.")
     as_text = None if output is None else _writer(output)
+    spare(output, file)
     circuit = load(file)
-    curves = _asked(circuit, nodes, **wanted)
+    curves = _asked(circuit, [_named(circuit, node) for node in nodes], **wanted)
     if output is not None and as_text is not None:
         write_file(output, as_text(curves))
     if as_json:
@@ -60,7 +69,7 @@ def command(
     elif as_csv:
         click.echo(write_csv(curves), nl=False)
     elif output is None:
-        show_response(curves.curves, console())
+        show_response(curves.curves, console(), quiet=quiet)
     return OK
 
 
@@ -80,7 +89,7 @@ def _writer(output: str) -> Callable[[Curves], str]:
 
 def _asked(
     circuit: Circuit,
-    nodes: tuple[str, ...],
+    nodes: list[str],
     *,
     start: str | None,
     stop: str | None,
@@ -100,7 +109,42 @@ def _asked(
     if timed:
         return answers.time_curves(circuit, nodes, answers.even_times(until, points or 201))
     if at:
-        return answers.response_curves(circuit, nodes, answers.listed_frequencies(at))
-    return answers.response_curves(
-        circuit, nodes, answers.swept_frequencies(circuit, start, stop, per_decade)
+        return answers.response_curves(circuit, nodes, _in_range(answers.listed_frequencies(at)))
+    axis = answers.swept_frequencies(circuit, start, stop, per_decade)
+    if not axis:
+        raise _no_points(circuit)
+    return answers.response_curves(circuit, nodes, axis)
+
+
+def _in_range(points: list[float]) -> list[float]:
+    from ..circuit.circuit_file import HIGHEST_FREQUENCY, LOWEST_FREQUENCY
+
+    for point in points:
+        if point and not LOWEST_FREQUENCY <= point <= HIGHEST_FREQUENCY:
+            raise InputError(
+                f"--at is {point!r} Hz.",
+                remedy=f"Give zero, or {LOWEST_FREQUENCY:g} Hz to {HIGHEST_FREQUENCY:g} Hz.",
+            )
+    return points
+
+
+def _no_points(circuit: Circuit) -> InputError:
+    from ..netlist import sweep_fault
+
+    sweep = circuit.analyses.ac
+    fault = sweep_fault(sweep) if sweep is not None else None
+    return InputError(
+        f"the circuit's own ac sweep has no points{f': {fault}' if fault else ''}.",
+        file=circuit.file,
+        remedy="Mend it, or give --from and --to.",
     )
+
+
+def _named(circuit: Circuit, given: str) -> str:
+    """Nodes as the circuit calls them: `v(a,b)` is the pair "a b", and netlists know no case."""
+    voltage = re.fullmatch(r"\s*v\(([^()]*)\)\s*", given, re.IGNORECASE)
+    words = voltage[1].replace(",", " ").split() if voltage else given.split()
+    if circuit.origin == "netlist":
+        folded = {node.lower(): node for node in circuit.network.nodes}
+        words = [word if circuit.network.has_node(word) else folded.get(word.lower(), word) for word in words]
+    return " ".join(words) if words else given

@@ -277,12 +277,12 @@ def _limits(network: Network, of: Sequence[Pair], sources: Sequence[str], low: f
     if not solver_for(network).eliminates:
         size = np.maximum(size, np.abs(voltages).max(axis=1, keepdims=True))
     values = np.where(np.abs(values) <= 64 * np.finfo(float).eps * size, 0.0, values)
-    near, far = np.abs(values[..., 1]), np.abs(values[..., 2])
-    if (far > 1e4 * near).any():
+    near, further = np.abs(values[..., 1]), np.abs(values[..., 2])
+    if (further > 1e4 * near).any():
         raise UndecidedError(
             "the output follows the rate of change of a source, so an edge would make it infinite."
         )
-    return values[..., 0], np.where(far < 1e-4 * near, 0.0, values[..., 1])
+    return values[..., 0], np.where(further < 1e-4 * near, 0.0, values[..., 1])
 
 
 def _passive_residues(

@@ -15,6 +15,7 @@ another however far apart their rates lie: T. Ogita, K. Aishima, Japan J. Indust
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -59,9 +60,10 @@ def passive_modes(branches: Branches, slowest: float) -> PassiveModes:
     basis = _inverse_factor(branches, weights)
 
     def from_(shapes: Float) -> PassiveModes:
-        for rows in instant:  # what no capacitor sees is constant over each group that capacitors join
-            shapes[rows, modes:] = shapes[rows[0], modes:]
-        shapes[:, modes:] *= _tied(branches, instant)[:, None]
+        if instant:  # what no capacitor sees is constant over each group that capacitors join
+            for rows in instant:
+                shapes[rows, modes:] = shapes[rows[0], modes:]
+            shapes[:, modes:] *= _tied(branches, instant)[:, None]
         if floating:
             shapes[:, : len(floating)] = whole_groups(branches, floating) / np.sqrt(shift)
         return refined_modes(branches, weights, shapes, len(floating), modes)
@@ -184,11 +186,10 @@ def _refined(branches: Branches, weights: Float, start: Float, floating: int, mo
     The first `floating` columns are exact and stay; the columns from `modes` on are those no capacitor sees.
     """
     shapes: Twofold = (start, np.zeros_like(start))
-    capacitance, admittance = _roots(branches.capacitance), _roots(weights)
+    roots = _roots([branches.capacitance, weights])
     for attempt in range(_MOST_REFINEMENTS):
         across = _across(branches, shapes)
-        stored = _form(capacitance, across)
-        driven = _form(admittance, across)
+        stored, driven = _forms(roots, across)
         theta = _quotients(stored, driven, modes)
         if attempt < 2 and (turned := _turned(shapes, stored, driven, theta, floating, modes)) is not None:
             shapes = turned
@@ -212,16 +213,25 @@ def _across(branches: Branches, shapes: Twofold) -> Twofold:
     return twofold.subtract((padded[0][a], padded[1][a]), (padded[0][b], padded[1][b]))
 
 
-def _roots(weights: Float) -> tuple[Indices, Twofold]:
-    """Which weights are not zero, and a column of their square roots."""
-    used = np.flatnonzero(weights)
-    return used, twofold.square_root(weights[used, None])
+def _roots(weights: Sequence[Float]) -> tuple[Indices, Twofold]:
+    """The branches of each set of weights that are not zero, and their square roots: (sets, most of any set).
+
+    Where a set has fewer, zeros fill its rows up.
+    """
+    used = [np.flatnonzero(numbers) for numbers in weights]
+    shape = (len(weights), max(len(rows) for rows in used))
+    branch, high, low = np.zeros(shape, dtype=np.int64), np.zeros(shape), np.zeros(shape)
+    for number, rows in enumerate(used):
+        branch[number, : len(rows)] = rows
+        high[number, : len(rows)], low[number, : len(rows)] = twofold.square_root(weights[number][rows])
+    return branch, (high[..., None], low[..., None])
 
 
-def _form(roots: tuple[Indices, Twofold], across: Twofold) -> Twofold:
-    """(A V)^T w (A V)."""
-    used, root = roots
-    return twofold.gram(twofold.product((across[0][used], across[1][used]), root))
+def _forms(roots: tuple[Indices, Twofold], across: Twofold) -> list[Twofold]:
+    """(A V)^T w (A V) for each set of weights w."""
+    branch, root = roots
+    high, low = twofold.gram(twofold.product((across[0][branch], across[1][branch]), root))
+    return list(zip(high, low, strict=True))
 
 
 def _quotients(stored: Twofold, driven: Twofold, modes: int) -> Twofold:

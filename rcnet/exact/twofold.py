@@ -95,44 +95,52 @@ def sum_rows(a: Twofold) -> Twofold:
 
 
 def gram(a: Twofold) -> Twofold:
-    """The product a^T a for a of shape (terms, columns), to 2^-100 of the product of the columns' greatest
-    entries.
+    """The products a^T a for several a, (several, terms, columns), to 2^-100 of the product of the columns'
+    greatest entries.
     """
-    if len(a[0]) > _CHUNK:
-        parts = [slice(start, start + _CHUNK) for start in range(0, len(a[0]), _CHUNK)]
-        products = [gram((a[0][p], a[1][p])) for p in parts]
+    terms = a[0].shape[1]
+    if terms > _CHUNK:
+        parts = [slice(start, start + _CHUNK) for start in range(0, terms, _CHUNK)]
+        products = [gram((a[0][:, p], a[1][:, p])) for p in parts]
         return sum_rows((np.array([p[0] for p in products]), np.array([p[1] for p in products])))
-    bits = (53 - math.ceil(math.log2(2 * max(len(a[0]), 1)))) // 2
+    bits = (53 - math.ceil(math.log2(2 * max(terms, 1)))) // 2
     slices, scale = _sliced(a, bits)
-    turned = slices.swapaxes(1, 2)
+    turned = slices.swapaxes(-2, -1)
     high = turned[0] @ slices[0]
     low = np.zeros_like(high)
-    # Products of slices i and j are multiples of one number for each i + j, and because slices after the first
-    # hold a sign in their bits, all of them together sum to less than 2 terms 2^(2 bits) of it: no rounding.
+    # Products of slices i and j are multiples of one number for each i + j. Slices after the first hold a sign
+    # in their bits, so all of them together sum to less than 2 terms 2^(2 bits) of it: nothing is rounded.
     for order in range(1, _SLICES):
-        share = (turned[: order + 1] @ slices[order::-1]).sum(axis=0)
+        pairs = (order + 1) // 2
+        share = (turned[:pairs] @ slices[order : order - pairs : -1]).sum(axis=0)
+        share = share + share.swapaxes(-2, -1)
+        if order % 2 == 0:
+            share += turned[pairs] @ slices[pairs]
         high, error = two_sum(high, share)
         low += error
     high, low = renormalised(high, low)
-    both = scale[:, None] * scale
+    both = scale.swapaxes(-2, -1) * scale
     return high * both, low * both
 
 
 def _sliced(a: Twofold, bits: int) -> tuple[Float, Float]:
-    """Slices (slices, terms, columns) of `bits` bits each, largest first, of the columns scaled by a power of
-    two to at most one, and the scale.
+    """Slices (slices, several, terms, columns) of `bits` bits each, largest first, of the columns scaled by a
+    power of two to at most one, and the scale, (several, 1, columns).
     """
-    greatest = np.abs(a[0]).max(axis=0, initial=0.0)
+    greatest = np.abs(a[0]).max(axis=-2, initial=0.0, keepdims=True)
     scale = np.exp2(np.ceil(np.log2(np.where(greatest > 0, greatest, 1.0))))
     high, low = a[0] / scale, a[1] / scale
-    slices = np.empty((_SLICES, *high.shape))
-    for number in range(_SLICES):
+    slices, spare = np.empty((_SLICES, *high.shape)), np.empty_like(high)
+    for number, top in enumerate(slices):
         # Adding and taking away 2^(52 - bits of this slice and those before) rounds to a multiple of its last
         # bit.
         cutter = 1.5 * 2.0 ** (52 - bits * (number + 1))
-        slices[number] = top = (high + cutter) - cutter
+        np.add(high, cutter, out=top)
+        top -= cutter
         # What is left of the high part is zero or no smaller than the low one: Dekker's sum will do.
-        rest = high - top
-        high = rest + low
-        low = low - (high - rest)
+        high -= top
+        np.add(high, low, out=spare)
+        high -= spare
+        low += high
+        high, spare = spare, high
     return slices, scale

@@ -263,7 +263,13 @@ class _Reader:
         if len(words) == 1:
             return number.value
         if len(words) == 2 and comma and comma[1] == f"{words[0]},{words[1]}":
-            return read_spice_number(words[1]).value
+            last = read_spice_number(words[1]).value
+            if last <= 0 and kind in "RCL":
+                raise CircuitError(
+                    f"{name} is written {comma[1]!r}: a comma parts words in SPICE, so it is {last:g}.",
+                    remedy="Write a decimal point, or leave out what marks the thousands.",
+                )
+            return last
         message, remedy = reason_behind_value(name, words[0], words[1])
         raise CircuitError(message, remedy=remedy)
 

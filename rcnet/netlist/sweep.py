@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ..circuit import Sweep
+from ..circuit.circuit_file import HIGHEST_FREQUENCY, LOWEST_FREQUENCY
 from ..errors import CircuitError
 
 MAX_POINTS = 2_000_000
@@ -15,7 +16,7 @@ _RELTOL = 1e-3  # ngspice's default; a point this far beyond the end, in steps, 
 
 
 def frequencies(sweep: Sweep) -> npt.NDArray[np.float64]:
-    """The points of an ac sweep, Hz, rising; none where `start` and `stop` leave none.
+    """The points of an ac sweep, Hz, rising; none where `start` and `stop` leave none, or lie out of range.
 
     `dec`: n = floor(log10(stop/start) N) steps of one ratio, stretched so that the last point is `stop`;
     `oct`: steps of 2^(1/N) up to `stop`; `lin`: N points evenly spaced, one only where N is 2 (measured on
@@ -23,6 +24,8 @@ def frequencies(sweep: Sweep) -> npt.NDArray[np.float64]:
     """
     start, stop = sweep.start, sweep.stop
     if not (math.isfinite(stop) and start <= stop) or start < 0 or (start == 0 and sweep.kind != "lin"):
+        return np.empty(0)
+    if _out_of_range(sweep):
         return np.empty(0)
     step = _step(sweep)
     if step is None:
@@ -51,6 +54,10 @@ def _step(sweep: Sweep) -> float | None:
     return math.exp(math.log(sweep.stop / sweep.start) / steps) if steps else None
 
 
+def _out_of_range(sweep: Sweep) -> bool:
+    return 0 < sweep.start < LOWEST_FREQUENCY or not LOWEST_FREQUENCY <= sweep.stop <= HIGHEST_FREQUENCY
+
+
 def _require_fewer(sweep: Sweep, points: float) -> None:
     if points > MAX_POINTS:
         raise CircuitError(
@@ -64,6 +71,8 @@ def sweep_fault(sweep: Sweep, *, noise: bool = False) -> str | None:
     start, stop = sweep.start, sweep.stop
     if not math.isfinite(stop) or start > stop:
         return "it ends below its start, so there is no point in it"
+    if start >= 0 and stop > 0 and _out_of_range(sweep):
+        return f"only frequencies from {LOWEST_FREQUENCY:g} Hz to {HIGHEST_FREQUENCY:g} Hz are computed"
     if sweep.kind == "lin":
         if start < 0 or (noise and start == 0):
             return f"it begins at {start:g} Hz"

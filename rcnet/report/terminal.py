@@ -27,6 +27,8 @@ WIDTH = 80
 MOST_LISTED = 12  # curves or spans shown one by one; the JSON document holds them all
 # A hand value closer than this to the exact one is shown as the same: no part is made that well.
 SAME = {"dB": 1e-3, "deg": 1e-2, "share": 1e-4}
+# The remark about coarse curves names them and says why; the JSON document holds it, here a count is enough.
+_COARSE = "smaller differences do not count there."
 ROUNDING = 1e-9  # a difference below this share of the value is told as such; its decibels say nothing
 
 # A word always says what a colour says.
@@ -239,7 +241,12 @@ def _show_details(comparison: Comparison, out: Console) -> None:
     for why, names in _grouped(comparison).items():
         _say(out, f"not compared: {names}: {why}", indent=4, hang=2)
     for remark in comparison.remarks:
-        _say(out, f"note: {remark}", indent=4, hang=2)
+        if not remark.endswith(_COARSE):
+            _say(out, f"note: {remark}", indent=4, hang=2)
+    coarse = sum(curve.coarse is not None for curve in comparison.curves)
+    if coarse:
+        total = _counted(len(comparison.curves), "curve")
+        _say(out, f"note: in {coarse} of {total} rounding hides more than 0.01 dB in places", indent=4)
 
 
 def _grouped(comparison: Comparison) -> dict[str, str]:
@@ -354,8 +361,11 @@ def show_total(words: Sequence[str], out: Console) -> None:
 # ---------------------------------------------------------------------- response
 
 
-def show_response(curves: Sequence[Curve], out: Console) -> None:
-    """Curves of one axis as a table, of dB and degrees or of volts; side by side as many as fit."""
+def show_response(curves: Sequence[Curve], out: Console, *, quiet: bool = False) -> None:
+    """Curves of one axis as a table, of dB and degrees or of volts; side by side as many as fit.
+
+    No headings where `quiet`.
+    """
     timed = curves[0].analysis == "transient"
     heading, unit = ("time", "s") if timed else ("frequency", "Hz")
     columns = [_column(heading, [format_quantity(x, unit, 6) for x in curves[0].axis.tolist()])]
@@ -363,23 +373,29 @@ def show_response(curves: Sequence[Curve], out: Console) -> None:
     for curve in curves:
         pair = _waveform_column(curve) if timed else _phasor_columns(curve)
         if block and sum(len(column[0]) + 2 for column in columns + block + pair) - 2 > out.width:
-            _show_rows(columns + block, out)
+            _show_rows(columns + block, out, quiet=quiet)
             out.print()
             block = []
         block += pair
-    _show_rows(columns + block, out)
+    _show_rows(columns + block, out, quiet=quiet)
 
 
 def _waveform_column(curve: Curve) -> list[list[str]]:
-    return [_column(curve.name, [format_quantity(value, "V", 6) for value in curve.values.tolist()])]
+    return [_column(curve.name, [format_quantity(value + 0.0, "V", 6) for value in curve.values.tolist()])]
 
 
 def _phasor_columns(curve: Curve) -> list[list[str]]:
     values = curve.values.tolist()
     return [
-        _column(f"{curve.name} dB", [f"{20 * math.log10(abs(v)):.4f}" if v else "-inf" for v in values]),
-        _column("deg", [f"{math.degrees(math.atan2(v.imag, v.real)):.3f}" if v else "-" for v in values]),
+        _column(f"{curve.name} dB", [_fixed(20 * math.log10(abs(v)), 4) if v else "-inf" for v in values]),
+        _column("deg", [_fixed(math.degrees(math.atan2(v.imag, v.real)), 3) if v else "-" for v in values]),
     ]
+
+
+def _fixed(value: float, places: int) -> str:
+    """A number with that many decimals; one that rounds to zero has no sign."""
+    text = f"{value:.{places}f}"
+    return text if float(text) else text.removeprefix("-")
 
 
 def _column(heading: str, cells: list[str]) -> list[str]:
@@ -388,6 +404,8 @@ def _column(heading: str, cells: list[str]) -> list[str]:
     return [f"{text:>{width}}" for text in (heading, *cells)]
 
 
-def _show_rows(columns: Sequence[Sequence[str]], out: Console) -> None:
+def _show_rows(columns: Sequence[Sequence[str]], out: Console, *, quiet: bool) -> None:
     for number, row in enumerate(zip(*columns, strict=True)):
+        if quiet and not number:
+            continue
         out.print(_styled("  ".join(row), "" if number else "dim"), soft_wrap=True)

@@ -108,6 +108,12 @@ def write_file(path: str | os.PathLike[str], data: str | bytes) -> None:
     Raises OutputError.
     """
     target = Path(path)
+    if target.is_dir():
+        raise OutputError(
+            "a folder of that name stands there.",
+            file=os.fspath(path),
+            remedy="Name a file inside it, or choose another place with --output.",
+        )
     payload = data.encode("utf-8") if isinstance(data, str) else data
     try:
         with _scratch_beside(target) as scratch:

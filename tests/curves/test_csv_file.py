@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import io
 import time
+from decimal import Decimal
 
 import numpy as np
 import pytest
@@ -54,6 +55,95 @@ def test_a_complex_curve(form: str) -> None:
     assert (curve.name, curve.analysis, curve.unit) == ("v(out)", "ac", "V")
     assert curve.axis.tolist() == [10, 20]
     np.testing.assert_allclose(curve.values, [0.6 - 0.8j, 0.3 - 0.4j], rtol=1e-15)
+
+
+# 0.6 - 0.8j and 0.3 - 0.4j again, in what each header calls for.
+SHAPES = {
+    "cartesian": ("0.6,-0.8", "0.3,-0.4"),
+    "millivolts": (f"1000,{DEG!r}", f"500,{DEG!r}"),
+    "linear degrees": (f"1,{DEG!r}", f"0.5,{DEG!r}"),
+    "linear radians": (f"1,{RAD!r}", f"0.5,{RAD!r}"),
+    "level degrees": (f"0,{DEG!r}", f"{DB!r},{DEG!r}"),
+    "level radians": (f"0,{RAD!r}", f"{DB!r},{RAD!r}"),
+}
+UNNAMED_HEADERS = {
+    "Frequency (Hz),Gain (dB),Phase (deg)": "level degrees",
+    "Freq. [Hz],Magnitude (dB),Phase (°)": "level degrees",
+    "frequency,magnitude,phase (rad)": "linear radians",
+    "f/Hz,gain/dB,phase/°": "level degrees",
+    "f / Hz,Gain / V/V,Phase / rad": "linear radians",
+    "FREQ [HZ],GAIN [DB],PHASE [RAD]": "level radians",
+    "f,Gain (1),Angle (deg)": "linear degrees",
+    "f,Amplitude (mV),Phase (deg)": "millivolts",
+    "f,Real,Imag": "cartesian",
+    "f,Re (V),Im (V)": "cartesian",
+}
+NAMED_HEADERS = {
+    "f,re(v(out)),im(v(out))": "cartesian",
+    "f,real(v(out)),imag(v(out))": "cartesian",
+    "f,vr(out),vi(out)": "cartesian",
+    "f,mag(v(out)),phase(v(out)) [deg]": "linear degrees",
+    "f,mag(v(out)) [mV],ph(v(out)) (deg)": "millivolts",
+    "f,vm(out),vp(out) [rad]": "linear radians",
+    "f,db(v(out)),phase(v(out)) (rad)": "level radians",
+    "f,VDB(OUT),VP(OUT)/°": "level degrees",
+    "f,vdb(out) [dB],vp(out) [Deg]": "level degrees",
+    "f,v(out) [dB],v(out) [deg]": "level degrees",
+    "f,v(out) (V),v(out) (deg)": "linear degrees",
+    "f,v(out).mag [mV],v(out).deg [deg]": "millivolts",
+}
+
+
+@pytest.mark.parametrize("header", [*UNNAMED_HEADERS, *NAMED_HEADERS])
+def test_other_names_of_columns(header: str) -> None:
+    """By function, word and unit; where no node is named the curve is `response`, with a remark."""
+    first, second = SHAPES[(UNNAMED_HEADERS | NAMED_HEADERS)[header]]
+    curves = parse_csv(f"{header}\n10,{first}\n20,{second}\n", "flow.csv")
+    (curve,) = curves
+    np.testing.assert_allclose(curve.values, [0.6 - 0.8j, 0.3 - 0.4j], rtol=1e-15)
+    if header in UNNAMED_HEADERS:
+        assert curve.name == "response"
+        assert curves.remarks == ("the trace names no node; it is taken for the circuit's output",)
+    else:
+        assert (curve.name, curve.unit, curves.remarks) == ("v(out)", "V", ())
+
+
+def test_brackets_that_belong_to_a_name() -> None:
+    """`v(1)` and `v(rad)` are nodes; along time words and functions are but names, V and mV are units."""
+    header = "time,v(1),v(rad),magnitude,vm(out),flow (l/s),v(a) [V],v(b) [mV]"
+    curves = parse_csv(f"{header}\n0,1,2,3,4,5,6,7.00\n1,1,2,3,4,5,6,8.00\n", "t.csv")
+    names = ["v(1)", "v(rad)", "magnitude", "vm(out)", "flow (l/s)", "v(a)", "v(b)"]
+    assert [curve.name for curve in curves] == names
+    assert curves.curves[-1].values.tolist() == [0.007, 0.008]
+    assert curves.curves[-1].resolution is not None
+    np.testing.assert_allclose(curves.curves[-1].resolution, 5e-6, rtol=1e-12)
+    (node,) = parse_csv("f,v(1) [dB],v(1) [deg]\n1,0.0,0.0\n", "f.csv")
+    assert node.name == "v(1)"
+
+
+def test_advice_lists_the_forms() -> None:
+    """A header of no known form is answered with the forms that are read; a lone half with its partner."""
+    with pytest.raises(ResultsError) as caught:
+        parse_csv("frequency,humidity\n1,2\n", "flow.csv")
+    for form in ("v(out).real", "re(v(out))", "vdb(out)", "Gain (dB)", "Phase (deg)"):
+        assert f"'{form}'" in (caught.value.remedy or "")
+    with pytest.raises(ResultsError) as caught:
+        parse_csv("frequency,Gain (dB)\n1,2\n", "flow.csv")
+    assert caught.value.remedy == "Add the column 'Phase (deg)'."
+
+
+def test_a_long_header_name_takes_no_time() -> None:
+    """A hostile name of a million slashes is refused at once."""
+    start = time.perf_counter()
+    with pytest.raises(ResultsError):
+        parse_csv(f"f,{'a/' * 1_000_000} x y\n1,2\n", "flow.csv")
+    assert time.perf_counter() - start < 2
+
+
+def test_an_axis_may_begin_at_zero() -> None:
+    """0 is a frequency and a time, with a minus sign, too."""
+    assert _one(HEAD + "-0.0,1,0\n1,1,0\n").axis.tolist() == [0, 1]
+    assert _one("time,v(out)\n0,1\n1,1\n").axis.tolist() == [0, 1]
 
 
 def test_real_curves_along_time() -> None:
@@ -136,6 +226,26 @@ REFUSED = {
     "a point twice": (HEAD + "1,2,3\n1,2,3\n", 3, "must rise"),
     "axis overflow": ("f [GHz],v(out).real,v(out).imag\n1e305,2,3\n", 2, "beyond what a double holds"),
     "negative magnitude": ("f,v(out).mag,v(out).deg\n1,1,0\n2,-1,0\n", 3, "is -1.0, which is no magnitude"),
+    "negative frequency": (HEAD + "-5,1,0\n0,1,0\n", 2, "frequency is -5.0, below 0"),
+    "negative time": ("Time (ms),v(out)\n-0.1,1\n0,1\n", 2, "time is -0.1, below 0"),
+    "gain without a unit": ("f,Gain,Phase (deg)\n1,1,0\n", 1, "'Gain' does not say whether it is in dB"),
+    "phase without a unit": ("f,Magnitude,Phase\n1,1,0\n", 1, "'Phase' is a phase without a unit"),
+    "vp without a unit": ("f,vdb(out),vp(out)\n1,1,0\n", 1, "'vp\\(out\\)' is a phase without a unit"),
+    "phase in volts": ("f,Magnitude,Phase (V)\n1,1,0\n", 1, "'Phase \\(V\\)' cannot have the unit 'V'"),
+    "gain in degrees": ("f,Gain (deg),Phase (deg)\n1,1,0\n", 1, "'Gain \\(deg\\)' cannot have the unit"),
+    "level in volts": ("f,vdb(out) [V],vp(out) [deg]\n1,1,0\n", 1, "cannot have the unit 'V'"),
+    "real part in decibels": ("f,re(v(out)) [dB],im(v(out))\n1,1,0\n", 1, "cannot have the unit 'dB'"),
+    "megavolts": ("f,Gain (MV),Phase (deg)\n1,1,0\n", 1, "unit 'MV', which is not read"),
+    "unread unit": ("f,Gain (Np),Phase (deg)\n1,1,0\n", 1, "unit 'Np', which is not read"),
+    "gain alone": ("f,Gain (dB)\n1,1\n", 1, "'Gain \\(dB\\)' has no partner"),
+    "one part in two forms": (
+        "f,vdb(out),db(v(out)),vp(out) [deg]\n1,1,1,0\n",
+        1,
+        "'db\\(v\\(out\\)\\)' appears twice, first as 'vdb\\(out\\)'",
+    ),
+    "unnamed and semicolons": ("Frequency (Hz);Gain (dB);Phase (deg)\n1;0;0\n", 1, "parted by semicolons"),
+    "unnamed and tabs": ("Freq. [Hz]\tGain (dB)\tPhase (deg)\n1\t0\t0\n", 1, "parted by tabs"),
+    "level in decibels along time": ("time,v(out) [dB]\n1,2\n", 1, "a curve along time is real"),
     "level beyond doubles": ("f,v(out).db,v(out).deg\n1,7000,0\n", 2, "is 7000.0, which is no magnitude"),
 }
 
@@ -163,10 +273,17 @@ def test_lines_are_counted_far_into_the_file() -> None:
 # column of cells: half units that the digits leave open, by the rule in the docstring
 RESOLUTIONS = {
     "fixed number of decimals": (["0.123", "12.345", "0.000"], [0.5e-3, 0.5e-3, 0.5e-3]),
-    "zeros dropped": (["0.123", "12.345", "0"], [0.5e-3 * 1e-2, 0.5e-3, 0.5e-3]),
+    "zeros dropped": (["0.123", "12.345", "0"], [0.5e-5, 0.5e-3, 0]),
+    "six digits, a small cell": (["0.999917", "0.000720394", "12.5"], [0.5e-6, 0.5e-9, 0.5e-4]),
+    "four digits, a large cell": (["1234", "0.01234", "0"], [0.5, 0.5e-5, 0]),
+    "a zero with decimals among others": (["0.00", "0.1234", "5"], [0.5e-2, 0.5e-4, 0.5e-3]),
     "exponents": (["1.23e-1", "4.56e+3", "0.00e0"], [0.5e-3, 5.0, 0]),
     "one exponent in the column": (["0.123", "1.2345e3", "1"], [0.5e-5, 0.05, 0.5e-4]),
     "whole numbers": (["1", "10", "1000"], [0.5e-3, 0.5e-2, 0.5]),
+    "ones": (["1", "1", "1"], [0.5e-2, 0.5e-2, 0.5e-2]),
+    "one digit and exponents": (["1e-3", "2e0", "-3e3"], [0.5e-5, 0.5e-2, 5.0]),
+    "a single row": (["0.25"], [0.5e-3]),
+    "nothing but whole zeros": (["0", "-0", "0"], None),
     "fourteen digits": (["1.2345678901234", "2", "3"], [0.5e-13, 0.5e-13, 0.5e-13]),
     "fifteen digits": (["1.23456789012345", "2", "3"], None),
     "zeros": (["0e0", "0", "0"], None),
@@ -175,7 +292,7 @@ RESOLUTIONS = {
 
 @pytest.mark.parametrize("case", RESOLUTIONS)
 def test_resolution_of_a_real_column(case: str) -> None:
-    """Half a unit of the last decimal where all have as many; else the smaller of the two."""
+    """Half a unit of the last decimal where all have as many; else of the last of the most digits."""
     cells, expected = RESOLUTIONS[case]
     curve = _one("time,v(out)\n" + "".join(f"{n},{cell}\n" for n, cell in enumerate(cells)))
     if expected is None:
@@ -188,7 +305,7 @@ def test_resolution_of_a_real_column(case: str) -> None:
 def test_resolution_of_axis_and_phasor() -> None:
     """Scaled with the axis; propagated to the modulus: sqrt(dm^2 + (m dphi)^2), dm = m ln(10)/20 dL."""
     full = "1.23456789012345"
-    polar = _one(f"f [kHz],v(out).mag,v(out).deg\n0.1,0.250,30.0\n{full},1,45.5\n")
+    polar = _one(f"f [kHz],v(out).mag,v(out).deg\n0.1,0.250,30.0\n{full},1.000,45.5\n")
     assert polar.axis_resolution is None
     assert polar.resolution is not None
     step = np.deg2rad(0.05)
@@ -209,7 +326,7 @@ def test_resolution_of_axis_and_phasor() -> None:
 @settings(deadline=None, max_examples=100)
 @given(
     st.lists(st.floats(-1e6, 1e6, allow_subnormal=False), min_size=1, max_size=20),
-    st.integers(1, 12),
+    st.integers(2, 12),
     st.booleans(),
 )
 def test_resolution_covers_the_rounding(values: list[float], digits: int, fixed: bool) -> None:
@@ -224,6 +341,27 @@ def test_resolution_covers_the_rounding(values: list[float], digits: int, fixed:
         allowed = curve.resolution if curve.resolution is not None else np.zeros(len(values))
         floor = np.abs(values) * 2**-52
         assert np.all(np.abs(curve.values - values) <= allowed * (1 + 1e-9) + floor)
+
+
+@settings(deadline=None, max_examples=200)
+@given(
+    st.lists(st.floats(-1e20, 1e20, allow_subnormal=False), max_size=20),
+    st.lists(st.floats(-2, 2, allow_subnormal=False), max_size=5),
+    st.integers(4, 12),
+)
+def test_resolution_of_general_format(large: list[float], small: list[float], digits: int) -> None:
+    """%g drops zeros and mixes forms: the rounding lies within the resolution, which is no wider than it."""
+    # Two numbers that show all digits, at different places: whole numbers alone would show fewer.
+    values = [1 / 3, 100 / 3, *large, *small]
+    cells = [f"{value:.{digits}g}" for value in values]
+    curve = _one("time,v(out)\n" + "".join(f"{n},{cell}\n" for n, cell in enumerate(cells)))
+    assert curve.resolution is not None
+    for value, cell, resolution in zip(values, cells, curve.resolution, strict=True):
+        shown = Decimal(cell)
+        # Half a unit of the last of `digits` digits; what %g shows as 10 may have been 9.9996.
+        unit = Decimal(0) if shown.is_zero() else Decimal(5).scaleb(shown.adjusted() - digits)
+        assert abs(Decimal(value) - shown) <= Decimal(float(resolution)) * Decimal("1.000001")
+        assert Decimal(float(resolution)) <= unit * Decimal("1.01")
 
 
 FREQUENCY = np.array([0.1, 1 / 3, 1e9])
