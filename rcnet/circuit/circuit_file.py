@@ -80,10 +80,10 @@ def _syntax_error(exc: tomllib.TOMLDecodeError, text: str, file: str) -> Circuit
     key, sign, _ = text.split("\n")[line - 1].partition("=")
     if why == "Cannot overwrite a value" and sign:
         return CircuitError(
-            f"the key {shown(key.strip())} stands here for the second time.",
+            f"this is not valid TOML: the key {shown(key.strip())} stands here for the second time.",
             file=file,
             line=line,
-            remedy="Give it another name, or take one of the two out.",
+            remedy="Mend this line: give it another name, or take it out.",
         )
     return CircuitError(
         f"this is not valid TOML: {why[:1].lower()}{why[1:]}.", file=file, line=line, remedy="Mend this line."

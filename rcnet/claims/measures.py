@@ -24,7 +24,7 @@ from ..exact import (
     solver_for,
     span_of,
 )
-from .profile import PER_DECADE, decibels, half_power, profile
+from .profile import NOTHING_ARRIVES, PER_DECADE, decibels, half_power, profile
 
 Options = Mapping[str, float | str]
 Pair = tuple[int, int]
@@ -51,10 +51,29 @@ def evaluate(network: Network, name: str, of: str | None, options: Options) -> f
     spec = MEASURES[name]
     function = COMPUTED.get(name) or _in_other_rooms()[name]
     pair = node_pair(network, of) if of is not None else (0, 0)
-    value = function(network, pair, options)
+    _reachable(name, options)
+    try:
+        with np.errstate(over="raise", invalid="raise", divide="raise"):
+            value = float(function(network, pair, options))
+    except (FloatingPointError, OverflowError, ZeroDivisionError):
+        raise UndecidedError(
+            f"{spec.name} leads beyond the numbers double precision holds here.",
+            remedy="Check the values for a slip of many powers of ten.",
+        ) from None
     if not math.isfinite(value):
         raise UndecidedError(f"{spec.name} is not a finite number here.")
     return value
+
+
+def _reachable(name: str, options: Options) -> None:
+    """Raises UndecidedError for a frequency whose omega is no finite double; noise may go up to infinity."""
+    for key in ("at", "from", "to") if name == "noise" else ("at",):
+        value = float(options.get(key, 0))
+        if not math.isfinite(2 * math.pi * value) and not (key == "to" and value == math.inf):
+            raise UndecidedError(
+                f"{key} = {value:.6g} Hz is beyond the frequencies double precision can reckon with.",
+                remedy="Name a lower frequency.",
+            )
 
 
 def _in_other_rooms() -> Mapping[str, Callable[[Network, Pair, Options], float]]:
@@ -89,10 +108,29 @@ def _level(network: Network, of: Pair, frequency: float) -> float:
         if abs(value) < _NULL and _is_null(network, of, 2 * math.pi * frequency):
             value = 0
     if value == 0:
+        _refuse_silence(network, of)
         raise UndecidedError(
             f"nothing arrives at the output at {frequency:.6g} Hz: its gain is no number of dB."
         )
     return float(decibels(abs(value)))
+
+
+def _refuse_silence(network: Network, of: Pair) -> None:
+    """Raises UndecidedError where the response is zero at every frequency, not only at one."""
+    span = span_of(network)
+    frequencies = np.geomspace(span.low / 100, span.high * 100, 9) / (2 * math.pi)
+    if not np.any(response(network, frequencies, _name(network, of))):
+        raise UndecidedError(NOTHING_ARRIVES)
+
+
+def _refuse_underflow(value: Numbers) -> None:
+    """Raises UndecidedError where a response is so small that a double no longer holds all its digits."""
+    magnitude = np.abs(value)
+    if ((magnitude > 0) & (magnitude < np.finfo(float).tiny)).any():
+        raise UndecidedError(
+            "the response is smaller than double precision can hold with all its digits.",
+            remedy="Check the gains of the controlled sources.",
+        )
 
 
 def _is_null(network: Network, of: Pair, omega: float) -> bool:
@@ -120,7 +158,8 @@ def gain(network: Network, of: Pair, options: Options) -> float:
 
 def attenuation(network: Network, of: Pair, options: Options) -> float:
     """The greatest gain over all frequencies, limits included, minus the gain at a frequency, dB."""
-    return profile(network, of).peak - _level(network, of, _at(options))
+    level = _level(network, of, _at(options))
+    return max(profile(network, of).peak - level, 0.0)
 
 
 def phase(network: Network, of: Pair, options: Options) -> float:
@@ -132,7 +171,7 @@ def phase(network: Network, of: Pair, options: Options) -> float:
     target, lowest = _omega(options), span_of(network).low * 1e-6
     points = [lowest]
     if target > lowest:
-        steps = math.ceil(math.log10(target / lowest) * PER_DECADE) + 1
+        steps = math.ceil((math.log10(target) - math.log10(lowest)) * PER_DECADE) + 1
         points = [*np.geomspace(lowest, target, steps)[:-1].tolist(), target]
     stations = _stations(network, of, points)
     start = cmath.phase(stations[0].value)
@@ -162,8 +201,10 @@ def _stations(network: Network, of: Pair, points: Sequence[float]) -> list[_Stat
     step = solver_for(network).block()
     parts = [response_and_slope(network, omega[k : k + step], of) for k in range(0, len(omega), step)]
     value, slope = (np.concatenate(pieces) for pieces in zip(*parts, strict=True))
+    _refuse_underflow(value)
     lost = np.flatnonzero(_vanishes(value, slope, omega))
     if len(lost):
+        _refuse_silence(network, of)
         where = omega[lost[0]] / (2 * math.pi)
         raise UndecidedError(f"the response vanishes at {where:.6g} Hz, where its phase jumps.")
     rate = omega * (slope / value).real
@@ -196,7 +237,9 @@ def group_delay(network: Network, of: Pair, options: Options) -> float:
         # digits; further down, rounding would take more than the limit gives.
         omega = lowest
     value, slope = response_and_slope(network, np.array([omega]), of)
+    _refuse_underflow(value)
     if _vanishes(value, slope, omega).any():
+        _refuse_silence(network, of)
         raise UndecidedError("the response vanishes there, so it has no phase.")
     return -float((slope[0] / value[0]).real)
 
@@ -269,8 +312,10 @@ def elmore_delay(network: Network, of: Pair, options: Options) -> float:
     W. C. Elmore, J. Appl. Phys. 19:55-63, 1948.
     """
     if limit(network, of, high=False) == 0:
+        _refuse_silence(network, of)
         raise UndecidedError("nothing passes at dc, so the impulse response has no area to divide by.")
     value, slope = response_and_slope(network, np.zeros(1), of)
+    _refuse_underflow(value)
     return -float((slope[0] / value[0]).real)
 
 

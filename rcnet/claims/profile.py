@@ -15,10 +15,13 @@ from ..errors import UndecidedError
 from ..exact import limit, natural_frequencies, response, span_of
 
 Float = npt.NDArray[np.float64]
+Indices = npt.NDArray[np.int64]
 
 HALF_POWER_DB = 10 * math.log10(2)  # 3.0103 dB: power is half
 PER_DECADE = 32  # a response with real poles turns over about a decade; this brackets each turn many times
 _TIE_DB = 1e-9  # two peaks closer than this are equally high
+_MOST_TURNS = 64  # the highest ones refined, to bound the time taken
+NOTHING_ARRIVES = "nothing of the source arrives at this output at any frequency."
 
 
 @dataclass(frozen=True)
@@ -58,6 +61,8 @@ def _profile(network: Network, _values: bytes, _parts: int, of: tuple[int, int])
     text = _text(network, of)
     level = decibels(response(network, omega / (2 * math.pi), text))
     ends = [float(decibels(limit(network, of, high=high))) for high in (False, True)]
+    if not (np.isfinite(level) | (level == -math.inf)).all():
+        raise UndecidedError("somewhere the response is beyond the numbers double precision holds.")
 
     def level_at(w: float) -> float:
         return float(decibels(response(network, [w / (2 * math.pi)], text))[0])
@@ -65,7 +70,7 @@ def _profile(network: Network, _values: bytes, _parts: int, of: tuple[int, int])
     candidates = [(ends[0], 0.0), (ends[1], math.inf), *_turns(omega, level, level_at)]
     peak = max(height for height, _ in candidates)
     if peak == -math.inf:
-        raise UndecidedError("nothing of the source arrives at this output at any frequency.")
+        raise UndecidedError(NOTHING_ARRIVES)
     # A turn within rounding of a limit is the limit's own flat approach, not a peak of its own.
     at_ends = [where for height, where in candidates[:2] if height >= peak - _TIE_DB]
     inside = [where for height, where in candidates[2:] if height >= peak - 1e-12]
@@ -97,15 +102,28 @@ def _grid(network: Network) -> Float:
 
 def _turns(omega: Float, level: Float, level_at: Callable[[float], float]) -> list[tuple[float, float]]:
     """The local maxima that may be the greatest, each refined: (dB, rad/s)."""
-    inner = np.flatnonzero((level[1:-1] >= level[:-2]) & (level[1:-1] >= level[2:])) + 1
+    middle = level[1:-1]
+    inner = np.flatnonzero((middle >= level[:-2]) & (middle >= level[2:]) & (middle > -math.inf)) + 1
     if not len(inner):
         return []
-    best = level[inner].max()
+    tops = _one_of_each_plateau(level, inner)
+    # The top of a parabola lies above the middle of three points by an eighth of their drop at most.
+    reach = level[tops] + np.maximum(level[tops] - level[tops - 1], level[tops] - level[tops + 1])
+    tops = tops[reach >= level[tops].max() - 1e-3]
     found = []
-    for k in inner[level[inner] >= best - 1.0][:16]:
+    for k in tops[np.argsort(-level[tops], kind="stable")][:_MOST_TURNS].tolist():
         where = _highest(level_at, math.log(omega[k - 1]), math.log(omega[k + 1]))
-        found.append((level_at(where), where))
+        height = level_at(where)
+        found.append((height, where) if height >= level[k] else (float(level[k]), float(omega[k])))
     return found
+
+
+def _one_of_each_plateau(level: Float, inner: Indices) -> Indices:
+    """The highest of the local maxima between which the level dips by no more than rounding."""
+    dips = np.minimum.reduceat(level, inner)[:-1]
+    apart = dips < np.minimum(level[inner[:-1]], level[inner[1:]]) - _TIE_DB
+    groups = np.split(inner, np.flatnonzero(apart) + 1)
+    return np.array([group[np.argmax(level[group])] for group in groups], dtype=np.int64)
 
 
 def _highest(level_at: Callable[[float], float], low: float, high: float) -> float:
@@ -180,7 +198,9 @@ def root(function: Callable[[float], float], low: float, high: float) -> float:
     if fa == 0 or fb == 0:
         return low if fa == 0 else high
     if (fa > 0) == (fb > 0):
-        raise UndecidedError("no crossing lies where one was looked for.")
+        raise UndecidedError(
+            "the response comes so near the level asked for that rounding hides where it crosses it."
+        )
     c, fc, t = a, fa, 0.5
     for _ in range(200):
         x = a + t * (b - a)

@@ -100,27 +100,27 @@ def _periodic(network: Network, of: Pair) -> Periodic:
 
 def mean(network: Network, of: Pair, options: Options) -> float:
     """The mean of the periodic steady state, V."""
-    return _periodic(network, of).mean
+    return float(_periodic(network, of).mean)
 
 
 def rms(network: Network, of: Pair, options: Options) -> float:
     """The root mean square of the periodic steady state, its mean included, V."""
-    return _periodic(network, of).rms
+    return float(_periodic(network, of).rms)
 
 
 def ripple(network: Network, of: Pair, options: Options) -> float:
     """Peak to peak of the periodic steady state, V."""
-    return _periodic(network, of).ripple
+    return float(_periodic(network, of).ripple)
 
 
 def harmonic(network: Network, of: Pair, options: Options) -> float:
     """The peak amplitude of harmonic `order` of the common period in the periodic steady state, V."""
-    return _periodic(network, of).harmonic(int(options["order"]))
+    return float(_periodic(network, of).harmonic(int(options["order"])))
 
 
 def thd(network: Network, of: Pair, options: Options) -> float:
     """The root of the summed squares of harmonics 2 and up over the first, %, all of them in the sum."""
-    return 100 * _periodic(network, of).thd
+    return 100 * float(_periodic(network, of).thd)
 
 
 # ---------------------------------------------------------------------- parts
@@ -140,7 +140,7 @@ def peak_voltage(network: Network, of: Pair, options: Options) -> float:
     """
     pair = ends_of(network, str(options["part"])) if "part" in options else of
     if repeats(network):
-        return _periodic(network, pair).peak
+        return float(_periodic(network, pair).peak)
     return abs(float(settled_values(network, [pair])[0]))
 
 
@@ -153,7 +153,7 @@ def dissipation(network: Network, of: Pair, options: Options) -> float:
     pair = ends_of(network, name)
     if repeats(network):
         state = _periodic(network, pair)
-        return (state.mean**2 + state.alternating_square) / part.value
+        return float((state.mean**2 + state.alternating_square) / part.value)
     return float(settled_values(network, [pair])[0]) ** 2 / part.value
 
 

@@ -10,7 +10,7 @@ import sys
 import threading
 from collections.abc import Iterator
 from contextlib import contextmanager
-from typing import Any
+from typing import Any, TextIO, cast
 
 import click
 
@@ -120,7 +120,7 @@ class _Terminated(BaseException):
 
 @contextmanager
 def _termination_raised() -> Iterator[None]:
-    """SIGTERM as an exception, where there are signals; by default it would leave children and files behind."""
+    """SIGTERM as an exception, where there are signals; else it would leave children and files behind."""
     if os.name != "posix" or threading.current_thread() is not threading.main_thread():
         yield
         return
@@ -137,6 +137,34 @@ def _termination_raised() -> Iterator[None]:
         signal.signal(signal.SIGTERM, before)
 
 
+class _Output:
+    """Standard output that remembers why it took nothing, so that it is not mistaken for another file."""
+
+    refused: OSError | None = None
+
+    def __init__(self, stream: TextIO) -> None:
+        self.stream = stream
+
+    def __getattr__(self, name: str) -> Any:
+        return getattr(self.stream, name)
+
+    def write(self, text: str) -> int:
+        with self._remembering():
+            return self.stream.write(text)
+
+    def flush(self) -> None:
+        with self._remembering():
+            self.stream.flush()
+
+    @contextmanager
+    def _remembering(self) -> Iterator[None]:
+        try:
+            yield
+        except OSError as exc:
+            self.refused = exc
+            raise
+
+
 def run(arguments: list[str] | None = None) -> None:
     """Run the command line; never a traceback for what a user can cause."""
     if sys.stdout is None:
@@ -146,30 +174,22 @@ def run(arguments: list[str] | None = None) -> None:
         # A file's name, or an ohm sign, that the terminal cannot show must not end the program.
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="backslashreplace")
-    given = sys.argv[1:] if arguments is None else arguments
-    try:
-        with _termination_raised():
-            code = _ended(given)
-    except _Terminated:
-        _tell("terminated.")
-        code = TERMINATED
-    try:
-        sys.stdout.flush()
-    except OSError as exc:
-        code = _unwritten(exc)
+    output = _Output(sys.stdout)
+    with contextlib.redirect_stdout(cast("TextIO", output)):
+        code = _ended(sys.argv[1:] if arguments is None else arguments, output)
     sys.exit(code)
 
 
-def _ended(arguments: list[str]) -> int:
+def _ended(arguments: list[str], output: _Output) -> int:
     """Run the verb; what it raises becomes a sentence and an exit code."""
     try:
-        code = group.main(args=arguments, prog_name="rcnet", standalone_mode=False)
-        return code if isinstance(code, int) else 0
-    except click.ClickException as exc:
-        exc.show()
-        if "--json" in arguments:
-            print_json(error_document(InputError(exc.format_message(), remedy="See `rcnet --help`.")))
-        return IMPOSSIBLE
+        with _termination_raised():
+            code = _used(arguments)
+        output.flush()
+        return code
+    except _Terminated:
+        _tell("terminated.")
+        return TERMINATED
     except (click.Abort, KeyboardInterrupt):
         _tell("interrupted.")
         return INTERRUPTED
@@ -177,8 +197,8 @@ def _ended(arguments: list[str]) -> int:
         _tell("the circuit is too large for this machine's memory. Split it.")
         return IMPOSSIBLE
     except Exception as exc:
-        if isinstance(exc, OSError) and (refused := _refused_output()) is not None:
-            return _unwritten(refused)
+        if isinstance(exc, OSError) and exc is output.refused:
+            return _unwritten(exc)
         if os.environ.get("RCNET_DEBUG"):
             raise
         told = f"{type(exc).__name__}: {exc}".rstrip(": ")
@@ -189,13 +209,18 @@ def _ended(arguments: list[str]) -> int:
         return IMPOSSIBLE
 
 
-def _refused_output() -> OSError | None:
-    """Why standard output takes nothing: what it did not take is still in its buffer, and is tried again."""
+def _used(arguments: list[str]) -> int:
+    """Run the verb; wrong usage is told here, in JSON too where that was asked for."""
     try:
-        sys.stdout.flush()
-    except OSError as exc:
-        return exc
-    return None
+        code = group.main(args=arguments, prog_name="rcnet", standalone_mode=False)
+    except click.ClickException as exc:
+        exc.show()
+        if "--json" in arguments:
+            context = getattr(exc, "ctx", None)
+            path = context.command_path if context is not None else "rcnet"
+            print_json(error_document(InputError(exc.format_message(), remedy=f"See `{path} --help`.")))
+        return IMPOSSIBLE
+    return code if isinstance(code, int) else 0
 
 
 def _unwritten(exc: OSError) -> int:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import os
 from pathlib import Path
 
 import click
@@ -58,14 +59,15 @@ def _copy(starter: str, source: Path, output: str | None) -> Path:
     from ..system.files import read_text, write_file
 
     target = Path(output or f"{starter}{SUFFIX}")
-    if target.is_dir():
+    # The methods of Path raise where a name is too long; writing it tells that in words.
+    if os.path.isdir(target):  # noqa: PTH112
         target /= f"{starter}{SUFFIX}"
     if not target.name.lower().endswith(".toml"):
         raise InputError(
             f"a circuit file is not called {target.name!r}: its name would make it a netlist.",
             remedy=f"Let the name end in {SUFFIX}, as {target.stem}{SUFFIX}.",
         )
-    if target.exists() or target.is_symlink():
+    if os.path.lexists(target):
         raise OutputError(
             "a file of that name is there already.", file=str(target), remedy="Name another with --output."
         )

@@ -108,8 +108,8 @@ def gram(a: Twofold) -> Twofold:
     turned = slices.swapaxes(-2, -1)
     high = turned[0] @ slices[0]
     low = np.zeros_like(high)
-    # Products of slices i and j are multiples of one number for each i + j. Slices after the first hold a sign
-    # in their bits, so all of them together sum to less than 2 terms 2^(2 bits) of it: nothing is rounded.
+    # Products of slices i and j are multiples of one number for each i + j. Slices after the first hold a
+    # sign in their bits, so all of them together sum to less than 2 terms 2^(2 bits) of it: nothing is rounded.
     for order in range(1, _SLICES):
         pairs = (order + 1) // 2
         share = (turned[:pairs] @ slices[order : order - pairs : -1]).sum(axis=0)
@@ -131,11 +131,11 @@ def _sliced(a: Twofold, bits: int) -> tuple[Float, Float]:
     scale = np.exp2(np.ceil(np.log2(np.where(greatest > 0, greatest, 1.0))))
     high, low = a[0] / scale, a[1] / scale
     slices, spare = np.empty((_SLICES, *high.shape)), np.empty_like(high)
-    for number, top in enumerate(slices):
+    for number in range(_SLICES):
         # Adding and taking away 2^(52 - bits of this slice and those before) rounds to a multiple of its last
         # bit.
         cutter = 1.5 * 2.0 ** (52 - bits * (number + 1))
-        np.add(high, cutter, out=top)
+        top = np.add(high, cutter, out=slices[number])
         top -= cutter
         # What is left of the high part is zero or no smaller than the low one: Dekker's sum will do.
         high -= top

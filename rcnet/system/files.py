@@ -108,7 +108,7 @@ def write_file(path: str | os.PathLike[str], data: str | bytes) -> None:
     Raises OutputError.
     """
     target = Path(path)
-    if target.is_dir():
+    if os.path.isdir(target):  # noqa: PTH112 - the method raises where a name is too long
         raise OutputError(
             "a folder of that name stands there.",
             file=os.fspath(path),

@@ -1,4 +1,4 @@
-"""A uniform ladder under a square wave: as an rcnet network, as a netlist, and in closed form to 50 digits."""
+"""A uniform ladder under a square wave: as a network, as a netlist, and in closed form to 50 digits."""
 
 from __future__ import annotations
 
@@ -26,7 +26,9 @@ def network() -> Network:
 
 def lines() -> list[str]:
     """The netlist without its analysis; only the far end is saved."""
-    pulse = " ".join(repr(x) for x in (WAVE.low, WAVE.high, 0.0, WAVE.rise, WAVE.fall, WAVE.width, WAVE.period))
+    pulse = " ".join(
+        repr(x) for x in (WAVE.low, WAVE.high, 0.0, WAVE.rise, WAVE.fall, WAVE.width, WAVE.period)
+    )
     made = ["* uniform ladder", f"Vin n0 0 dc 0 pulse({pulse})"]
     for k in range(1, SECTIONS + 1):
         made += [f"R{k} {_node(k - 1)} {_node(k)} {OHM!r}", f"C{k} {_node(k)} 0 {FARAD!r}"]
@@ -41,8 +43,8 @@ def exact(time: npt.NDArray[np.float64]) -> list[mpmath.mpf]:
     """The far end's voltage at times within the first period, to 50 digits.
 
     The poles of n equal sections are -4 sin^2(phi/2) / RC, phi = (2k - 1) pi / (2n + 1), and the unit step
-    response is 1 - sum of (-1)^(k+1) 2 cos^2(phi/2) / ((2n + 1) sin(phi/2)) exp(pole t), from A. Morgan-Voyce's
-    polynomials (IRE Trans. Circuit Theory CT-6(3):321-322, 1959). An edge is two ramps.
+    response is 1 - sum of (-1)^(k+1) 2 cos^2(phi/2) / ((2n + 1) sin(phi/2)) exp(pole t), from the polynomials
+    of A. Morgan-Voyce (IRE Trans. Circuit Theory CT-6(3):321-322, 1959). An edge is two ramps.
     """
     with mpmath.workdps(50):
         count, rc = 2 * SECTIONS + 1, mpmath.mpf(OHM) * mpmath.mpf(FARAD)

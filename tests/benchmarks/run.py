@@ -1,10 +1,12 @@
-"""One command that times rcnet beside ngspice and SciPy on the same networks and prints a table of ratios.
+"""One command that times rcnet beside ngspice and SciPy on the same networks and prints a Markdown table.
 
     python tests/benchmarks/run.py [--quick] [--only WORD]
 
-Every number is measured in this run, on this machine. rcnet's time is that of the second call, the best of
-three; ngspice's is the "Total analysis time" it reports, which leaves out reading the netlist; SciPy's is
-that of `splu` and one solution per frequency, for a few frequencies. More rows: functions in `ROWS`.
+Every number is measured in this run, on this machine; `x` says how many times rcnet's time. rcnet's time is
+that of the second call, the best of three, unless the row says otherwise; ngspice's is the "Total analysis
+time" it reports, which leaves out reading the netlist, or, where that is too short to be read off, what one
+more analysis adds to a process that makes many; SciPy's is that of `splu` and one solution per frequency, for
+a few frequencies. Without ngspice there is a dash in its column. More rows: functions in `ROWS`.
 """
 
 from __future__ import annotations
@@ -19,30 +21,36 @@ import subprocess
 import sys
 import tempfile
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
+import numpy.typing as npt
 
 sys.path.insert(0, str(Path(__file__).parent))
 
+import check_start
+import ladder
 from networks import Case, matrices, mesh, netlist, network, tree
 
 from rcnet.circuit import Network
+from rcnet.curves import read_results
 from rcnet.exact import response
 
 SPLU_POINTS = 3
+WIDTHS = (33, 8, 13, 13, 8, 6)  # of the columns: 100 characters a line
+HEADS = ("work", "rcnet", "ngspice", "splu", "target", "result")
 
 
 @dataclass(frozen=True)
 class Row:
-    """One line of the table: what was done, in what units, and what the target says."""
+    """One line of the table: what was done, what it took each, and whether that meets the target."""
 
     work: str
     rcnet: str
     ngspice: str = "-"
-    scipy: str = "-"
+    splu: str = "-"
     target: str = "-"
     met: bool | None = None
 
@@ -51,29 +59,48 @@ def main() -> int:
     """Measure and print; 1 if a target was missed."""
     parser = argparse.ArgumentParser(description="Times rcnet beside ngspice and SciPy on the same networks.")
     parser.add_argument("--quick", action="store_true", help="smaller networks, for a look in seconds")
-    parser.add_argument("--only", default="", help="only rows whose name holds this word")
+    parser.add_argument("--only", default="", help=f"only rows whose name holds this word: {', '.join(ROWS)}")
     parser.add_argument("--child", help=argparse.SUPPRESS)
     options = parser.parse_args()
     if options.child:
         print(json.dumps(_child(int(options.child))))
         return 0
-    print(f"{os.cpu_count()} processors; {sys.platform}; {_ngspice_version()}")
+    print(f"{os.cpu_count()} processors; {sys.platform}; {_ngspice_version()}\n")
+    _print(HEADS)
+    _print(["-" * width for width in WIDTHS])
     missed = False
     for name, measured in ROWS.items():
         if options.only in name:
             for row in measured(options.quick):
                 missed |= row.met is False
-                _print(row)
+                result = {None: "-", True: "met", False: "MISSED"}[row.met]
+                _print((row.work, row.rcnet, row.ngspice, row.splu, row.target, result))
     return 1 if missed else 0
 
 
-def _print(row: Row) -> None:
-    verdict = {None: "", True: "met", False: "MISSED"}[row.met]
-    print(
-        f"{row.work:<52} rcnet {row.rcnet:<16} ngspice {row.ngspice:<22} splu {row.scipy:<20}"
-        f" target {row.target:<14} {verdict}",
-        flush=True,
-    )
+def _print(cells: Sequence[str]) -> None:
+    padded = (f"{cell:<{width}}" for cell, width in zip(cells, WIDTHS, strict=True))
+    print(f"| {' | '.join(padded)} |", flush=True)
+
+
+def _duration(seconds: float) -> str:
+    """Two digits or three, in the unit that suits."""
+    for unit, size in (("s", 1.0), ("ms", 1e-3), ("us", 1e-6), ("ns", 1e-9)):
+        if seconds >= size or unit == "ns":
+            return f"{seconds / size:.{int(seconds < 10 * size)}f} {unit}"
+    raise AssertionError
+
+
+def _times(seconds: float | None, mine: float) -> str:
+    """Another's time, and how many times rcnet's it is."""
+    if seconds is None:
+        return "-"
+    ratio = seconds / mine
+    return f"{_duration(seconds)}, {ratio:.{int(ratio < 10)}f} x"
+
+
+def _faster(seconds: float | None, mine: float, target: float) -> bool | None:
+    return None if seconds is None else seconds >= target * mine
 
 
 # ---------------------------------------------------------------------- the others
@@ -89,11 +116,21 @@ def _ngspice_version() -> str:
 
 
 def _program() -> str | None:
-    return os.environ.get("RCNET_NGSPICE") or shutil.which("ngspice")
+    return shutil.which(os.environ.get("RCNET_NGSPICE") or "ngspice")
 
 
-def _ngspice(text: str) -> tuple[float, float] | None:
-    """Seconds of analysis as ngspice says, and of the whole process; None without ngspice."""
+@dataclass(frozen=True)
+class _Ran:
+    """analysis: seconds as ngspice says; wall: of the whole process; raw: where its results were, if any."""
+
+    analysis: float
+    wall: float
+    time: npt.NDArray[np.float64] | None = None
+    values: npt.NDArray[np.float64] | None = None
+
+
+def _ngspice(text: str, curve: str = "") -> _Ran | None:
+    """A run of ngspice, with the curve named; None without ngspice."""
     program = _program()
     if program is None:
         return None
@@ -109,8 +146,28 @@ def _ngspice(text: str) -> tuple[float, float] | None:
             check=True,
         )
         wall = time.perf_counter() - begun
-    found = re.search(r"Total analysis time \(seconds\) = (\S+)", done.stdout + done.stderr)
-    return (float(found.group(1)) if found else wall, wall)
+        found = read_results(Path(folder) / "deck.raw").get(curve) if curve else None
+    said = re.search(r"Total analysis time \(seconds\) = (\S+)", done.stdout + done.stderr)
+    analysis = float(said.group(1)) if said else wall
+    return _Ran(analysis, wall) if found is None else _Ran(analysis, wall, found.axis, found.values.real)
+
+
+def _one_more(lines: Sequence[str], commands: Sequence[str], loops: int) -> float | None:
+    """Seconds that `commands` take in a loop inside one ngspice process: of a long loop less a short one."""
+
+    def whole(count: int) -> float | None:
+        # Without `destroy all` the plots pile up, and each turn takes ten times as long.
+        control = [".control", f"repeat {count}", *commands, "destroy all", "end", "quit", ".endc"]
+        ran = _ngspice("\n".join([*lines, *control, ".end", ""]))
+        return None if ran is None else ran.wall
+
+    best = np.inf
+    for _ in range(3):
+        long, short = whole(loops + 1), whole(1)
+        if long is None or short is None:
+            return None
+        best = min(best, (long - short) / loops)
+    return float(best)
 
 
 def _splu_seconds(case: Case) -> tuple[float, list[complex]]:
@@ -132,44 +189,45 @@ def _splu_seconds(case: Case) -> tuple[float, list[complex]]:
 def _second_call(work: Callable[[], object]) -> float:
     """Seconds of the best of three calls after the first."""
     work()
-    best = np.inf
-    for _ in range(3):
-        begun = time.perf_counter()
-        work()
-        best = min(best, time.perf_counter() - begun)
-    return best
+    return min(_seconds(work) for _ in range(3))
+
+
+def _seconds(work: Callable[[], object]) -> float:
+    begun = time.perf_counter()
+    work()
+    return time.perf_counter() - begun
 
 
 # ---------------------------------------------------------------------- rows
 
 
-def _sweep(case: Case, target: float) -> Row:
+def _sweep(kind: str, case: Case, target: float | None) -> Row:
     made = network(case)
     seconds = _second_call(lambda: response(made, case.frequency, f"n{case.output}"))
     each, answers = _splu_seconds(case)
     mine = response(made, case.frequency, f"n{case.output}")
     mine = mine[:: max(1, case.points // SPLU_POINTS)][:SPLU_POINTS]
     assert np.abs(mine - answers).max() <= 1e-9 * max(1e-12, np.abs(answers).max()), "the answers differ"
-    other = _ngspice(netlist(case))
-    ratio = None if other is None else other[0] / seconds
+    ran = _ngspice(netlist(case))
+    other = None if ran is None else ran.analysis
     return Row(
-        f"{case.name} x {case.points} frequencies",
-        f"{seconds * 1e3:.0f} ms",
-        "-" if other is None or ratio is None else f"{other[0]:.2f} s, {ratio:.0f} times",
-        f"{each * case.points:.2f} s, {each * case.points / seconds:.0f} times",
-        f">= {target:.0f} times",
-        None if ratio is None else ratio >= target,
+        f"{kind}, {case.nodes:,} nodes x {case.points} points",
+        _duration(seconds),
+        _times(other, seconds),
+        _times(each * case.points, seconds),
+        "-" if target is None else f">= {target:g} x",
+        None if target is None else _faster(other, seconds, target),
     )
 
 
 def big_tree(quick: bool) -> Iterator[Row]:
     """A random tree against both."""
-    yield _sweep(tree(20_000 if quick else 100_000, 201), 50)
+    yield _sweep("tree", tree(20_000 if quick else 100_000, 201), None if quick else 50)
 
 
 def big_mesh(quick: bool) -> Iterator[Row]:
     """A mesh against both."""
-    yield _sweep(mesh(60 if quick else 100, 41), 50)
+    yield _sweep("mesh", mesh(60 if quick else 100, 41), None if quick else 50)
 
 
 def million(quick: bool) -> Iterator[Row]:
@@ -179,13 +237,10 @@ def million(quick: bool) -> Iterator[Row]:
         [sys.executable, __file__, "--child", str(nodes)], capture_output=True, text=True, check=True
     ).stdout
     result = json.loads(said)
-    yield Row(
-        f"random tree, {nodes} nodes x 50 frequencies",
-        f"{result['seconds'] * 1e3:.0f} ms",
-        target="< 4 GiB",
-        scipy=f"built in {result['build']:.1f} s, first {result['first']:.1f} s, {result['gib']:.2f} GiB",
-        met=result["gib"] < 4,
-    )
+    yield Row(f"tree, {nodes:,} nodes x 50 points", _duration(result["seconds"]))
+    yield Row("  the network put together", _duration(result["build"]))
+    yield Row("  the first call", _duration(result["first"]))
+    yield Row("  memory in all", f"{result['gib']:.2f} GiB", target="< 4 GiB", met=result["gib"] < 4)
 
 
 def _child(nodes: int) -> dict[str, float]:
@@ -193,10 +248,12 @@ def _child(nodes: int) -> dict[str, float]:
     case = tree(nodes, 50)
     made = network(case)
     build = time.perf_counter() - begun
-    begun = time.perf_counter()
-    response(made, case.frequency, f"n{case.output}")
-    first = time.perf_counter() - begun
-    seconds = _second_call(lambda: response(made, case.frequency, f"n{case.output}"))
+
+    def work() -> object:
+        return response(made, case.frequency, f"n{case.output}")
+
+    first = _seconds(work)
+    seconds = _second_call(work)
     most = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
     unit = 1 if sys.platform == "darwin" else 1024
     return {"seconds": seconds, "first": first, "build": build, "gib": most * unit / 2**30}
@@ -204,7 +261,7 @@ def _child(nodes: int) -> dict[str, float]:
 
 def samples(quick: bool) -> Iterator[Row]:
     """Many samples of a small ladder, beside one iteration of an `alter` loop inside one ngspice process."""
-    count = 20_000 if quick else 100_000
+    count = 100_000
     made, rng = Network(), np.random.default_rng(1)
     made.add_voltage_source("Vin", "in", "0", ac=1)
     for k, (here, there) in enumerate((("in", "a"), ("a", "b"), ("b", "out")), 1):
@@ -213,46 +270,51 @@ def samples(quick: bool) -> Iterator[Row]:
     values = {name: value * rng.uniform(0.95, 1.05, count) for name, value in made.values.items()}
     frequency = np.logspace(2, 6, 61)
     seconds = _second_call(lambda: response(made, frequency, "out", values=values)) / count
-    each = _alter_seconds(1000 if quick else 3000)
-    ratio = None if each is None else each / seconds
+    lines = ["* ladder", "Vin in 0 dc 0 ac 1"]
+    lines += ["R1 in a 10k", "C1 a 0 1n", "R2 a b 10k", "C2 b 0 1n", "R3 b out 10k", "C3 out 0 1n"]
+    lines += [".options noopac", ".save v(out)"]
+    each = _one_more(lines, ["alter r1 = 9.5k", "ac dec 15 100 1meg"], 1000 if quick else 3000)
     yield Row(
-        f"3-section ladder, {count} samples x 61 frequencies",
-        f"{seconds * 1e6:.2f} us each",
-        "-" if each is None or ratio is None else f"{each * 1e6:.0f} us, {ratio:.0f} times",
-        target=">= 100 times",
-        met=None if ratio is None else ratio >= 100,
+        f"6 parts x 61 points, 1 of {count:,}",
+        _duration(seconds),
+        _times(each, seconds),
+        target=">= 100 x",
+        met=_faster(each, seconds, 100),
     )
 
 
-def _alter_seconds(loops: int) -> float | None:
-    """Seconds of one iteration: the difference between a long loop and one of a single iteration."""
+def transient(quick: bool) -> Iterator[Row]:
+    """A ladder over a period of a square wave at the times ngspice chooses, and how far both are off."""
+    loops = 60 if quick else 200
+    analysis = f"tran {ladder.STEP!r} {ladder.STOP!r}"
+    ran = _ngspice("\n".join([*ladder.lines(), f".{analysis}", ".end", ""]), "v(out)")
+    chosen = np.linspace(0, ladder.STOP, 1024) if ran is None or ran.time is None else ran.time
+    each = _one_more(ladder.lines(), [analysis], loops)
+    mine = ladder.network().transient(chosen, "out")  # imports are made by now
 
-    def whole(count: int) -> float | None:
-        done = _ngspice(
-            "\n".join(
-                [
-                    "* ladder",
-                    "Vin in 0 dc 0 ac 1",
-                    "R1 in a 10k\nC1 a 0 1n\nR2 a b 10k\nC2 b 0 1n\nR3 b out 10k\nC3 out 0 1n",
-                    ".options noopac",
-                    ".save v(out)",
-                    ".control",
-                    f"repeat {count}",
-                    "alter r1 = 9.5k",
-                    "ac dec 15 100 1meg",
-                    "destroy all",  # without it the plots pile up, and each iteration takes ten times as long
-                    "end",
-                    "quit",
-                    ".endc",
-                    ".end",
-                    "",
-                ]
-            )
+    def ask(networks: list[Network]) -> float:
+        """Seconds each, in a loop as ngspice's."""
+        return _seconds(lambda: [one.transient(chosen, "out") for one in networks]) / loops
+
+    batches = [[ladder.network() for _ in range(loops)] for _ in range(3)]
+    new, again = (min(ask(batch) for batch in batches) for _ in range(2))
+    work = f"ladder of {ladder.SECTIONS} x {len(chosen):,} times"
+    for text, seconds in ((f"{work}, new", new), ("  asked again", again)):
+        yield Row(
+            text,
+            _duration(seconds),
+            _times(each, seconds),
+            target="> 1 x",
+            met=_faster(each, seconds, 1),
         )
-        return None if done is None else done[1]
-
-    long, short = whole(loops + 1), whole(1)
-    return None if long is None or short is None else (long - short) / loops
+    truth = ladder.exact(chosen)
+    full = max(abs(value) for value in truth)
+    error = float(max(abs(a - b) for a, b in zip(truth, mine.tolist(), strict=True)) / full)
+    other = "-"
+    if ran is not None and ran.values is not None:
+        far = max(abs(a - b) for a, b in zip(truth, ran.values.tolist(), strict=True))
+        other = f"{float(far / full):.0e}"
+    yield Row("  worst error, of full scale", f"{error:.0e}", other, "-", "<= 1e-10", error <= 1e-10)
 
 
 def growth(quick: bool) -> Iterator[Row]:
@@ -263,10 +325,18 @@ def growth(quick: bool) -> Iterator[Row]:
         case = tree(nodes, max(64, 12_800_000 // nodes // 16 * 16))
         made = network(case)
         seconds = _second_call(lambda: response(made, case.frequency, f"n{case.output}"))  # noqa: B023
-        costs.append(seconds / nodes / case.points * 1e9)
-        yield Row(f"{case.name} x {case.points} frequencies", f"{costs[-1]:.2f} ns each")
+        costs.append(seconds / nodes / case.points)
+        yield Row(f"1 point at 1 of {nodes:,} nodes", _duration(costs[-1]))
     spread = max(costs) / min(costs)
-    yield Row("cost per node and frequency, most over least", f"{spread:.2f}", target="<= 2", met=spread <= 2)
+    yield Row("  the most over the least", f"{spread:.2f}", target="<= 2", met=spread <= 2)
+
+
+def check(quick: bool) -> Iterator[Row]:
+    """A run of `rcnet check` beside one of Python that only imports numpy."""
+    mine, bare = check_start.measured(runs=5 if quick else check_start.RUNS)
+    yield Row("`rcnet check`, the whole process", _duration(mine))
+    ratio, target = mine / bare, check_start.TARGET
+    yield Row("  over `import numpy`", f"{ratio:.2f} x", target=f"<= {target:g} x", met=ratio <= target)
 
 
 # Another row is another function here: whether `quick`, and its rows in return.
@@ -275,7 +345,9 @@ ROWS: dict[str, Callable[[bool], Iterator[Row]]] = {
     "mesh": big_mesh,
     "million": million,
     "samples": samples,
+    "transient": transient,
     "growth": growth,
+    "check": check,
 }
 
 if __name__ == "__main__":

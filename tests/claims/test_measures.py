@@ -672,3 +672,94 @@ def test_measures_do_not_change_the_network() -> None:
         net.measure(name, edge=edge)
     net.measure("phase", at=100)
     assert [tuple(net.parts), net.nodes, net.sources] == before
+
+
+def peaking_with_a_slow_part() -> Network:
+    """A Sallen-Key section 0.74 dB above its dc gain, and far below it the corner of a part apart from it."""
+    net = sallen_key(1.9)
+    net.add_resistor("Rx", "in", "x", 1e3)
+    net.add_resistor("Rslow", "x", "0", 100e3)
+    net.add_capacitor("Cslow", "x", "0", 1e-3)
+    return net
+
+
+@pytest.mark.parametrize("net", [sallen_key(1.9), peaking_with_a_slow_part()], ids=["alone", "long plateau"])
+def test_a_low_peak_above_a_long_plateau(net: Network) -> None:
+    """Its height over the plateau is that of K/(1 + a x + x^2), a = 3 - K: -10 log10(a^2 (1 - a^2/4))."""
+    with mp.workdps(30):
+        a2 = mp.mpf("1.1") ** 2
+        top = 1 / (a2 * (1 - a2 / 4))  # |H/K|^2 at its greatest
+        b = a2 / 2 - 1  # y^2 + 2 b y + 1 = 2/top at the corner, y = (omega RC)^2
+        corner = mp.sqrt(-b + mp.sqrt(b * b - 1 + 2 / top)) / (2 * mp.pi * mp.mpf("1e-4"))
+        at = mp.mpf(1) * 2 * mp.pi * mp.mpf("1e-4")  # 1 Hz
+        loss = 10 * mp.log10(top * ((1 - at * at) ** 2 + a2 * at * at))
+    close(measure(net, "cutoff", edge="upper"), corner, 1e-9)
+    close(measure(net, "attenuation", at=1.0), loss, 1e-9)
+
+
+@given(st.floats(-1, 8))
+@settings(max_examples=40, deadline=None)
+def test_attenuation_is_never_negative(exponent: float) -> None:
+    """No frequency has a gain above the greatest one."""
+    assert measure(peaking_with_a_slow_part(), "attenuation", at=10**exponent) >= 0
+
+
+def faint() -> Network:
+    """A low-pass and a controlled source whose gain is the smallest double there is."""
+    net = ladder([R], [C])
+    net.add_voltage_controlled_voltage_source("E2", "d", "0", "out", "0", 5e-324)
+    net.add_resistor("R2", "d", "0", R)
+    return net
+
+
+def apart() -> Network:
+    """An output that no branch joins to the source, beside a low-pass that one does."""
+    net = ladder([R], [C])
+    net.add_resistor("Rb", "b", "0", R)
+    net.add_capacitor("Cb", "b", "0", C)
+    return net
+
+
+SILENT = "^nothing of the source arrives at this output"
+BEYOND_DOUBLES: dict[str, tuple[Network, str, str, dict[str, Any], str]] = {
+    "phase of a denormal": (faint(), "phase", "d", {"at": 1e3}, "smaller than double"),
+    "group delay of a denormal": (faint(), "group_delay", "d", {"at": 1.0}, "smaller than double"),
+    "elmore delay of a denormal": (faint(), "elmore_delay", "d", {}, "smaller than double"),
+    "gain at 1e308 Hz": (faint(), "gain", "out", {"at": 1e308}, "beyond the frequencies"),
+    "phase at 1e308 Hz": (faint(), "phase", "out", {"at": 1e308}, "beyond the frequencies"),
+    "impedance at 1e308 Hz": (faint(), "output_impedance", "out", {"at": 1e308}, "beyond the frequencies"),
+    "noise from 1e308 Hz": (faint(), "noise", "out", {"from_": 1e308, "to": math.inf}, "beyond the freq"),
+    "settling of 1e308 F": (
+        ladder([1e4], [1e308]),
+        "settling_time",
+        "out",
+        {"band": 0.01},
+        "double precision",
+    ),
+    "phase out of reach": (apart(), "phase", "b", {"at": 1e3}, SILENT),
+    "gain out of reach": (apart(), "gain", "b", {"at": 1e3}, SILENT),
+    "group delay out of reach": (apart(), "group_delay", "b", {"at": 1e3}, SILENT),
+    "cutoff out of reach": (apart(), "cutoff", "b", {}, SILENT),
+    "elmore delay out of reach": (apart(), "elmore_delay", "b", {}, SILENT),
+}
+
+
+@pytest.mark.parametrize("case", BEYOND_DOUBLES)
+def test_what_no_double_holds_is_undecided(case: str) -> None:
+    """Values past the range of doubles, and outputs out of reach, end in one sentence and no warning."""
+    net, name, of, options, words = BEYOND_DOUBLES[case]
+    with pytest.raises(UndecidedError, match=words):
+        measure(net, name, of, **options)
+
+
+@pytest.mark.parametrize("name", ["peak_voltage", "dissipation"])
+def test_measures_of_a_part_are_plain_floats(name: str) -> None:
+    """Of a periodic source as of a dc one: half of 1 V over 1 kohm is 0.5 V and 0.25 mW."""
+    for wave in ({"dc": 1.0}, {"square": {"low": -1, "high": 1, "frequency": 50}}):
+        net = Network()
+        net.add_voltage_source("V1", "in", "0", **wave)
+        net.add_resistor("R1", "in", "out", R)
+        net.add_resistor("R2", "out", "0", R)
+        got = measure(net, name, part="R2")
+        assert type(got) is float
+        close(got, {"peak_voltage": 0.5, "dissipation": 0.25e-3}[name], 1e-9)

@@ -75,7 +75,18 @@ CIRCUITS: dict[str, tuple[Callable[[], None], str]] = {
         _changed("title", "titel"),
         r"gauge.rc.toml:1: unknown key 'titel'\. Did you mean 'title'",
     ),
-    "the same name twice": (_changed('C1 = "out', 'R1 = "out'), r"gauge.rc.toml:5: "),
+    "the same name twice": (
+        _changed('C1 = "out', 'R1 = "out'),
+        r"gauge.rc.toml:5: .* the key 'R1' stands here for the second time\.",
+    ),
+    "a sweep from next to nothing": (
+        _changed('from = "10"', 'from = "1e-320 Hz"'),
+        r"gauge.rc.toml:11: ac runs from 1e-320 Hz .* between 1e-30 Hz and 1e\+30 Hz",
+    ),
+    "a sweep to the end of numbers": (
+        _changed('to = "1 MHz"', "to = 1e308"),
+        r"gauge.rc.toml:11: ac runs .* to 1e\+308 Hz\. Keep it between",
+    ),
     "a value that is none": (_changed("10k 1%", "10q"), r"gauge.rc.toml:4: .*10q"),
     "no source": (_written('[parts]\nR1 = "in 0 1k"\n'), r"gauge.rc.toml: the circuit has no source"),
     "no ground": (
@@ -278,8 +289,15 @@ def test_simulator_that_is_none(rcnet: Rcnet, monkeypatch: pytest.MonkeyPatch) -
 
 @posix
 @pytest.mark.skipif(sys.platform != "linux", reason="the stand-in's children are looked up in /proc")
-def test_interrupt() -> None:
-    """Ctrl-C while the simulator runs: 130, one word, no child left, the files of an earlier run gone."""
+@pytest.mark.parametrize(
+    ("number", "code", "says"),
+    [(signal.SIGINT, 130, "rcnet: interrupted."), (signal.SIGTERM, 143, "rcnet: terminated.")],
+    ids=["interrupted", "terminated"],
+)
+def test_interrupt(tmp_path: Path, number: signal.Signals, code: int, says: str) -> None:
+    """Told to end while the simulator runs: one word, no child or scratch folder left, old files gone."""
+    scratch = tmp_path / "scratch"
+    scratch.mkdir()
     file = circuit("gauge.rc.toml", HOLDS)
     pids = Path("pids").absolute()
     hang = simulator(f"echo $$ > {pids}; sleep 611 & echo $! >> {pids}; wait")
@@ -291,15 +309,17 @@ def test_interrupt() -> None:
         stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
         text=True,
-        env={**os.environ, "RCNET_NGSPICE": hang},
+        env={**os.environ, "RCNET_NGSPICE": hang, "TMPDIR": str(scratch)},
     ) as process:
         until = time.monotonic() + 30
         while time.monotonic() < until and not (pids.exists() and pids.read_text().count("\n") == 2):
             time.sleep(0.02)
-        process.send_signal(signal.SIGINT)
+        assert any(scratch.iterdir())
+        process.send_signal(number)
         out, err = process.communicate(timeout=30)
-    assert (process.returncode, out) == (130, "")
-    assert err.strip() == "rcnet: interrupted."
+    assert (process.returncode, out) == (code, "")
+    assert err.strip() == says
+    assert not any(scratch.iterdir())
     assert all(gone(int(pid)) for pid in pids.read_text().split())
     assert left() == {"pids", str(Path("out/gauge/netlist.cir"))}
 
@@ -372,6 +392,95 @@ def test_full_disk_keeps_the_old_file(rcnet: Rcnet, monkeypatch: pytest.MonkeyPa
     clear(rcnet(*arguments), "the disk is full")
     assert left() == {str(Path(arguments[-1]))}
     assert Path(arguments[-1]).read_text(encoding="utf-8") == "old"
+
+
+@posix
+@pytest.mark.parametrize("unbuffered", ["", "1"])
+@pytest.mark.parametrize(
+    ("where", "says"),
+    [
+        (">/dev/full", "rcnet: standard output cannot be written: no space left on device."),
+        (">&-", "rcnet: standard output cannot be written: it is closed."),
+    ],
+)
+@pytest.mark.parametrize("verb", ["check", "check --json", "netlist", "response --csv", "--help"])
+def test_output_that_takes_nothing(verb: str, where: str, says: str, unbuffered: str) -> None:
+    """Standard output that is closed or full is told in one sentence, whatever was to be printed."""
+    if where.endswith("full") and not Path("/dev/full").exists():
+        pytest.skip("no device that is always full")
+    circuit("gauge.rc.toml", HOLDS)
+    file = "" if verb == "--help" else "gauge.rc.toml"
+    ended = subprocess.run(
+        ["/bin/sh", "-c", f'exec "$0" -m rcnet {verb} {file} {where}', sys.executable],
+        stderr=subprocess.PIPE,
+        text=True,
+        env={**os.environ, "PYTHONUNBUFFERED": unbuffered},
+        check=False,
+        timeout=60,
+    )
+    assert ended.returncode == 2
+    assert ended.stderr.startswith(says)
+    assert ended.stderr.count("\n") == 1
+
+
+NETLIST = "* gauge\nV1 in 0 AC 1\nR1 in out 10k\nC1 out 0 10n\n.ac dec 10 10 1meg\n.end\n"
+
+
+@pytest.mark.parametrize("spelt", ["gauge.cir", "./gauge.cir", "folder/../gauge.cir", "link.cir"])
+def test_netlist_over_its_own_input(rcnet: Rcnet, spelt: str) -> None:
+    """A netlist never replaces the file it is made of, however the path is spelt."""
+    Path("gauge.cir").write_text(NETLIST, encoding="utf-8")
+    Path("folder").mkdir()
+    Path("link.cir").symlink_to("gauge.cir")
+    clear(rcnet("netlist", "gauge.cir", "-o", spelt), "this would overwrite the input 'gauge.cir'")
+    assert Path("gauge.cir").read_text(encoding="utf-8") == NETLIST
+
+
+def test_comparison_over_the_results(rcnet: Rcnet) -> None:
+    """A comparison never replaces the results it is about."""
+    file = circuit("gauge.rc.toml", HOLDS)
+    assert rcnet("response", file, "-o", "r.csv").code == 0
+    before = Path("r.csv").read_bytes()
+    clear(rcnet("compare", file, "r.csv", "-o", "./r.csv"), "this would overwrite the input 'r.csv'")
+    assert Path("r.csv").read_bytes() == before
+
+
+@pytest.mark.parametrize("folder", [".", "..", "folder"])
+def test_folder_where_a_file_is_wanted(rcnet: Rcnet, folder: str) -> None:
+    """A folder named as the file to write is told as one."""
+    Path("folder").mkdir()
+    circuit("gauge.rc.toml", HOLDS)
+    clear(rcnet("netlist", "gauge.rc.toml", "-o", folder), "a folder of that name stands there")
+    assert left() == set()
+
+
+@pytest.mark.parametrize("verb", ["check", "confirm", "response", "netlist", "simulate"])
+@pytest.mark.parametrize(
+    "text",
+    [FILTER, "# gauge\n\n" + FILTER, FILTER[FILTER.index("[parts]") :], FILTER.replace("\n", "\r\n")],
+    ids=["title", "comment", "table", "crlf"],
+)
+def test_circuit_file_called_a_netlist(rcnet: Rcnet, text: str, verb: str) -> None:
+    """A circuit file under a netlist's name is one sentence, not a complaint about every line."""
+    Path("gauge.cir").write_bytes(text.encode())
+    clear(rcnet(verb, "gauge.cir"), r"gauge.cir: this looks like a circuit file.* end in \.rc\.toml\.$")
+
+
+SWEEPS = {"next to nothing": "1e-320 1k", "the end of numbers": "1 1e308", "backwards": "1k 10"}
+
+
+@pytest.mark.parametrize("case", SWEEPS)
+def test_netlists_whose_sweep_is_no_use(rcnet: Rcnet, case: str) -> None:
+    """Such a sweep is a finding, and a response over it one sentence."""
+    text = NETLIST.replace("10 1meg", SWEEPS[case])
+    Path("gauge.cir").write_text(text, encoding="utf-8")
+    found = rcnet("check", "gauge.cir")
+    assert (found.code, found.err) == (1, "")
+    assert "empty-sweep" in found.out
+    clear(rcnet("response", "gauge.cir"), "the circuit's own ac sweep has no points: ")
+    written = rcnet("netlist", "gauge.cir", "--anyway")
+    assert written.code == 0
+    assert "Warning" not in written.err
 
 
 # ---------------------------------------------------------------------- circuits without an answer

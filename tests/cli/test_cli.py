@@ -84,7 +84,7 @@ USAGE = {
     "no file": ["check"],
     "no second opinion of that name": ["confirm", "--second-opinion", "oracle", "f.cir"],
     "no time": ["confirm", "--timeout", "0", "f.cir"],
-    "two forms at once": ["response", "--json", "--csv", "f.cir"],
+    "wrong first": ["--colour", "check", "f.cir"],
 }
 
 
@@ -94,6 +94,24 @@ def test_wrong_usage(rcnet: Rcnet, case: str) -> None:
     ended = rcnet(*USAGE[case])
     assert (ended.code, ended.out) == (2, "")
     assert "Error: " in ended.err
+
+
+USAGE_AS_JSON = {
+    "two forms at once": (["response", "--json", "--csv", "f.cir"], "--json does not go with --csv."),
+    "no such option": (["check", "--colour", "--json", "f.cir"], "No such option '--colour'."),
+    "no file": (["check", "--json"], "Missing argument 'FILE...'."),
+}
+
+
+@pytest.mark.parametrize("case", USAGE_AS_JSON)
+def test_wrong_usage_as_json(rcnet: Rcnet, case: str) -> None:
+    """Where JSON was asked for, wrong usage is a document like every other error."""
+    arguments, says = USAGE_AS_JSON[case]
+    ended = rcnet(*arguments)
+    assert ended.code == 2
+    (error,) = document(ended)["errors"]
+    assert (error["message"], error["file"]) == (says, None)
+    assert f"rcnet {arguments[0]} --help" in error["remedy"]
 
 
 # ---------------------------------------------------------------------- check
@@ -177,6 +195,7 @@ def test_check_goes_on_after_a_file_that_cannot_be_read(rcnet: Rcnet) -> None:
     assert ended.out.endswith("2 circuits: 1 holds, 1 could not be done\n")
     listed = document(rcnet("check", "--json", "absent.rc.toml", good))
     assert listed[0]["errors"][0]["message"] == "there is no such file."
+    assert (listed[0]["circuit"], listed[0]["verdict"]) == ("absent", None)
     assert listed[1]["verdict"] == "holds"
 
 
@@ -202,6 +221,12 @@ def test_rules(rcnet: Rcnet) -> None:
     assert ended.code == 0
     assert re.search(r"^floating \(error\)$", ended.out, re.MULTILINE)
     assert all(len(line) <= 80 for line in ended.out.splitlines())
+    for order in (["--rules", "--json"], ["--json", "--rules"]):
+        listed = document(rcnet("check", *order))
+        assert all(set(item) == {"code", "severity", "about"} for item in listed)
+        assert [f"{item['code']} ({item['severity']})" for item in listed] == [
+            line for line in ended.out.splitlines() if line[0] != " "
+        ]
 
 
 def test_long_words_stay_whole(rcnet: Rcnet) -> None:
@@ -448,6 +473,11 @@ RESPONSE_ERRORS = {
     "at with from": (["--at", "1", "--from", "1"], "--at does not go with"),
     "a frequency that is none": (["--at", "soon"], "--at"),
     "endless frequency": (["--at", "inf"], "--at"),
+    "a huge frequency": (["--at", "1e308"], "--at is 1e+308 Hz"),
+    "a frequency next to nothing": (["--at", "1e-320"], "--at is 1e-320 Hz"),
+    "from next to nothing": (["--from", "1e-320"], "between 1e-30 Hz and 1e+30 Hz"),
+    "to the end of numbers": (["--to", "1e308"], "between 1e-30 Hz and 1e+30 Hz"),
+    "another case in a circuit file": (["--of", "OUT"], "'OUT'"),
     "negative frequency": (["--at", "-5"], "--at"),
     "backwards": (["--from", "1 kHz", "--to", "10"], "the sweep"),
     "ohms": (["--from", "1 kohm"], "--from"),
@@ -462,6 +492,30 @@ def test_response_errors(rcnet: Rcnet, case: str) -> None:
     assert (ended.code, ended.out) == (2, "")
     assert says in ended.err
     assert ended.err.count("\n") == 1
+
+
+@pytest.mark.parametrize("given", ["OUT", "v(out)", "V(Out)", " v( out ) "])
+def test_response_of_a_netlists_node(rcnet: Rcnet, given: str) -> None:
+    """Nodes of a netlist are found in any case, and as the voltage a netlist would print."""
+    Path("g.cir").write_text("* g\nV1 in 0 AC 1\nR1 in out 10k\nC1 out 0 10n\n.end\n", encoding="utf-8")
+    wanted = rcnet("response", "g.cir", "--at", "1 kHz", "--of", "out")
+    assert wanted.code == 0
+    assert rcnet("response", "g.cir", "--at", "1 kHz", "--of", given) == wanted
+
+
+def test_response_of_a_pair(rcnet: Rcnet) -> None:
+    """A pair is given as two words or as v(a,b)."""
+    wanted = rcnet("response", circuit(), "--at", "1 kHz", "--of", "in out")
+    assert wanted.code == 0
+    assert rcnet("response", circuit(), "--at", "1 kHz", "--of", "v(in, out)") == wanted
+
+
+def test_response_table_without_headings(rcnet: Rcnet) -> None:
+    """--quiet leaves the rows; a value that rounds to zero has no sign."""
+    whole = rcnet("response", circuit(), "--at", "1e-6")
+    ended = rcnet("response", circuit(), "--at", "1e-6", "--quiet")
+    assert ended.out == whole.out.split("\n", 1)[1]
+    assert ended.out.split()[-2:] == ["0.0000", "0.000"]
 
 
 def test_response_of_a_circuit_without_ac_analysis(rcnet: Rcnet) -> None:
@@ -564,6 +618,23 @@ def test_compare(rcnet: Rcnet) -> None:
     assert rcnet("compare", "--quiet", file, "bad.csv").out.count("\n") == 1
 
 
+def test_coarse_results_are_told_in_one_line(rcnet: Rcnet) -> None:
+    """Results of three digits: one short note at the end, with how many curves it is about."""
+    file = circuit("gauge.rc.toml")
+    table = document(rcnet("response", file, "--json", "--from", "10", "--to", "1 MHz", "--per-decade", "5"))
+    value = table["curves"]["v(out)"]
+    rows = zip(table["frequency"], value["real"], value["imag"], strict=True)
+    lines = ["frequency,v(out).real,v(out).imag", *(f"{f!r},{a:.2e},{b:.2e}" for f, a, b in rows)]
+    Path("r.csv").write_text("\n".join(lines) + "\n", encoding="utf-8")
+    ended = rcnet("compare", file, "r.csv")
+    assert ended.code == 0
+    assert ended.out.count("0.01 dB") == 1
+    assert ended.out.splitlines()[-1].startswith("    note: in 1 of 1 curve")
+    assert any(
+        "0.01 dB" in remark for remark in document(rcnet("compare", "--json", file, "r.csv"))["remarks"]
+    )
+
+
 # ---------------------------------------------------------------------- new
 
 
@@ -596,6 +667,30 @@ def test_new_copies_a_starter(rcnet: Rcnet) -> None:
     Path("folder").mkdir()
     assert rcnet("new", name, "-o", "folder").code == 0
     assert Path("folder", f"{name}.rc.toml").exists()
+
+
+def test_new_quiet(rcnet: Rcnet) -> None:
+    """--quiet prints names only."""
+    names = [item["name"] for item in document(rcnet("new", "--json"))]
+    assert rcnet("new", "--quiet").out.split() == names
+    assert rcnet("new", names[0], "--quiet").out == f"{names[0]}.rc.toml\n"
+
+
+def test_new_under_a_netlists_name(rcnet: Rcnet) -> None:
+    """A starter is not written under a name by which it would be read as a netlist."""
+    ended = rcnet("new", document(rcnet("new", "--json"))[0]["name"], "-o", "x.txt")
+    assert ended.code == 2
+    assert ended.err.count("\n") == 1
+    assert "x.rc.toml" in ended.err
+    assert not Path("x.txt").exists()
+
+
+def test_new_under_a_name_too_long(rcnet: Rcnet) -> None:
+    """A name the disk cannot hold is told in words."""
+    ended = rcnet("new", document(rcnet("new", "--json"))[0]["name"], "-o", "x" * 300 + ".rc.toml")
+    assert (ended.code, ended.out) == (2, "")
+    assert "cannot be written" in ended.err
+    assert "defect" not in ended.err
 
 
 def test_new_with_a_name_there_is_none_of(rcnet: Rcnet) -> None:

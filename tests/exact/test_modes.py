@@ -15,7 +15,7 @@ from time_reference import DIGITS, ModalReference
 
 from rcnet.circuit import Network
 from rcnet.errors import CircuitError, UndecidedError
-from rcnet.exact import modal_system, modes, natural_rates, response
+from rcnet.exact import modal_system, modes, natural_frequencies, natural_rates, response
 from rcnet.exact.modes import FULL_NODES
 
 R, C = 2e3, 5e-9
@@ -229,3 +229,24 @@ def test_sources_and_nodes_are_named_in_errors() -> None:
     with pytest.raises(CircuitError, match="no source carries"):
         silent.modes("b")
     assert silent.modes("b", "V1").poles == pytest.approx([-1.0])
+
+
+@pytest.mark.parametrize(
+    ("ohm", "farad", "poles"),
+    [
+        (1e300, 1e-300, [-1.0]),
+        (1e-300, 1e300, [-1.0]),
+        (1.0, 1e-300, [-1e300]),
+        (1e-308, 1e300, []),  # the conductance, 1e308 S, and what it is added to are beyond a double
+    ],
+    ids=["great R", "great C", "fast", "beyond"],
+)
+def test_natural_frequencies_of_values_near_the_ends_of_doubles(
+    ohm: float, farad: float, poles: list[float]
+) -> None:
+    """One R and one C give -1/RC; a value no double holds is left out, without a warning."""
+    network = Network()
+    network.add_voltage_source("V1", "in", "0", ac=1)
+    network.add_resistor("R1", "in", "out", ohm)
+    network.add_capacitor("C1", "out", "0", farad)
+    assert natural_frequencies(network).real == pytest.approx(poles, rel=1e-8)

@@ -116,6 +116,30 @@ def test_a_sound_sweep_is_left_alone(ngspice: Callable[..., Any], analysis: str,
     assert len(ran.curve(*name).axis) >= 1
 
 
+RANGE = [
+    Sweep(1e-320, 1e3, 10),
+    Sweep(1.0, 1e308, 10),
+    Sweep(1e-320, 1e308, 10, "oct"),
+    Sweep(1e-320, 1e3, 5, "lin"),
+    Sweep(0.0, 1e308, 5, "lin"),
+]
+
+
+@pytest.mark.parametrize("sweep", RANGE, ids=card)
+def test_a_sweep_out_of_range_is_named(sweep: Sweep) -> None:
+    """Ends that doubles can hardly hold give no points, and the reason tells the range."""
+    assert len(frequencies(sweep)) == 0
+    for noise in (False, True):
+        assert "1e-30 Hz to 1e+30 Hz" in (sweep_fault(sweep, noise=noise) or "")
+
+
+def test_the_whole_range_is_swept() -> None:
+    """The limits themselves are allowed: sixty decades and the end."""
+    whole = Sweep(1e-30, 1e30, 1)
+    assert sweep_fault(whole) is None
+    assert np.allclose(frequencies(whole), 10.0 ** np.arange(-30, 31), rtol=1e-13)
+
+
 EMPTY = [Sweep(2.0, 1.0, 10), Sweep(0.0, 1.0, 10), Sweep(-1.0, 1.0, 3, "lin"), Sweep(1.0, float("inf"), 1)]
 
 
