@@ -299,6 +299,9 @@ def _passive_residues(
 
 def _rows(shapes: twofold.Twofold, rows: npt.NDArray[np.int64]) -> twofold.Twofold:
     """Rows of the shapes; row -1, a fixed node, does not move."""
+    if not len(shapes[0]):  # every node is fixed
+        nothing = np.zeros((len(rows), shapes[0].shape[1]))
+        return nothing, nothing
     still = (rows >= 0)[:, None]
     return np.where(still, shapes[0][rows], 0.0), np.where(still, shapes[1][rows], 0.0)
 

@@ -109,7 +109,7 @@ def gram(a: Twofold) -> Twofold:
     high = turned[0] @ slices[0]
     low = np.zeros_like(high)
     # Products of slices i and j are multiples of one number for each i + j. Slices after the first hold a
-    # sign in their bits, so all of them together sum to less than 2 terms 2^(2 bits) of it: nothing is rounded.
+    # sign in their bits, so all of them together sum to less than 2 terms 2^(2 bits) of it: no rounding.
     for order in range(1, _SLICES):
         pairs = (order + 1) // 2
         share = (turned[:pairs] @ slices[order : order - pairs : -1]).sum(axis=0)

@@ -298,3 +298,14 @@ def test_measures_that_do_not_exist_say_why() -> None:
         take(charged(), "discharge_time", part="C1", to=0.0)
     with pytest.raises(CircuitError, match="no part called"):
         take(charged(), "dissipation", part="R9")
+
+
+def test_a_network_without_a_free_node() -> None:
+    """A resistor across its source has no mode at all: 5 V at half duty are 2.5 V mean and 12.5 V^2/R."""
+    net = Network("Heater of a valve chamber")
+    net.add_voltage_source("Vin", "out", "0", ac=1, square={"low": 0, "high": 5, "frequency": 50})
+    net.add_resistor("R1", "out", "0", 1e3)
+    assert net.measure("mean") == pytest.approx(2.5, rel=1e-12)
+    assert net.measure("dissipation", part="R1") == pytest.approx(12.5e-3, rel=1e-12)
+    assert net.measure("peak_voltage") == 5
+    assert net.measure("rise_time") == 0
