@@ -110,8 +110,8 @@ def compare(
     names: the names used in the netlist the results come from; by default those `write` gives
     who: what the results are called in reports; by default where they come from
     may_be_empty: accept results of analyses that are not compared yet; they are listed as such
-    Results that differ, but agree per unit of the one source carrying ac (as rcnet writes responses), are said
-    to in a remark. Raises ResultsError where nothing in the results is about this circuit, UnsolvableError
+    Where results differ, but agree per unit of the one source carrying ac (as rcnet writes responses), a
+    remark says so. Raises ResultsError where nothing in the results is about this circuit, UnsolvableError
     where the circuit has no solution to compare with.
     """
     driven = _compared(circuit, curves, names, who, may_be_empty)

@@ -701,7 +701,7 @@ def test_a_large_netlist_is_read_whole() -> None:
 
 
 def test_a_thousands_mark_is_named() -> None:
-    """`1,000` on a resistor is 0 to SPICE (a comma parts words, the last number wins): the comma is to blame."""
+    """`1,000` on a resistor is 0 to SPICE (the last of two numbers wins): the comma is named."""
     with pytest.raises(CircuitError, match=r"'1,000': a comma parts words in SPICE, so it is 0") as caught:
         parse_netlist("* tank\nV1 a 0 DC 0 AC 1\nR17 a 0 1,000\n.end\n", "tank.cir")
     assert caught.value.line == 3
