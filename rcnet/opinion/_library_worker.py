@@ -80,6 +80,7 @@ def _attempt(log: list[str], shared: Any, call: Any, *arguments: str) -> bool:
     try:
         call(*arguments)
     except Exception:
+        # PySpice raises for harmless notes too; the log, not the exception, decides what the run is worth.
         return False
     finally:
         log += [str(line) for line in (*shared._stdout, *shared._stderr)]
