@@ -7,7 +7,7 @@ import math
 import re
 import tomllib
 from collections import deque
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import replace
 from pathlib import Path
@@ -224,7 +224,7 @@ class _Reader:
                 else "the ladder has no path.",
                 'Write path = "in -> out".',
             )
-            return
+            ends = []
         sections = table.get("sections")
         if not isinstance(sections, list) or not all(isinstance(text, str) for text in sections):
             self.complain(
@@ -235,6 +235,9 @@ class _Reader:
             return
         places = self.section_lines((*path, "sections"), sections)
         good = [number for number, text in enumerate(sections) if self.readable(text, places[number])]
+        if not ends:
+            self.failed.update(sections[number].split()[1] for number in good)
+            return
         if len(good) < len(sections) and not any(sections[number].split()[0] == "series" for number in good):
             return  # the series part missing now is one that could not be read
         parts = self.network.ladder_parts(ends[0], ends[1], [sections[number] for number in good])
@@ -282,12 +285,13 @@ class _Reader:
 
     def source(self, name: str, drive: dict[str, Any]) -> None:
         nodes = drive.get("nodes")
-        if not isinstance(nodes, str) or len(nodes.split()) != 2:
+        words = nodes.split() if isinstance(nodes, str) else []
+        if len(words) != 2:
             what = f"nodes is {shown(nodes)}." if "nodes" in drive else "'nodes' is missing."
-            raise CircuitError(f"{name}: {what}", remedy='Write nodes = "in 0".').at(
-                self.file, self.line("sources", name, "nodes")
-            )
-        a, b = nodes.split()
+            self.complain(("sources", name, "nodes"), f"{name}: {what}", 'Write nodes = "in 0".')
+            self.failed.add(name)
+            words = [GROUND, GROUND]  # to read on: what drives the source has mistakes of its own
+        a, b = words
         rest = {key: value for key, value in drive.items() if key != "nodes"}
         parse_drive(name, (a, b), {})
         # Each key is read alone first, so that every wrong one is told on its own line.
@@ -320,10 +324,46 @@ class _Reader:
             )
         for word in words:
             check_node(word)
-            # A part that could not be read may be the one that touches the node; its own message is enough.
-            if not self.network.has_node(word) and not self.failed:
-                self.network.node_index(word)
+            if not self.network.has_node(word) and not self.may_be_touched(word):
+                self.must_be_there(self.network.node_index, word)
         return tuple(words) if len(words) == 1 or words[1] != GROUND else (words[0],)
+
+    def may_be_touched(self, node: str) -> bool:
+        """True if what could not be read may be what touches a node; then that message is enough."""
+        if not self.failed:
+            return False
+        if "ladder" in self.table and re.fullmatch(r".+_\d+", node):
+            return True  # a ladder names the nodes between its ends itself
+        return node in self.unread_words()
+
+    def must_be_there(self, find: Callable[[str], object], name: str) -> None:
+        """Raise CircuitError unless the network has a part or node of that name."""
+        try:
+            find(name)
+        except CircuitError as exc:
+            if not self.failed:
+                raise
+            # The names listed would be those that could be read, as if there were no others.
+            raise CircuitError(exc.message, remedy="Check its spelling.") from exc
+
+    def unread_words(self) -> set[str]:
+        """The words of the parts, ladders and sources among which something could not be read."""
+        ladders = self.table.get("ladder", [])
+        texts = [self.sub_text("parts", name) for name in self.failed]
+        texts += [self.sub_text("sources", name, "nodes") for name in self.failed]
+        texts += [
+            str(table.get("path", "")).replace("->", " ")
+            for table in (ladders if isinstance(ladders, list) else [ladders])
+            if isinstance(table, dict)
+        ]
+        return {word for text in texts for word in text.split()}
+
+    def sub_text(self, *path: str) -> str:
+        """The text at a path of keys; "" where there is none."""
+        value: Any = self.table
+        for key in path:
+            value = value.get(key) if isinstance(value, dict) else None
+        return value if isinstance(value, str) else ""
 
     def grounded(self) -> None:
         if self.failed or not len(self.network):
@@ -468,7 +508,7 @@ class _Reader:
         only = replace(spec, needs=(key,), may=())
         options = parse_options(only, {key: table[key]})
         if key == "part" and options["part"] not in self.failed:
-            self.network.part(str(options["part"]))
+            self.must_be_there(self.network.part, str(options["part"]))
         return options
 
     def hand(self, text: Any) -> Expression:
@@ -476,7 +516,7 @@ class _Reader:
             raise CircuitError(f"hand is {shown(text)}, not text.", remedy='Write hand = "1/(2*pi*R1*C1)".')
         formula = parse_expression(text)
         for name in sorted(formula.names - {"T"} - self.failed):
-            self.network.part(name)
+            self.must_be_there(self.network.part, name)
         return formula
 
 

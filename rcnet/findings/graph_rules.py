@@ -17,28 +17,23 @@ def _first_place(circuit: Circuit, trouble: Trouble) -> Place:
     return circuit.place_of(trouble.parts[0]) if trouble.parts else _whole(circuit)
 
 
+def _told(circuit: Circuit, kind: str, remedy: str) -> Iterator[Remark]:
+    """A remark for each trouble of one kind that denies the network a solution at any frequency."""
+    for trouble in troubles(circuit.network, dc=False):
+        if trouble.kind == kind:
+            yield Remark(explain(trouble, dc=False), remedy, _first_place(circuit, trouble))
+
+
 @rule("floating", "error")
 def floating(circuit: Circuit) -> Iterator[Remark]:
     """Nodes that nothing connects to ground have no defined voltage; a simulator aborts or invents one."""
-    for trouble in troubles(circuit.network, dc=False):
-        if trouble.kind == "floating":
-            yield Remark(
-                explain(trouble, dc=False),
-                "Connect them to the rest, or remove them.",
-                _first_place(circuit, trouble),
-            )
+    yield from _told(circuit, "floating", "Connect them to the rest, or remove them.")
 
 
 @rule("voltage-loop", "error")
 def voltage_loop(circuit: Circuit) -> Iterator[Remark]:
     """A loop of voltage sources contradicts itself or leaves its current undefined."""
-    for trouble in troubles(circuit.network, dc=False):
-        if trouble.kind == "loop":
-            yield Remark(
-                explain(trouble, dc=False),
-                "Put a resistance in the loop, or remove one of its parts.",
-                _first_place(circuit, trouble),
-            )
+    yield from _told(circuit, "loop", "Put a resistance in the loop, or remove one of its parts.")
 
 
 @rule("inductor-loop", "warning")

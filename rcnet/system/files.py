@@ -112,7 +112,7 @@ def write_file(path: str | os.PathLike[str], data: str | bytes) -> None:
         raise OutputError(
             "a folder of that name stands there.",
             file=os.fspath(path),
-            remedy="Name a file inside it, or choose another place with --output.",
+            remedy="Name a file inside it, or choose another place.",
         )
     payload = data.encode("utf-8") if isinstance(data, str) else data
     try:
@@ -172,4 +172,4 @@ def _why_unwritable(exc: Exception) -> str:
 def _remedy_unwritable(exc: Exception) -> str:
     if isinstance(exc, OSError) and exc.errno in (errno.ENOSPC, getattr(errno, "EDQUOT", -1)):
         return "Free some space and run again."
-    return "Choose another place with --output."
+    return "Choose another place."

@@ -625,7 +625,7 @@ def test_a_mistake_is_told_once_with_its_line_and_remedy(name: str) -> None:
 
 
 def test_every_mistake_of_a_file_is_told_in_order() -> None:
-    """Twelve mistakes in twelve places come at once, sorted by line, each with its own."""
+    """Thirteen mistakes in thirteen places come at once, sorted by line, each with its own."""
     text = """\
 titel = "x"
 output = "nowhere"
@@ -654,10 +654,53 @@ hand = "R9"
 """
     with pytest.raises(CircuitError) as caught:
         read(text)
-    assert [problem.line for problem in caught.value.problems] == [1, 4, 5, 6, 11, 12, 16, 17, 19, 21, 23, 24]
+    assert [problem.line for problem in caught.value.problems] == [
+        1,
+        2,
+        4,
+        5,
+        6,
+        11,
+        12,
+        16,
+        17,
+        19,
+        21,
+        23,
+        24,
+    ]
     assert all(problem.file == "gauge.rc.toml" and problem.remedy for problem in caught.value.problems)
     assert caught.value.line == 1
-    assert str(caught.value).count("\n") == 11
+    assert str(caught.value).count("\n") == 12
+
+
+def test_a_mistake_hides_no_other() -> None:
+    """A wrong path hides no wrong section, wrong nodes no wrong drive, a wrong part no unknown node."""
+    text = """\
+title = "Leak listener"
+output = "outt"
+[parts]
+R1 = "in a 1k"
+R2 = "a b 4,7k"
+[ladder]
+path = "a out"
+sections = ["series R7 1x", "shunt C7 1n"]
+[sources.Vin]
+nodes = "in"
+ac = "1 ohm"
+dc = "x"
+[[claims]]
+measure = "gain"
+at = 1
+at_most = 1
+of = "b"
+hand = "R9 + R7 + C7"
+"""
+    with pytest.raises(CircuitError) as caught:
+        read(text)
+    # Not line 17: node b is named by R2, which cannot be read.
+    assert [problem.line for problem in caught.value.problems] == [2, 5, 7, 8, 10, 11, 12, 18]
+    assert caught.value.problems[-1].remedy == "Check its spelling."
 
 
 def test_a_part_that_cannot_be_read_draws_no_further_complaints() -> None:
