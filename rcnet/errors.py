@@ -14,7 +14,7 @@ RcnetError
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 
 @dataclass(frozen=True, slots=True)
@@ -22,12 +22,18 @@ class Problem:
     """One thing wrong, with its place and its remedy.
 
     `line` counts from 1 and is None where no line can be named. `remedy` is a sentence saying what to do.
+    code: the name of the rule that was broken, where it has one
+    text: the line itself; column, width: where on it the trouble stands, from 1, None where that is not known
     """
 
     message: str
     file: str | None = None
     line: int | None = None
     remedy: str | None = None
+    code: str | None = None
+    text: str = ""
+    column: int | None = None
+    width: int = 1
 
     def __str__(self) -> str:
         place = ""
@@ -46,6 +52,7 @@ class RcnetError(Exception):
       message: what is wrong, a full sentence with its stop
       file, line: the place, where there is one
       remedy: what to do, a full sentence
+      code: the name of the rule that was broken, where it has one
       problems: several problems found at once; the first one fills the four fields above
     """
 
@@ -56,9 +63,10 @@ class RcnetError(Exception):
         file: str | None = None,
         line: int | None = None,
         remedy: str | None = None,
+        code: str | None = None,
         problems: Iterable[Problem] = (),
     ) -> None:
-        self.problems: tuple[Problem, ...] = tuple(problems) or (Problem(message, file, line, remedy),)
+        self.problems: tuple[Problem, ...] = tuple(problems) or (Problem(message, file, line, remedy, code),)
         first = self.problems[0]
         self.message, self.file, self.line, self.remedy = first.message, first.file, first.line, first.remedy
         super().__init__("\n".join(str(problem) for problem in self.problems))
@@ -70,11 +78,10 @@ class RcnetError(Exception):
     def at(self, file: str | None = None, line: int | None = None) -> RcnetError:
         """The same error with a place filled in wherever a problem has none yet."""
         placed = (
-            Problem(
-                p.message,
-                p.file if p.file is not None else file,
-                p.line if p.line is not None else line,
-                p.remedy,
+            replace(
+                p,
+                file=p.file if p.file is not None else file,
+                line=p.line if p.line is not None else line,
             )
             for p in self.problems
         )

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import importlib
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from typing import Literal
+from typing import Any, Literal
 
 from ..values import Expression
 from .measure_table import MeasureSpec
@@ -13,11 +15,26 @@ from .network import Network
 
 @dataclass(frozen=True, slots=True)
 class Place:
-    """Where something stands: the file, the line from 1, and the text there."""
+    """Where something stands: the file, the line from 1, and the text there.
+
+    column, width: which characters of the text are meant, from 1; None where the whole line is
+    """
 
     file: str
     line: int | None
     text: str = ""
+    column: int | None = None
+    width: int = 1
+
+    def at(self, word: str) -> Place:
+        """The same place, pointing at the first whole `word` on its line; unchanged where it is not there."""
+        if not word:
+            return self
+        found = re.search(
+            rf"(?<![^\s,()='\"{{}}]){re.escape(word)}(?![^\s,()='\"{{}}])", self.text, re.IGNORECASE
+        )
+        start = found.start() if found else self.text.find(word)
+        return self if start < 0 else replace(self, column=start + 1, width=len(word))
 
 
 @dataclass(frozen=True, slots=True)
@@ -112,6 +129,96 @@ class SealNote:
     anyway: bool = False
 
 
+@dataclass(frozen=True, slots=True)
+class Request:
+    """An analysis or a measurement that a netlist asks of a simulator and that rcnet hands on unchanged.
+
+    word: `.dc`, `.tf`, `.four` or `.meas`; text: the rest of the line, node names as in the network
+    """
+
+    word: str
+    text: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class StartingState:
+    """Where a transient starts other than in the steady state.
+
+    nodes: node -> volts (`.ic`); parts: capacitor -> volts, inductor -> amperes (`ic=`), which count only
+    where the run uses them (`uic`)
+    """
+
+    nodes: Mapping[str, float] = field(default_factory=dict)
+    parts: Mapping[str, float] = field(default_factory=dict)
+
+    def __bool__(self) -> bool:
+        return bool(self.nodes or self.parts)
+
+
+@dataclass(frozen=True, slots=True)
+class Parameter:
+    """A named number of a netlist (`.param`).
+
+    name: in lower case; text: as written behind the `=`; parts: the parts whose values depend on it
+    """
+
+    name: str
+    value: float
+    text: str
+    place: Place
+    parts: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Subcircuit:
+    """A `.subckt` of a netlist: its name in lower case, its ports, its parameters, how often it is used."""
+
+    name: str
+    ports: tuple[str, ...]
+    parameters: tuple[str, ...]
+    uses: int
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class LeftOut:
+    """A part of a netlist that is not linear and was left out on demand.
+
+    kind: what it is, as `a diode`; nodes: those it touches that are still in the network (its boundary)
+    """
+
+    name: str
+    kind: str
+    nodes: tuple[str, ...]
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Seen:
+    """Something that was noticed while a netlist was read; a rule of that code reports it."""
+
+    code: str
+    message: str
+    remedy: str
+    place: Place
+    severity: Literal["error", "warning", "note"] | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Silence:
+    """A finding that is not to be told: its code, and the line for which, or None for the whole circuit.
+
+    trusted: from the command line, and not from the file that is looked at itself
+    """
+
+    code: str
+    file: str | None = None
+    line: int | None = None
+    trusted: bool = False
+    place: Place | None = None
+
+
 @dataclass(frozen=True)
 class Circuit:
     """A network with its output, analyses, conditions and claims, and where each thing stands.
@@ -120,6 +227,10 @@ class Circuit:
     places: where each part and source stands, by name
     value_texts: the value of each part as written in a netlist, by name (for rules about spelling)
     options: simulator options found in a netlist, lower-case names
+    requests, initial, parameters, subcircuits, left_out: what else a netlist holds
+    seen: what the reader noticed; silenced: what is not to be told
+    files: the files a netlist was read from, itself first; definition: the netlist before its subcircuits
+    were put in place, for `with_parameters`
     """
 
     network: Network
@@ -136,6 +247,15 @@ class Circuit:
     options: Mapping[str, str] = field(default_factory=dict)
     seal: SealNote | None = None
     lines: tuple[str, ...] = ()
+    requests: tuple[Request, ...] = ()
+    initial: StartingState = field(default_factory=StartingState)
+    parameters: Mapping[str, Parameter] = field(default_factory=dict)
+    subcircuits: tuple[Subcircuit, ...] = ()
+    left_out: tuple[LeftOut, ...] = ()
+    seen: tuple[Seen, ...] = ()
+    silenced: tuple[Silence, ...] = ()
+    files: tuple[str, ...] = ()
+    definition: Any = field(default=None, compare=False, repr=False)
 
     @property
     def analysis(self) -> Analyses:
@@ -150,6 +270,15 @@ class Circuit:
     def with_network(self, network: Network) -> Circuit:
         """The same circuit about a changed network."""
         return replace(self, network=network)
+
+    def with_parameters(self, values: Mapping[str, str | float]) -> Circuit:
+        """The same netlist with some of its `.param` values changed: `{"rload": "4.7k"}`.
+
+        Everything that depends on them follows. Raises CircuitError for a name that is no parameter.
+        """
+        # The netlist room lies above this one; it is looked up when called.
+        changed: Circuit = importlib.import_module("rcnet.netlist").with_parameters(self, values)
+        return changed
 
     def place_of(self, name: str) -> Place:
         """Where a part stands; the file without a line where that is not known."""

@@ -17,7 +17,7 @@ class Finding:
     """Something wrong or suspicious in a circuit or netlist.
 
     code: the rule's name; line: from 1, None where no line can be named; remedy: what to do, a sentence
-    text: the line itself, for showing
+    text: the line itself, for showing; column, width: which of its characters are meant, from 1
     """
 
     code: str
@@ -27,6 +27,8 @@ class Finding:
     line: int | None
     remedy: str
     text: str = ""
+    column: int | None = None
+    width: int = 1
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,4 +86,14 @@ def _of(each: Rule, circuit: Circuit) -> Iterator[Finding]:
     for remark in each.look(circuit):
         place = remark.place
         severity = remark.severity or each.severity
-        yield Finding(each.code, severity, remark.message, place.file, place.line, remark.remedy, place.text)
+        yield Finding(
+            each.code,
+            severity,
+            remark.message,
+            place.file,
+            place.line,
+            remark.remedy,
+            place.text,
+            place.column,
+            place.width,
+        )
