@@ -12,6 +12,7 @@ from .circuit import Circuit, Sweep
 from .circuit.circuit_file import checked_sweep
 from .curves import Analysis, Curve, Curves
 from .errors import InputError
+from .exact import transient_from
 from .handover import with_analyses
 from .netlist import frequencies
 from .values import parse_quantity
@@ -67,9 +68,15 @@ def response_curves(circuit: Circuit, nodes: Sequence[str], axis: Sequence[float
 
 
 def time_curves(circuit: Circuit, nodes: Sequence[str], axis: Sequence[float]) -> Curves:
-    """The exact voltages at `axis` (s) under the sources' waveforms, of the same nodes."""
-    named = _named(circuit, nodes)
-    return _curves(circuit, "transient", "V", named, axis, circuit.network.transient(axis, named))
+    """The exact voltages at `axis` (s) under the sources' waveforms, of the same nodes.
+
+    They start where the circuit says: in the steady state, or in its starting state as ngspice takes it.
+    """
+    named, run = _named(circuit, nodes), circuit.analyses.transient
+    values = transient_from(
+        circuit.network, axis, named, circuit.initial, run is not None and run.use_initial
+    )
+    return _curves(circuit, "transient", "V", named, axis, values)
 
 
 def _named(circuit: Circuit, nodes: Sequence[str]) -> list[str]:

@@ -23,19 +23,21 @@ from .measure_table import MEASURES, MeasureSpec, measure_spec, parse_options
 from .network import GROUND, Network, PartArrays
 from .parts import KINDS, Kind, Part, Source
 from .topology import Trouble, explain, floating_nodes, loose_groups, stiff_loops, troubles
-from .waveform import EDGE_SHARE, Points, Sine, Square, Step, Waveform
+from .waveform import EDGE_SHARE, NEVER, Exponential, Points, Sine, Square, Step, Waveform
 
 __all__ = [
     "EDGE_SHARE",
     "GROUND",
     "KINDS",
     "MEASURES",
+    "NEVER",
     "SUFFIX",
     "Analyses",
     "Bound",
     "Circuit",
     "Claim",
     "Conditions",
+    "Exponential",
     "Kind",
     "LeftOut",
     "MeasureSpec",

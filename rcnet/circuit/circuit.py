@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import importlib
-import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any, Literal
@@ -11,6 +10,23 @@ from typing import Any, Literal
 from ..values import Expression
 from .measure_table import MeasureSpec
 from .network import Network
+
+LONGEST_POINTED = 10_000  # characters
+_PARTING = frozenset(" \t\r\n\v\f,()='\"{}")
+
+
+def _whole_word(text: str, word: str) -> int:
+    """Where a whole word first stands, whatever its case; else where the same letters do; else -1."""
+    lower, wanted = text.lower(), word.lower()
+    if len(lower) != len(text) or len(wanted) != len(word):
+        return text.find(word)
+    start = lower.find(wanted)
+    while start >= 0:
+        end = start + len(wanted)
+        if (start == 0 or text[start - 1] in _PARTING) and (end == len(text) or text[end] in _PARTING):
+            return start
+        start = lower.find(wanted, start + 1)
+    return text.find(word)
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,13 +43,13 @@ class Place:
     width: int = 1
 
     def at(self, word: str) -> Place:
-        """The same place, pointing at the first whole `word` on its line; unchanged where it is not there."""
-        if not word:
+        """The same place, pointing at the first whole `word` on its line; unchanged where it is not there.
+
+        On a line of more than 10 000 characters nobody looks for it.
+        """
+        if not word or len(self.text) > LONGEST_POINTED:
             return self
-        found = re.search(
-            rf"(?<![^\s,()='\"{{}}]){re.escape(word)}(?![^\s,()='\"{{}}])", self.text, re.IGNORECASE
-        )
-        start = found.start() if found else self.text.find(word)
+        start = _whole_word(self.text, word)
         return self if start < 0 else replace(self, column=start + 1, width=len(word))
 
 
@@ -228,6 +244,7 @@ class Circuit:
     value_texts: the value of each part as written in a netlist, by name (for rules about spelling)
     options: simulator options found in a netlist, lower-case names
     requests, initial, parameters, subcircuits, left_out: what else a netlist holds
+    other_numbers: (owner, text, place) of each number on the lines of sources and cards, as written
     seen: what the reader noticed; silenced: what is not to be told
     files: the files a netlist was read from, itself first; definition: the netlist before its subcircuits
     were put in place, for `with_parameters`
@@ -255,6 +272,7 @@ class Circuit:
     seen: tuple[Seen, ...] = ()
     silenced: tuple[Silence, ...] = ()
     files: tuple[str, ...] = ()
+    other_numbers: tuple[tuple[str, str, Place], ...] = ()
     definition: Any = field(default=None, compare=False, repr=False)
 
     @property

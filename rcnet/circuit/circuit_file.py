@@ -16,7 +16,7 @@ from typing import Any
 from ..errors import CircuitError, Problem, RcnetError
 from ..system.files import read_text
 from ..values import Expression, parse_expression, parse_quantity
-from .circuit import Analyses, Bound, Circuit, Claim, Conditions, Place, Sweep, TransientRun
+from .circuit import Analyses, Bound, Circuit, Claim, Conditions, Place, Silence, Sweep, TransientRun
 from .drive import parse_drive
 from .ladder import parse_part, parse_section
 from .measure_table import MeasureSpec, check_band, measure_spec, parse_options
@@ -34,7 +34,7 @@ LOWEST_FREQUENCY, HIGHEST_FREQUENCY = 1e-30, 1e30
 
 # The library's reader takes time in the square of a key's dots.
 _DEEP_KEY = re.compile(r"""(?<![\w-])(?:(?:[\w-]++|"[^"\n]*"|'[^'\n]*')[ \t]*+\.[ \t]*+){40}""")
-_TOP = ("title", "output", "parts", "ladder", "sources", "analysis", "conditions", "claims")
+_TOP = ("title", "output", "silence", "parts", "ladder", "sources", "analysis", "conditions", "claims")
 _STRING = re.compile(r""" "([^"\\]*)" | '([^']*)' """, re.VERBOSE)
 _SWEEP = ("from", "to", "per_decade")
 _RUN = ("stop", "step", "start", "max_step")
@@ -152,12 +152,13 @@ class _Reader:
         self.parts()
         self.ladders()
         self.sources()
-        self.sensed()
+        self.named_parts()
         output = self.output()
         self.grounded()
         analyses = self.analyses()
         conditions = self.conditions()
         claims = self.claims(output)
+        silenced = self.silenced()
         if self.problems:
             raise CircuitError(problems=self.ordered())
         return Circuit(
@@ -172,6 +173,7 @@ class _Reader:
             self.places,
             analysis_places=self.analysis_places,
             lines=tuple(self.source_lines),
+            silenced=silenced,
         )
 
     def ordered(self) -> list[Problem]:
@@ -302,11 +304,16 @@ class _Reader:
             self.network.add_source(parse_drive(name, (a, b), rest))
             self.places[name] = self.place("sources", name)
 
-    def sensed(self) -> None:
+    def named_parts(self) -> None:
+        """Complain about an F, H or K that names a part which is not there or not of its kind."""
         for part in list(self.network.parts):
+            row = self.network.part_index(part.name)
             if part.senses is not None and part.senses not in self.failed:
                 with self.catching("parts", part.name):
-                    self.network.sensed_by(self.network.part_index(part.name))
+                    self.network.sensed_by(row)
+            if part.couples is not None and self.failed.isdisjoint(part.couples):
+                with self.catching("parts", part.name):
+                    self.network.coupled_by(row)
 
     def output(self) -> tuple[str, ...]:
         value = self.table.get("output")
@@ -403,6 +410,21 @@ class _Reader:
             with self.catching("conditions", "temperature"):
                 result = _temperature(table["temperature"])
         return result
+
+    def silenced(self) -> tuple[Silence, ...]:
+        codes = self.table.get("silence", [])
+        if not isinstance(codes, list) or not all(isinstance(code, str) for code in codes):
+            self.complain(
+                ("silence",),
+                f"silence is {shown(codes)}, not a list of texts.",
+                'Name rules, as silence = ["dangling"]; `rcnet check --rules` lists them.',
+            )
+            return ()
+        lines = self.section_lines(("silence",), codes)
+        places = [Place(self.file, line, self.source_lines[line - 1]) for line in lines]
+        return tuple(
+            Silence(code, self.file, place=place.at(code)) for code, place in zip(codes, places, strict=True)
+        )
 
     # -- claims
 

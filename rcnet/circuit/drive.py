@@ -9,11 +9,12 @@ from ..errors import CircuitError
 from ..values import parse_quantity
 from .parts import Source
 from .shown import nearest, shown
-from .waveform import Points, Sine, Square, Step, Waveform
+from .waveform import Exponential, Points, Sine, Square, Step, Waveform
 
 _SQUARE = {"low", "high", "frequency", "duty", "rise", "fall", "delay"}
-_SINE = {"amplitude", "frequency", "offset", "phase", "delay"}
+_SINE = {"amplitude", "frequency", "offset", "phase", "delay", "damping"}
 _STEP = {"from", "to", "at", "rise"}
+_EXPONENTIAL = {"from", "to", "at", "time_constant", "back_at", "back_time_constant"}
 _POINTS = {"values", "period"}
 
 
@@ -91,12 +92,21 @@ def _sine(read: _Reader) -> Waveform:
         read.may("offset", read.unit, 0.0),
         read.may("phase", "deg", 0.0),
         read.may("delay", "s", 0.0),
+        read.may("damping", "1", 0.0),
     )
 
 
 def _step(read: _Reader) -> Waveform:
     read.only(_STEP)
     return Step(read.need("from"), read.need("to"), read.may("at", "s", 0.0), read.may("rise", "s", 0.0))
+
+
+def _exponential(read: _Reader) -> Waveform:
+    read.only(_EXPONENTIAL)
+    there = (read.need("from"), read.need("to"), read.may("at", "s", 0.0), read.need("time_constant", "s"))
+    if "back_at" not in read.table and "back_time_constant" not in read.table:
+        return Exponential(*there)
+    return Exponential(*there, read.need("back_at", "s"), read.need("back_time_constant", "s"))
 
 
 def _points(read: _Reader) -> Waveform:
@@ -122,5 +132,6 @@ WAVEFORMS: dict[str, Callable[[_Reader], Waveform]] = {
     "square": _square,
     "sine": _sine,
     "step": _step,
+    "exponential": _exponential,
     "points": _points,
 }

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from ..errors import CircuitError, QuantityError
 from ..values import Tolerance, classify_extra, parse_quantity, parse_rating, parse_tempco, parse_tolerance
@@ -39,29 +39,31 @@ def parse_section(text: str) -> Section:
 def parse_part(name: str, text: str) -> Part:
     """Read what stands behind `NAME =` in `[parts]`: nodes, value, then extras in any order.
 
-    E and G take four nodes; F and H take two nodes and the voltage source they sense. Raises CircuitError.
+    E and G take four nodes; F and H take two nodes and the voltage source they sense; K takes the two
+    inductors it couples. Raises CircuitError.
     """
     check_name(name, "part name")
     letter = name[:1].upper()
     kind = KINDS.get(letter)
     if kind is None or kind.is_source:
         where = (
-            "Put sources under [sources.NAME]." if kind else f"Known first letters: {' '.join('RCLEGFH')}."
+            "Put sources under [sources.NAME]." if kind else f"Known first letters: {' '.join('RCLEGFHK')}."
         )
         raise CircuitError(f"{shown(name)} cannot stand in [parts].", remedy=where)
     words = text.split()
-    lead = kind.nodes + (1 if kind.senses_branch else 0)
+    lead = kind.nodes + (1 if kind.senses_branch else 0) + (2 if kind.couples else 0)
     if len(words) < lead + 1:
         raise CircuitError(
             f"{name} = {shown(text)} is too short for a {kind.name}.", remedy=f"Write {_pattern(letter)}."
         )
     senses = words[kind.nodes] if kind.senses_branch else None
-    return read_value_and_extras(name, letter, tuple(words[: kind.nodes]), senses, words[lead:])
+    part = read_value_and_extras(name, letter, tuple(words[: kind.nodes]), senses, words[lead:])
+    return replace(part, couples=(words[0], words[1])) if kind.couples else part
 
 
 def _pattern(letter: str) -> str:
     middle = {"E": "a b control_a control_b gain", "G": "a b control_a control_b siemens"}
-    middle |= {"F": "a b Vsense gain", "H": "a b Vsense ohms"}
+    middle |= {"F": "a b Vsense gain", "H": "a b Vsense ohms", "K": "L1 L2 coefficient"}
     return f'{letter}1 = "{middle.get(letter, "node node value [tolerance] [rating] [tempco]")}"'
 
 

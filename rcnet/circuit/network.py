@@ -18,9 +18,9 @@ from ..errors import CircuitError
 from ..values import Tolerance, parse_quantity, parse_rating, parse_tempco, parse_tolerance
 from .ladder import parse_section
 from .names import check_name, check_node
-from .parts import KINDS, Part, Source
+from .parts import KINDS, Kind, Part, Source
 from .shown import shown
-from .waveform import Points, Sine, Square, Step, Waveform
+from .waveform import Waveform
 
 if TYPE_CHECKING:
     import networkx
@@ -33,7 +33,7 @@ class PartArrays:
     """The network as arrays; row k is part k.
 
     kinds: uint8 (parts,), the ASCII code of the kind's letter
-    nodes: int64 (parts, 4), node indices, -1 where a kind has fewer than four; ground is 0
+    nodes: int64 (parts, 4), node indices, -1 where a kind has fewer than four (K has none); ground is 0
     values: float64 (parts,), base units; for sources their operating value
     node_count: int, ground included
     """
@@ -52,7 +52,7 @@ class _Extras:
 
 
 class Network:
-    """A network of resistors, capacitors, inductors, controlled sources and independent sources.
+    """A network of resistors, capacitors, inductors (coupled ones too), controlled and independent sources.
 
     Parts are added one after another; analyses never change a network, and `with_values` gives a changed
     copy. Node and part names are case-sensitive text without blanks; ground is `"0"`.
@@ -69,6 +69,8 @@ class Network:
         self._node_index: dict[str, int] = {GROUND: 0}
         self._extras: dict[int, _Extras] = {}
         self._senses: dict[int, str] = {}
+        self._couples: dict[int, tuple[str, str]] = {}
+        self._coupled: dict[frozenset[str], str] = {}  # each pair of inductors -> the K that couples it
         self._sources: dict[str, Source] = {}
         self._arrays: PartArrays | None = None
 
@@ -92,17 +94,39 @@ class Network:
 
         For networks of many thousand parts. Raises CircuitError, with nothing added, where one is not right.
         """
-        self._add_many("R", list(names), list(a), list(b), values)
+        listed = list(names)
+        self._add_many("R" * len(listed), listed, list(a), list(b), values)
 
     def add_capacitors(
         self, names: Iterable[str], a: Iterable[str], b: Iterable[str], values: npt.ArrayLike
     ) -> None:
         """Add many capacitors at once, values (parts,) in farad; see `add_resistors`."""
-        self._add_many("C", list(names), list(a), list(b), values)
+        listed = list(names)
+        self._add_many("C" * len(listed), listed, list(a), list(b), values)
+
+    def add_passives(
+        self, names: Iterable[str], a: Iterable[str], b: Iterable[str], values: npt.ArrayLike
+    ) -> None:
+        """Add many resistors and capacitors at once, in any order; the first letter says which it is.
+
+        See `add_resistors`.
+        """
+        listed = list(names)
+        letters = "".join([name[:1] for name in listed]).upper()
+        self._add_many(letters, listed, list(a), list(b), values)
 
     def add_inductor(self, name: str, a: str, b: str, value: str | float, **extras: Any) -> None:
         """Add an inductor; value in henry. Options as for a resistor."""
         self._add_valued("L", name, (a, b), value, extras)
+
+    def add_coupling(self, name: str, first: str, second: str, coefficient: str | float) -> None:
+        """Add a K: two inductors, named in any order and before or after this, share a magnetic field.
+
+        coefficient: from -1 to 1; the mutual inductance is coefficient sqrt(L1 L2). The first node of each
+        inductor carries its dot: current into both dots magnetises alike where the coefficient is positive.
+        Raises CircuitError for a coefficient beyond one, one inductor twice, or a pair coupled already.
+        """
+        self._add_valued("K", name, (), coefficient, {}, couples=(first, second))
 
     def add_voltage_controlled_voltage_source(
         self, name: str, a: str, b: str, control_a: str, control_b: str, gain: str | float
@@ -129,7 +153,8 @@ class Network:
         self._add_valued("H", name, (a, b), transresistance, {}, senses=sensed)
 
     def add_voltage_source(self, name: str, a: str, b: str, **drive: Any) -> None:
-        """Add a voltage source, v(a) - v(b); drive: ac, ac_phase, dc, and one of square, sine, step, points.
+        """Add a voltage source, v(a) - v(b); drive: ac, ac_phase, dc and a waveform: square, sine, step,
+        exponential or points.
 
         A waveform is a dict with the keys of the circuit file, or a Waveform object as `waveform=`.
         """
@@ -153,7 +178,7 @@ class Network:
         """Add a part given as a record."""
         if part.kind in KINDS and KINDS[part.kind].is_source:
             raise CircuitError(f"{part.name} is a source.", remedy="Add it with add_source.")
-        row = self._append(part.kind, part.name, part.nodes, part.value, part.senses)
+        row = self._append(part.kind, part.name, part.nodes, part.value, part.senses, part.couples)
         if part.tolerance is not None or part.rating is not None or part.tempco is not None:
             self._extras[row] = _Extras(part.tolerance, part.rating, part.tempco)
 
@@ -203,6 +228,7 @@ class Network:
         extras: dict[str, Any],
         *,
         senses: str | None = None,
+        couples: tuple[str, str] | None = None,
     ) -> None:
         kind = KINDS[letter]
         check_name(name, "part name")
@@ -212,12 +238,12 @@ class Network:
                 remedy=f"Let its name begin with {letter}, as {letter}1.",
             )
         number = parse_quantity(value, kind.unit, name)
-        self.add_part(_with_extras(Part(name, letter, nodes, number, senses), extras))
+        self.add_part(_with_extras(Part(name, letter, nodes, number, senses, couples=couples), extras))
 
     def _add_many(
-        self, letter: str, names: list[str], a: list[str], b: list[str], values: npt.ArrayLike
+        self, letters: str, names: list[str], a: list[str], b: list[str], values: npt.ArrayLike
     ) -> None:
-        numbers = _many_values(letter, names, a, b, values)
+        numbers = _many_values(letters, names, a, b, values)
         for node in chain(a, b):
             if not isinstance(node, str):
                 check_node(node)
@@ -239,12 +265,18 @@ class Network:
         self._nodes.frombytes(nodes.tobytes())
         self._index.update(zip(names, range(len(self._names), len(self._names) + len(names)), strict=True))
         self._names.extend(names)
-        self._kinds.extend(letter.encode() * len(names))
+        self._kinds.extend(letters.encode())
         self._values.frombytes(numbers.tobytes())
         self._arrays = None
 
     def _append(
-        self, letter: str, name: str, nodes: Sequence[str], value: float, senses: str | None = None
+        self,
+        letter: str,
+        name: str,
+        nodes: Sequence[str],
+        value: float,
+        senses: str | None = None,
+        couples: tuple[str, str] | None = None,
     ) -> int:
         kind = KINDS.get(letter)
         if kind is None:
@@ -261,20 +293,43 @@ class Network:
             raise CircuitError(
                 f"{name} has {len(nodes)} nodes; a {kind.name} needs {kind.nodes}.", remedy="Name them all."
             )
-        if not math.isfinite(value):
-            raise CircuitError(f"{name} has the value {value!r}.", remedy="Give a finite number.")
-        if kind.is_passive and value <= 0:
-            raise CircuitError(
-                f"{name} has the value {value!r} {kind.unit}; a {kind.name} needs a positive one.",
-                remedy="Leave the part out, or give both its ends one node name for a link.",
-            )
+        _check_value(kind, name, value)
         if kind.senses_branch and not senses:
             raise CircuitError(f"{name} names no voltage source to sense.", remedy="Name one, as Vsense.")
         for node in nodes:
             check_node(node)
-        return self._store(letter, name, nodes, value, senses)
+        pair = self._checked_pair(name, couples) if kind.couples else None
+        return self._store(letter, name, nodes, value, senses, pair)
 
-    def _store(self, letter: str, name: str, nodes: Sequence[str], value: float, senses: str | None) -> int:
+    def _checked_pair(self, name: str, couples: Sequence[str] | None) -> tuple[str, str]:
+        """The two inductors a K names. Raises CircuitError unless they are two, and no other K's."""
+        if couples is None or len(couples) != 2 or not all(couples):
+            raise CircuitError(
+                f"{name} names {len(couples or ())} inductors; a coupling joins two.",
+                remedy="Name both, as L1 L2; three windings take a K for each pair.",
+            )
+        first, second = couples
+        if first == second:
+            raise CircuitError(
+                f"{name} couples {shown(first)} with itself.", remedy="Name two different inductors."
+            )
+        # ngspice 39 adds the coefficients up with a line in its log; nobody means that.
+        if (other := self._coupled.get(frozenset(couples))) is not None:
+            raise CircuitError(
+                f"{name} couples {shown(first)} and {shown(second)}, as {other} does already.",
+                remedy="Keep one of the two, with the coefficient that is meant.",
+            )
+        return first, second
+
+    def _store(
+        self,
+        letter: str,
+        name: str,
+        nodes: Sequence[str],
+        value: float,
+        senses: str | None,
+        couples: tuple[str, str] | None,
+    ) -> int:
         row = len(self._names)
         for node in nodes:
             if node not in self._node_index:
@@ -288,6 +343,9 @@ class Network:
         self._values.append(value)
         if senses:
             self._senses[row] = senses
+        if couples is not None:
+            self._couples[row] = couples
+            self._coupled[frozenset(couples)] = name
         self._arrays = None
         return row
 
@@ -339,6 +397,7 @@ class Network:
             extras.tolerance,
             extras.rating,
             extras.tempco,
+            self._couples.get(row),
         )
 
     def has_node(self, name: str) -> bool:
@@ -369,6 +428,27 @@ class Network:
             )
         return self._index[sensed]
 
+    def coupled_by(self, row: int) -> tuple[int, int]:
+        """The rows of the two inductors that a K in `row` couples, as named. Raises CircuitError."""
+        name, pair = self._names[row], self._couples[row]
+        first, second = (self._inductor(name, inductor) for inductor in pair)
+        return first, second
+
+    def _inductor(self, coupling: str, name: str) -> int:
+        row = self._index.get(name)
+        if row is None or chr(self._kinds[row]) != "L":
+            what = "of which there is none here" if row is None else "which is no inductor"
+            raise CircuitError(
+                f"{coupling} couples {shown(name)}, {what}.",
+                remedy=_known("Inductors", (part.name for part in self.parts if part.kind == "L")),
+            )
+        return row
+
+    @property
+    def couplings(self) -> tuple[int, ...]:
+        """The rows of all K, in the order added."""
+        return tuple(self._couples)
+
     @property
     def values(self) -> dict[str, float]:
         """The value of every part that is not an independent source, by name, in base units."""
@@ -390,13 +470,18 @@ class Network:
         """The network as a `networkx.MultiGraph`: nodes are net names, edges are parts keyed by name.
 
         Edge data: `kind` (letter) and `value` (base unit); E and G join their output nodes and carry
-        `control`, F and H carry `senses`. Built anew at each call.
+        `control`, F and H carry `senses`. A K is no edge: the graph's own attribute `couplings` holds its
+        two inductors and its coefficient by its name. Built anew at each call.
         """
         import networkx
 
-        graph = networkx.MultiGraph(title=self.title)
+        couplings: dict[str, tuple[str, str, float]] = {}
+        graph = networkx.MultiGraph(title=self.title, couplings=couplings)
         graph.add_nodes_from(self._node_names)
         for part in self.parts:
+            if part.couples is not None:
+                couplings[part.name] = (*part.couples, part.value)
+                continue
             data: dict[str, Any] = {"kind": part.kind, "value": part.value}
             if len(part.nodes) == 4:
                 data["control"] = part.nodes[2:]
@@ -422,6 +507,7 @@ class Network:
             dict(self._senses),
             dict(self._sources),
         )
+        twin._couples, twin._coupled = dict(self._couples), dict(self._coupled)
         return twin
 
     def with_values(self, values: Mapping[str, str | float]) -> Network:
@@ -434,6 +520,7 @@ class Network:
             number = parse_quantity(value, KINDS[part.kind].unit, name)
             if KINDS[part.kind].is_passive and not (number > 0 and math.isfinite(number)):
                 raise CircuitError(f"{name} has the value {number!r}.", remedy="Give a positive one.")
+            _check_value(KINDS[part.kind], name, number)
             twin._values[self._index[name]] = number
         return twin
 
@@ -496,29 +583,45 @@ def _analysis(room: str, name: str) -> Any:
     return getattr(importlib.import_module(room), name)
 
 
+def _check_value(kind: Kind, name: str, value: float) -> None:
+    if not math.isfinite(value):
+        raise CircuitError(f"{name} has the value {value!r}.", remedy="Give a finite number.")
+    if kind.is_passive and value <= 0:
+        raise CircuitError(
+            f"{name} has the value {value!r} {kind.unit}; a {kind.name} needs a positive one.",
+            remedy="Leave the part out, or give both its ends one node name for a link.",
+        )
+    if kind.couples and abs(value) > 1:
+        raise CircuitError(
+            f"{name} has the coefficient {value!r}; two inductors share at most all of their field.",
+            remedy="Give a number from -1 to 1: the mutual inductance over sqrt(L1 L2).",
+        )
+
+
 def _many_values(
-    letter: str, names: list[str], a: list[str], b: list[str], values: npt.ArrayLike
+    letters: str, names: list[str], a: list[str], b: list[str], values: npt.ArrayLike
 ) -> npt.NDArray[np.float64]:
-    """The values of many parts as an array, once names and values are known to be right."""
-    kind = KINDS[letter]
+    """The values of many resistors and capacitors as an array, once names and values are known to be right."""
     try:
         numbers = np.asarray(values, dtype=np.float64)
     except (TypeError, ValueError) as exc:
         raise CircuitError(f"the values are not numbers: {exc}.", remedy="Give base units.") from exc
-    if not len(names) == len(a) == len(b) or numbers.shape != (len(names),):
+    if not len(names) == len(a) == len(b) == len(letters) or numbers.shape != (len(names),):
         raise CircuitError(
             f"{len(names)} names, {len(a)} and {len(b)} nodes, values of shape {numbers.shape} do not match.",
             remedy="Give as many of each, in lists of one dimension.",
         )
-    for name in names:
+    for name, letter in zip(names, letters, strict=True):
         check_name(name, "part name")
-        if name[0].upper() != letter:
+        if name[0].upper() != letter or letter not in "RC":
+            kind = KINDS["C" if letter == "C" else "R"]
             raise CircuitError(
                 f"the {kind.name} is called {shown(name)}.",
-                remedy=f"Let its name begin with {letter}, as {letter}1.",
+                remedy=f"Let its name begin with {kind.letter}, as {kind.letter}1.",
             )
     wrong = np.flatnonzero(~(np.isfinite(numbers) & (numbers > 0)))
     if len(wrong):
+        kind = KINDS[letters[wrong[0]]]
         raise CircuitError(
             f"{names[wrong[0]]} has the value {float(numbers[wrong[0]])!r} {kind.unit}; "
             f"a {kind.name} needs a finite, positive one.",
@@ -559,9 +662,10 @@ def _source(letter: str, name: str, a: str, b: str, drive: dict[str, Any]) -> So
             remedy=f"Let its name begin with {letter}, as {letter}in.",
         )
     waveform = drive.pop("waveform", None)
-    if waveform is not None and not isinstance(waveform, (Square, Sine, Step, Points)):
+    if waveform is not None and not isinstance(waveform, Waveform):
         raise CircuitError(
-            f"{name}: waveform is {shown(waveform)}.", remedy="Give a Square, Sine, Step or Points."
+            f"{name}: waveform is {shown(waveform)}.",
+            remedy="Give a Square, Sine, Step, Exponential or Points.",
         )
     parsed = parse_drive(name, (a, b), drive)
     return parsed if waveform is None else replace(parsed, waveform=_only(waveform, parsed))

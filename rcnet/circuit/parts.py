@@ -15,7 +15,8 @@ from .waveform import Waveform
 class Kind:
     """One kind of part: its letter, its name, the unit of its value, and how many nodes it has.
 
-    `senses_branch` is True where the part is controlled by the current through a named voltage source.
+    `senses_branch` is True where the part is controlled by the current through a named voltage source,
+    `couples` where it has no nodes and couples two named inductors.
     """
 
     letter: str
@@ -23,6 +24,7 @@ class Kind:
     unit: str
     nodes: int
     senses_branch: bool = False
+    couples: bool = False
 
     @property
     def is_source(self) -> bool:
@@ -46,6 +48,7 @@ KINDS: dict[str, Kind] = {
         Kind("G", "voltage-controlled current source", "S", 4),
         Kind("F", "current-controlled current source", "1", 2, senses_branch=True),
         Kind("H", "current-controlled voltage source", "ohm", 2, senses_branch=True),
+        Kind("K", "coupling of inductors", "1", 0, couples=True),
         Kind("V", "voltage source", "V", 2),
         Kind("I", "current source", "A", 2),
     )
@@ -56,10 +59,11 @@ KINDS: dict[str, Kind] = {
 class Part:
     """One part as a record: a view made on demand from the network's arrays.
 
-    nodes: two names, or four for E and G (output pair, then controlling pair)
+    nodes: two names, four for E and G (output pair, then controlling pair), none for K
     value: in the kind's base unit; for an independent source its dc value, zero where it has none
     senses: the voltage source whose current controls an F or H, else None
     rating: value and unit (`W`, `V` or `A`); tempco: 1/K
+    couples: the two inductors that a K couples, else None; the first node of each carries its dot
     """
 
     name: str
@@ -70,6 +74,7 @@ class Part:
     tolerance: Tolerance | None = None
     rating: tuple[float, str] | None = None
     tempco: float | None = None
+    couples: tuple[str, str] | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -9,6 +9,8 @@ from ..errors import CircuitError
 
 # A vertical edge in a netlist becomes one of this share of the period (interface, section 3).
 EDGE_SHARE = 1e-6
+# SPICE's EXP has no word for a wave that does not fall; a netlist then names this time, in seconds.
+NEVER = 1e30
 
 
 def _need(condition: bool, message: str, remedy: str) -> None:
@@ -118,9 +120,10 @@ class Square:
 
 @dataclass(frozen=True, slots=True)
 class Sine:
-    """offset + amplitude sin(2 pi frequency (t - delay) + phase), held at its first value until `delay`.
+    """offset + amplitude exp(-damping (t - delay)) sin(2 pi frequency (t - delay) + phase).
 
-    amplitude, offset: V or A; frequency: Hz; phase: degrees; delay: s.
+    It is held at its first value until `delay`, as SPICE's SIN is. amplitude, offset: V or A; frequency: Hz;
+    phase: degrees; delay: s; damping: 1/s.
     """
 
     amplitude: float
@@ -128,6 +131,7 @@ class Sine:
     offset: float = 0.0
     phase: float = 0.0
     delay: float = 0.0
+    damping: float = 0.0
 
     def __post_init__(self) -> None:
         _finite(amplitude=self.amplitude, frequency=self.frequency, offset=self.offset, phase=self.phase)
@@ -141,6 +145,11 @@ class Sine:
             f"delay is {self.delay!r} s.",
             "Give a delay of zero or more.",
         )
+        _need(
+            self.damping >= 0 and math.isfinite(self.damping),
+            f"damping is {self.damping!r} 1/s.",
+            "Give a damping of zero or more; a sine that grows for ever is no source.",
+        )
 
     @property
     def start(self) -> float:
@@ -149,8 +158,8 @@ class Sine:
 
     @property
     def repeats(self) -> float | None:
-        """The period in seconds."""
-        return 1.0 / self.frequency
+        """The period in seconds, None for a damped sine, of which no two turns are alike."""
+        return None if self.damping else 1.0 / self.frequency
 
     def with_edges(self, stop: float) -> Sine:
         """A sine has no edges."""
@@ -190,6 +199,62 @@ class Step:
         if self.rise > 0:
             return self
         return replace(self, rise=EDGE_SHARE * (stop if stop > 0 else 1.0))
+
+
+@dataclass(frozen=True, slots=True)
+class Exponential:
+    """From `initial` towards `final` along one exponential, and back along another, as SPICE's EXP.
+
+    From rise_delay on, (final - initial) (1 - exp(-(t - rise_delay) / rise_time_constant)) is added to
+    `initial`; from fall_delay on, the same of the fall is taken away, wherever the rise has come to by then.
+    initial, final: V or A; the others: s. A `fall_delay` of NEVER or later: it never falls.
+    """
+
+    initial: float
+    final: float
+    rise_delay: float
+    rise_time_constant: float
+    fall_delay: float = math.inf
+    fall_time_constant: float = math.inf
+
+    def __post_init__(self) -> None:
+        _finite(**{"from": self.initial, "to": self.final})
+        _need(
+            self.rise_delay >= 0 and math.isfinite(self.rise_delay),
+            f"at is {self.rise_delay!r} s.",
+            "Give a time of zero or more.",
+        )
+        _need(
+            self.fall_delay >= self.rise_delay,
+            f"the way back begins at {self.fall_delay!r} s, before the way there, {self.rise_delay!r} s.",
+            "Let it begin later.",
+        )
+        named = (("time_constant", self.rise_time_constant, True),)
+        for name, value, finite in (*named, ("back_time_constant", self.fall_time_constant, self.falls)):
+            _need(
+                value > 0 and (math.isfinite(value) or not finite),
+                f"{name} is {value!r} s.",
+                f"Give {name} above zero.",
+            )
+
+    @property
+    def start(self) -> float:
+        """The value at t = 0."""
+        return self.initial
+
+    @property
+    def falls(self) -> bool:
+        """True if it ever goes back to where it began."""
+        return self.fall_delay < NEVER
+
+    @property
+    def repeats(self) -> float | None:
+        """None: it happens once."""
+        return None
+
+    def with_edges(self, stop: float) -> Exponential:
+        """An exponential has no vertical edge."""
+        return self
 
 
 @dataclass(frozen=True, slots=True)
@@ -250,4 +315,4 @@ class Points:
         return Points((*kept, (cut, v0 + (v1 - v0) * (cut - t0) / (t1 - t0))), self.period)
 
 
-Waveform = Square | Sine | Step | Points
+Waveform = Square | Sine | Step | Exponential | Points

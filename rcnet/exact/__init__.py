@@ -13,6 +13,7 @@ from .ac import (
     response_and_slope,
     response_chunks,
 )
+from .initial import started, transient_from
 from .modes import ModalSystem, Modes, modal_system, modes, natural_rates
 from .noise import BOLTZMANN, noise, noise_shares, total_noise
 from .one_part import OnePart, between, every_part, one_part
@@ -67,8 +68,10 @@ __all__ = [
     "solver_for",
     "source_currents",
     "span_of",
+    "started",
     "step_response",
     "total_noise",
     "transfer_function",
     "transient",
+    "transient_from",
 ]

@@ -140,6 +140,11 @@ def _given_values(
             raise CircuitError(
                 f"the samples of {name} are not finite and positive.", remedy="Give (samples,) numbers."
             )
+        if kind.couples and (np.abs(numbers) > 1).any():
+            raise CircuitError(
+                f"the samples of {name} go beyond one; two inductors share at most all of their field.",
+                remedy="Give coefficients from -1 to 1.",
+            )
         if kind.is_source:
             raise CircuitError(
                 f"{name} is a source.", remedy="Sample the parts; a response is per unit of the source."
@@ -282,14 +287,17 @@ def _slope_of_all(network: Network, s: Complex, solution: Solution, of: tuple[in
     """dH/ds from the full equations (A0 + s A1) x = b: (A0 + s A1) x' = -A1 x."""
     eqs = nodal.equations(network)
     assert solution.source_currents is not None
-    branches = solution.source_currents[list(eqs.branch_of)]
-    unknowns = np.concatenate([solution.voltages[1:], branches])
+    b = nodal.right_hand_side(network, eqs, ac_drive(network).sources, None, 1)
+    if eqs.windings:  # their unknowns are small differences of currents
+        unknowns = nodal.solve(eqs, s, np.repeat(b, len(s), axis=1))
+    else:
+        branches = solution.source_currents[list(eqs.branch_of)]
+        unknowns = np.concatenate([solution.voltages[1:], branches])
     target = np.zeros((eqs.size, len(s)), dtype=np.complex128)
     np.add.at(target, eqs.rows, -eqs.slope[:, None] * unknowns[eqs.columns])
     # -A1 x = (A0 x - b)/s: zero in a row where A0 and b are, though rounding leaves something of A1 x.
     settled = np.ones(eqs.size, dtype=bool)
     settled[eqs.rows[eqs.constant != 0]] = False
-    b = nodal.right_hand_side(network, eqs, ac_drive(network).sources, None, 1)
     target[settled & ~b.any(axis=1)] = 0
     slope = np.concatenate([np.zeros((1, len(s))), nodal.solve(eqs, s, target)])
     return np.asarray(slope[of[0]] - slope[of[1]])

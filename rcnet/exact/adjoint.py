@@ -37,8 +37,8 @@ class Field:
 
     terms: the node voltages as a sum of weight (points,) times voltages (nodes, points) plus what their
         rounding left out (nodes, points)
-    branches: (parts, points): forwards the currents of voltage sources, transposed what a volt in series with
-        an E or H source does to the output; None where the network has no part that needs them
+    branches: (parts, points): forwards the currents of V, E, H and L, transposed what a volt in series with
+        each of them does to the output; None where the network has no part that needs them
     """
 
     terms: tuple[tuple[Numbers, Numbers, Numbers], ...]
@@ -74,18 +74,23 @@ class Equations:
         self.buffered = not self.reciprocal and not letters & set("LGFH") and solver.eliminates
 
     def forward(
-        self, sources: Complex, currents: Numbers | None = None, series: Float | None = None
+        self, sources: Complex, currents: Numbers | None = None, series: Numbers | None = None
     ) -> Field:
         """The solution for independent sources (parts,) and amperes put into the nodes (nodes, points).
 
-        series: (parts,), volts in series with E, H and L, or None
+        series: (parts,) or (parts, points), volts in series with E, H and L, or None
         """
         if (self.reciprocal or self.buffered) and series is None:
             return _Admittances(self.network, self.s).solve(Drive(sources, currents))
         return _nodal(self.network, self.s, sources, currents, series)
 
-    def transposed(self, output: Numbers) -> Field:
-        """What an ampere into each node does to the output, the sum of `output` (nodes, points) times v."""
+    def transposed(self, output: Numbers, series: Numbers | None = None) -> Field:
+        """What an ampere into each node does to the output, the sum of `output` (nodes, points) times v.
+
+        series: (parts, points), weights of the currents of L in the output besides, or None
+        """
+        if series is not None:
+            return _nodal(self.network, self.s, None, output, series)
         if self.buffered:
             return _Buffered(self.network, self.s).transposed(output)
         if self.reciprocal:
@@ -240,7 +245,7 @@ def _nodal(
     s: Numbers,
     sources: Complex | None,
     currents: Numbers | None,
-    series: Float | None = None,
+    series: Numbers | None = None,
 ) -> Field:
     """The solution for the sources; where they are None that of the transposed equations."""
     arrays = network.arrays()
@@ -259,11 +264,11 @@ def _nodal(
                 rhs[: arrays.node_count - 1] = here[1:]
         else:
             rhs = nodal.right_hand_side(network, eqs, sources, here, len(group))
-            for row in np.flatnonzero(series).tolist() if series is not None else ():
-                rhs[eqs.branch_of[row]] += series[row]  # type: ignore[index]
+        if series is not None:
+            rhs = rhs + eqs.in_series(series[:, group] if series.ndim == 2 else series[:, None])
         x, rest = _with_rest(eqs, s[group], rhs)
-        for row, unknown in eqs.branch_of.items():
-            branches[row, group] = x[unknown] + rest[unknown]
+        rows = np.array(list(eqs.branch_of), dtype=np.int64)
+        branches[rows[:, None], group] = eqs.currents(x) + eqs.currents(rest)
         if sources is None:
             nodes[:, :, group] = _balances_to_nodes(eqs, x, rest)
         else:

@@ -39,6 +39,7 @@ _LEAST_RATIO = 1.5  # between a circle and the poles inside and outside it
 _ROUNDING = 1e-13  # of the greatest response on a circle: what rounding leaves of a residue that is zero
 _MOST_SPLIT = 4  # poles on one circle that are told apart
 _APART = 0.02  # of the circle's radius, by how much they must differ
+_TOLD_APART = 1e-4  # of their size, from which on undamped poles are never taken together
 _WINDOW = 1e3  # a shifted eigenproblem serves poles within this factor of its shift
 
 
@@ -153,7 +154,10 @@ def _circle_about(
     inside = set(group)
     others = [p for p in all_of if p not in inside] + [p.conjugate() for p in all_of if p.imag]
     reach = min((abs(p - centre) for p in others), default=math.inf)
-    damped = abs(centre.real) if abs(centre.real) > 1e-9 * abs(centre) else abs(centre)
+    undamped = abs(centre.real) <= 1e-9 * abs(centre)
+    if undamped and spread > _TOLD_APART * abs(centre):
+        return None  # points of a circle about both would grow with time; each has room for its own
+    damped = abs(centre) if undamped else abs(centre.real)
     # Half of what damps the poles stays: beyond, the points' own exponentials would die away too slowly.
     radius = min(0.45 * damped, reach / 2)
     if spread and radius < 3 * spread:
@@ -180,6 +184,8 @@ def _counted(
     trace = np.einsum("pii,pi->p", solved, columns[:, 0, :])
     weight = (points - centre) / len(points)
     number = complex((trace * weight).sum())
+    if not np.isfinite(number):
+        return None
     count = round(number.real)
     # What is no whole number is a phantom of rounding, far beyond every mode as a rule; whoever uses the
     # places compares with the exact response, which shows where a mode is missing.

@@ -25,6 +25,7 @@ Complex = npt.NDArray[np.complex128]
 Float = npt.NDArray[np.float64]
 Numbers = npt.NDArray[Any]  # float64 where every pole is real, else complex128
 Pair = tuple[int, int]
+Driver = str | tuple[tuple[str, float], ...]  # a source, or several at once, each so many times its unit
 
 MOST_NODES = 1000  # inner nodes of a passive network up to which every mode is listed
 FULL_NODES = 300  # beyond, a model of fewer modes with the same response is faster and as good
@@ -173,11 +174,20 @@ def natural_rates(network: Network) -> Complex:
     return np.asarray(0.0 - passive_modes(branches, solver_for(network).span.low).rates, dtype=np.complex128)
 
 
+def drive_of(network: Network, source: Driver) -> Complex:
+    """(parts,): one unit of a source, or of several at once, in their rows; zero elsewhere."""
+    drive = np.zeros(len(network), dtype=np.complex128)
+    for name, times in ((source, 1.0),) if isinstance(source, str) else source:
+        drive[network.part_index(name)] = times
+    return drive
+
+
 def modal_system(
-    network: Network, of: Sequence[Pair], sources: Sequence[str], *, every: bool = False
+    network: Network, of: Sequence[Pair], sources: Sequence[Driver], *, every: bool = False
 ) -> ModalSystem:
     """The transfer functions from each source to each output, checked against the exact response.
 
+    sources: names, or several sources that act as one with the given multiples of their units
     every: with all modes, also in a large network, where fewer would give the same responses
     Raises UnsolvableError, and UndecidedError where the modes cannot be had to the accuracy promised.
     """
@@ -190,7 +200,7 @@ def modal_system(
     return kept[key]
 
 
-Key = tuple[tuple[Pair, ...], tuple[str, ...], bool]
+Key = tuple[tuple[Pair, ...], tuple[Driver, ...], bool]
 _systems: weakref.WeakKeyDictionary[Network, tuple[PartArrays, dict[Key, ModalSystem]]] = (
     weakref.WeakKeyDictionary()
 )
@@ -206,7 +216,7 @@ def _kept(network: Network) -> dict[Key, ModalSystem]:
     return entry[1]
 
 
-def _built(network: Network, of: Sequence[Pair], sources: Sequence[str], *, every: bool) -> ModalSystem:
+def _built(network: Network, of: Sequence[Pair], sources: Sequence[Driver], *, every: bool) -> ModalSystem:
     require_solvable(network)
     branches = branches_of(network)
     poles: Numbers
@@ -214,7 +224,7 @@ def _built(network: Network, of: Sequence[Pair], sources: Sequence[str], *, ever
     if branches is None:
         poles, residues = expanded(pole_places(network), lambda s: sampled(network, of, sources, s))
     elif len(branches.inner) > FULL_NODES and not every:
-        found = reduced_modes(network, branches, of, sources)
+        found = reduced_modes(network, branches, of, [drive_of(network, each) for each in sources])
         poles, residues = _passive_residues(network, branches, found, of, sources)
     else:
         found = passive_modes(branches, solver_for(network).span.low)
@@ -237,19 +247,18 @@ def _built(network: Network, of: Sequence[Pair], sources: Sequence[str], *, ever
     return ModalSystem(poles[kept], system.residues[..., kept], system.static, system.direct)
 
 
-def sampled(network: Network, of: Sequence[Pair], sources: Sequence[str], s: Complex) -> Complex:
+def sampled(network: Network, of: Sequence[Pair], sources: Sequence[Driver], s: Complex) -> Complex:
     """The exact responses at any s: (sources, outputs, points)."""
     return _differences(_voltages(network, of, sources, s), of)
 
 
-def _voltages(network: Network, of: Sequence[Pair], sources: Sequence[str], s: Numbers) -> Numbers:
+def _voltages(network: Network, of: Sequence[Pair], sources: Sequence[Driver], s: Numbers) -> Numbers:
     solver = solver_for(network)
     everything = list(range(network.arrays().node_count))
     wanted = sorted({node for pair in of for node in pair}) if solver.eliminates else everything
     rows = []
     for name in sources:
-        drive = np.zeros(len(network), dtype=np.complex128)
-        drive[network.part_index(name)] = 1.0
+        drive = drive_of(network, name)
         block = solver.block()
         blocks = [
             solver.solve(s[start : start + block], Drive(drive), wanted).voltages
@@ -259,15 +268,36 @@ def _voltages(network: Network, of: Sequence[Pair], sources: Sequence[str], s: N
     return np.array(rows)
 
 
+def _gross(network: Network, of: Sequence[Pair], source: Driver, s: Float) -> Float:
+    """About what several sources would do if none could cancel another, (outputs, points), s real."""
+    drive, arrays = np.abs(drive_of(network, source)), network.arrays()
+    currents = np.zeros((arrays.node_count, len(s)))
+    for row in np.flatnonzero((drive != 0) & (arrays.kinds == ord("I"))).tolist():
+        currents[arrays.nodes[row, :2]] += drive[row].real
+        drive[row] = 0.0
+    voltages = np.abs(solver_for(network).solve(s, Drive(drive, currents)).voltages)
+    a, b = np.array(of, dtype=np.int64).T
+    return np.asarray(voltages[a] + voltages[b])
+
+
 def _differences(voltages: Numbers, of: Sequence[Pair]) -> Numbers:
     a, b = np.array(of, dtype=np.int64).T
     return np.asarray(voltages[:, a] - voltages[:, b])
 
 
-def _limits(network: Network, of: Sequence[Pair], sources: Sequence[str], low: float) -> tuple[Float, Float]:
+def _limits(
+    network: Network, of: Sequence[Pair], sources: Sequence[Driver], low: float
+) -> tuple[Float, Float]:
     """The responses at `low` and at infinite frequency, zero where no more than rounding is left of a
     difference.
     """
+    if not solver_for(network).eliminates and not all(isinstance(source, str) for source in sources):
+        # So far out, pivoting keeps its digits only where a fixed node is at one volt or at none.
+        drives = np.array([drive_of(network, source).real for source in sources])
+        used = np.flatnonzero(drives.any(axis=0))
+        names = [network.names[row] for row in used.tolist()]
+        static, direct = _limits(network, of, names, low)
+        return drives[:, used] @ static, drives[:, used] @ direct
     far = solver_for(network).span.far_above
     points = np.array([low, far, min(far * 1e8, 1e158)])
     voltages = np.real(_voltages(network, of, sources, points))
@@ -276,6 +306,9 @@ def _limits(network: Network, of: Sequence[Pair], sources: Sequence[str], low: f
     size = np.minimum(np.abs(voltages[:, a]), np.abs(voltages[:, b]))
     if not solver_for(network).eliminates:
         size = np.maximum(size, np.abs(voltages).max(axis=1, keepdims=True))
+    for number, source in enumerate(sources):
+        if not isinstance(source, str):  # several may cancel one another, and leave what rounding leaves
+            size[number] = np.maximum(size[number], _gross(network, of, source, points))
     values = np.where(np.abs(values) <= 64 * np.finfo(float).eps * size, 0.0, values)
     near, further = np.abs(values[..., 1]), np.abs(values[..., 2])
     if (further > 1e4 * near).any():
@@ -286,7 +319,7 @@ def _limits(network: Network, of: Sequence[Pair], sources: Sequence[str], low: f
 
 
 def _passive_residues(
-    network: Network, branches: Branches, found: PassiveModes, of: Sequence[Pair], sources: Sequence[str]
+    network: Network, branches: Branches, found: PassiveModes, of: Sequence[Pair], sources: Sequence[Driver]
 ) -> tuple[Float, Float]:
     row = np.full(network.arrays().node_count, -1)
     row[branches.inner] = np.arange(len(branches.inner))
@@ -307,27 +340,30 @@ def _rows(shapes: twofold.Twofold, rows: npt.NDArray[np.int64]) -> twofold.Twofo
 
 
 def _driven(
-    network: Network, branches: Branches, found: PassiveModes, row: npt.NDArray[np.int64], name: str
+    network: Network, branches: Branches, found: PassiveModes, row: npt.NDArray[np.int64], source: Driver
 ) -> Float:
-    """v_k . (b_G - rate_k b_C + j): how strongly a source of one volt or ampere drives each mode."""
-    source = network.sources[name]
-    a, b = (int(row[network.node_index(node)]) for node in source.nodes)
-    if source.kind == "I":
+    """v_k . (b_G - rate_k b_C + j): how strongly a unit of a source drives each mode."""
+    drive, arrays = drive_of(network, source).real, network.arrays()
+    total = np.zeros(found.shapes[0].shape[1])
+    for part in np.flatnonzero((drive != 0) & (arrays.kinds == ord("I"))).tolist():
+        a, b = row[arrays.nodes[part, :2]]
         high, low = twofold.subtract(_rows(found.shapes, np.array([b])), _rows(found.shapes, np.array([a])))
-        return np.asarray((high + low)[0])
-    level = fixed_potentials(network, name)[branches.held] * (branches.held >= 0)
+        total += drive[part] * (high + low)[0]
+    level = fixed_potentials(network, drive)[branches.held] * (branches.held >= 0)
     used = np.flatnonzero(level)
+    if not len(used):
+        return total
     capacitive = branches.capacitance[used, None] > 0
     flow = _rows(found.shapes, branches.ends[used].max(axis=1))
     flow = twofold.times(flow, ((branches.conductance + branches.capacitance) * level)[used, None])
     if capacitive.any():
         flow = twofold.times(flow, np.where(capacitive, -found.rates, 1.0))
     high, low = twofold.sum_rows(flow)
-    return np.asarray(high + low)
+    return np.asarray(total + (high + low))
 
 
 def _checked(
-    network: Network, of: Sequence[Pair], sources: Sequence[str], system: ModalSystem
+    network: Network, of: Sequence[Pair], sources: Sequence[Driver], system: ModalSystem
 ) -> ModalSystem:
     """The system, compared with the exact response at frequencies over the whole span.
 
@@ -351,6 +387,9 @@ def _checked(
     rounding = 1e-14 * np.minimum(np.abs(voltages[:, a]), np.abs(voltages[:, b])).max(axis=-1)
     if not solver_for(network).eliminates:  # pivoting leaves rounding of the greatest unknown
         rounding = rounding + _ROUNDING * np.abs(voltages).max(axis=(1, 2))[:, None]
+    for number, source in enumerate(sources):
+        if not isinstance(source, str):
+            rounding[number] = rounding[number] + 1e-14 * _gross(network, of, source, np.abs(s)).max(axis=-1)
     size = np.maximum(np.abs(exact).max(axis=-1), np.abs(system.static))
     worst = error > _AGREES * size + rounding
     if worst.any():

@@ -5,10 +5,13 @@ of all nodes but ground, then the currents of V, E, H, L (from their first node 
 
     [ Y   B ] [v]   [j]
     [ D  -Z ] [i] = [e],        matrix = A0 + s A1
+
+Coupled inductors have the unknowns and equations of `windings` instead.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import partial
@@ -20,6 +23,7 @@ import numpy.typing as npt
 from ..circuit import Network, loose_groups
 from ..errors import UnsolvableError
 from .residual import Residual
+from .windings import Windings, windings_of
 
 Numbers = npt.NDArray[Any]
 
@@ -38,7 +42,8 @@ class Equations:
     rows, columns: (entries,); constant, slope: (entries,): matrix = constant + s slope at each place
     size: unknowns; node_count: ground included; branch_of: part row -> its current's unknown
     gather: (gathered, 2), row and node: the currents that enter a node count in each of its rows
-    controlled: the names of the controlled sources
+    controlled: what may leave the equations without one solution, see `culprits`
+    windings: the groups of coupled inductors, whose unknowns are not their currents
     """
 
     rows: npt.NDArray[np.int64]
@@ -50,6 +55,34 @@ class Equations:
     branch_of: dict[int, int]
     gather: npt.NDArray[np.int64]
     controlled: tuple[str, ...] = ()
+    windings: tuple[Windings, ...] = ()
+
+    def currents(self, answer: Numbers) -> Numbers:
+        """The currents of the parts in `branch_of`, in that order, amperes, (branches, points).
+
+        answer: (size, points). Of transposed equations: what a volt in series with each part does.
+        """
+        found: Numbers = answer[self.node_count - 1 :].copy()
+        for group in self.windings:
+            at = self._places(group)
+            found[at] = group.currents(found[at])
+        return found
+
+    def in_series(self, volts: Numbers) -> Numbers:
+        """The right-hand side (size, points) of volts in series with the parts in `branch_of`.
+
+        volts: (parts, points). Transposed: amperes that the parts' currents are weighted with in the output.
+        """
+        rhs: Numbers = np.zeros((self.size, volts.shape[1]), dtype=volts.dtype)
+        rows = rhs[self.node_count - 1 :]
+        rows += volts[list(self.branch_of)]
+        for group in self.windings:
+            at = self._places(group)
+            rows[at] = group.volts(rows[at])
+        return rhs
+
+    def _places(self, group: Windings) -> list[int]:
+        return [self.branch_of[row] - self.node_count + 1 for row in group.rows]
 
     def dense(self, part: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]:
         """`constant` or `slope` as a full matrix (size, size)."""
@@ -114,7 +147,7 @@ def equations(
 
     Nodes that nothing but capacitors hold share one balance of currents, so that digits survive however low
     the frequency; with `high`, nodes that only resistors and inductors hold do, for high frequencies. With
-    `plain` every node has its own balance, as in a simulator.
+    `plain` every node has its own balance and every inductor its current for unknown, as in a simulator.
     """
     arrays = network.arrays()
     numbers = arrays.values if values is None else values
@@ -122,9 +155,16 @@ def equations(
     branches = [row for row, letter in enumerate(letters) if letter in "VEHL"]
     branch_of = {row: arrays.node_count - 1 + k for k, row in enumerate(branches)}
     stamps = _Triplets([] if plain else loose_groups(network, "CVEH" if high else "RLVEH"))
+    windings = windings_of(network, values)
+    turned = () if plain else windings
+    apart = {row for group in turned for row in group.rows}
     for row, letter in enumerate(letters):
+        if row in apart or (letter == "K" and turned):
+            continue
         nodes = [int(node) - 1 for node in arrays.nodes[row]]  # ground becomes -1 and is dropped
-        _STAMPS[letter](_Stamp(stamps, network, row, nodes, float(numbers[row]), branch_of))
+        _STAMPS[letter](_Stamp(stamps, network, row, nodes, numbers, branch_of))
+    for group in turned:
+        _windings(stamps, group, arrays.nodes[list(group.rows), :2] - 1, branch_of)
     table = np.array(stamps.entries, dtype=np.float64).reshape(-1, 4)
     gather = [(row, node + 1) for node in range(arrays.node_count - 1) for row in stamps.balances(node, -1)]
     return Equations(
@@ -136,7 +176,8 @@ def equations(
         arrays.node_count,
         branch_of,
         np.array(gather, dtype=np.int64).reshape(-1, 2),
-        tuple(name for name, letter in zip(network.names, letters, strict=True) if letter in "EGFH"),
+        culprits(network),
+        turned,
     )
 
 
@@ -148,8 +189,13 @@ class _Stamp:
     network: Network
     row: int
     n: list[int]
-    value: float
+    numbers: npt.NDArray[np.float64]
     branch_of: dict[int, int]
+
+    @property
+    def value(self) -> float:
+        """The part's value."""
+        return float(self.numbers[self.row])
 
     @property
     def own(self) -> int:
@@ -173,6 +219,29 @@ def _capacitor(part: _Stamp) -> None:
 def _inductor(part: _Stamp) -> None:
     part.into.branch(part.n[0], part.n[1], part.own)
     part.into.add(part.own, part.own, 0.0, -part.value)
+
+
+def _coupling(part: _Stamp) -> None:
+    first, second = part.network.coupled_by(part.row)
+    mutual = part.value * math.sqrt(part.numbers[first]) * math.sqrt(part.numbers[second])
+    a, b = part.branch_of[first], part.branch_of[second]
+    part.into.add(a, b, 0.0, -mutual)
+    part.into.add(b, a, 0.0, -mutual)
+
+
+def _windings(
+    into: _Triplets, group: Windings, ends: npt.NDArray[np.int64], branch_of: dict[int, int]
+) -> None:
+    """Coupled inductors: i = U j enters the balances, U^T v - s D j = 0 are their equations."""
+    unknowns = [branch_of[row] for row in group.rows]
+    for k, (a, b) in enumerate(ends.tolist()):
+        for share, unknown in zip(group.mix[k].tolist(), unknowns, strict=True):
+            if share:
+                into.current(a, b, unknown, share)
+                into.add(unknown, a, share)
+                into.add(unknown, b, -share)
+    for own, unknown in zip(group.own.tolist(), unknowns, strict=True):
+        into.add(unknown, unknown, 0.0, -own)
 
 
 def _current(part: _Stamp) -> None:
@@ -207,6 +276,7 @@ _STAMPS: dict[str, Callable[[_Stamp], None]] = {
     "R": _resistor,
     "C": _capacitor,
     "L": _inductor,
+    "K": _coupling,
     "V": _voltage,
     "I": _current,
     "E": _e_source,
@@ -337,6 +407,15 @@ def _nonzero(numbers: Numbers) -> Numbers:
     return np.where(numbers == 0, 1.0, numbers)
 
 
+def culprits(network: Network) -> tuple[str, ...]:
+    """The names of the controlled sources and of perfect couplings."""
+    arrays = network.arrays()
+    perfect = (arrays.kinds == ord("K")) & (np.abs(arrays.values) == 1)
+    rows = np.flatnonzero(np.isin(arrays.kinds, [ord(letter) for letter in "EGFH"]) | perfect)
+    names = network.names
+    return tuple(names[row] for row in rows.tolist())
+
+
 def singular(controlled: Sequence[str]) -> UnsolvableError:
     """The error for equations without one answer; `controlled` are the names of the usual culprits."""
     if not controlled:
@@ -344,8 +423,15 @@ def singular(controlled: Sequence[str]) -> UnsolvableError:
             "the network's equations have no solution that double precision can tell apart from others.",
             remedy="Look for part values more than fifteen decades apart.",
         )
-    verb = "cancels" if len(controlled) == 1 else "cancel"
     named = ", ".join(controlled[:8]) + (" and others" if len(controlled) > 8 else "")
+    if all(name[0] in "Kk" for name in controlled):
+        verb = "ties" if len(controlled) == 1 else "tie"
+        return UnsolvableError(
+            f"the network has no unique solution: {named}, of coefficient one, {verb} voltages together "
+            "that something else fixes too.",
+            remedy="Give each winding its resistance, or the coupling a coefficient below one.",
+        )
+    verb = "cancels" if len(controlled) == 1 else "cancel"
     return UnsolvableError(
         f"the network has no unique solution: {named} {verb} what would fix some voltage or current.",
         remedy="Look for a controlled source with a loop gain of exactly one, or one that controls itself.",

@@ -2,7 +2,8 @@
 
 A part enters the equations as a matrix of rank one, so with its coefficient changed by d the response is the
 bilinear H - d P/(1 + d z) (J. Sherman, W. Morrison, Ann. Math. Statist. 21:124-127, 1950; H. W. Bode, 1945):
-P is what it does to the output for what drives it, z what it does to what drives it itself.
+P is what it does to the output for what drives it, z what it does to what drives it itself. A coupling and a
+coupled inductor, which changes its mutual inductances too, enter as a matrix of a higher rank.
 """
 
 from __future__ import annotations
@@ -16,7 +17,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ..circuit import Network, Part
-from ..errors import CircuitError, UnsolvableError
+from ..errors import CircuitError, UndecidedError, UnsolvableError
 from .ac import ac_drive, node_pair
 from .adjoint import Equations, Field, points_of, unit_output
 from .solver import require_solvable
@@ -114,16 +115,22 @@ class OnePart:
 
 
 def one_part(network: Network, frequency: npt.ArrayLike, of: str, part: str) -> OnePart:
-    """The response at frequencies in Hz as a function of one part. Raises CircuitError for a source."""
+    """The response at frequencies in Hz as a function of one part.
+
+    Raises CircuitError for a source, UndecidedError for a coupling and a coupled inductor.
+    """
     return every_part(network, frequency, of, [part])[part]
 
 
 def every_part(
     network: Network, frequency: npt.ArrayLike, of: str, parts: list[str] | None = None
 ) -> dict[str, OnePart]:
-    """`one_part` for all parts but sources, or for those named; both solutions are shared."""
+    """`one_part` for all parts it is given for, or for those named; both solutions are shared.
+
+    It is not given for sources, couplings and coupled inductors.
+    """
     shared = _Shared(network, frequency, of)
-    names = list(network.values) if parts is None else parts
+    names = [name for name in network.values if name not in shared.coupled] if parts is None else parts
     return {name: shared.part(network.part(name)) for name in names}
 
 
@@ -144,6 +151,8 @@ class _Shared:
                 "the frequencies are no list of finite numbers from zero up.", remedy="Give hertz."
             )
         pair = node_pair(network, of)
+        rows = {row for coupling in network.couplings for row in (coupling, *network.coupled_by(coupling))}
+        self.coupled = {network.names[row] for row in rows}
         self.network, self.s = network, points_of(network, 2 * math.pi * points)
         if (network.arrays().kinds == ord("L")).any():
             # An inductor's admittance has no value at zero.
@@ -157,6 +166,11 @@ class _Shared:
         if part.kind in "VI":
             raise CircuitError(
                 f"{part.name} is a source.", remedy="Name a part; a response is per unit of it."
+            )
+        if part.name in self.coupled:
+            raise UndecidedError(
+                f"the response as a function of {part.name} alone is not given: inductors are coupled there.",
+                remedy="Solve afresh with its other value, as network.with_values does.",
             )
         nodes = [self.network.node_index(node) for node in part.nodes]
         if part.kind in "RCL":

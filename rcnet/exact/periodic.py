@@ -14,7 +14,7 @@ from functools import cached_property
 import numpy as np
 import numpy.typing as npt
 
-from ..circuit import Network, Sine
+from ..circuit import Exponential, Network, Sine, Waveform
 from ..errors import CircuitError, UndecidedError
 from .ac import node_pair
 from .modes import Complex, Float, ModalSystem, Pair, modal_system, sampled
@@ -57,11 +57,12 @@ def periodic_pairs(network: Network, pairs: Sequence[Pair]) -> list[Periodic]:
         wave = waves.get(name)
         if wave is None or wave.repeats is None:
             continue
-        if isinstance(wave, Sine):
+        if isinstance(wave, Sine):  # an undamped one, for it repeats
             steady = sampled(network, pairs, [name], np.array([2j * math.pi * wave.frequency]))[0, :, 0]
             for row, own in enumerate(parts):
                 own.append(SinePart(wave, complex(steady[row]), turns[name]))
         else:
+            assert not isinstance(wave, Exponential)
             made = piece_parts(network, pairs, system, number, name, pieces_of(wave), turns[name])
             for row, own in enumerate(parts):
                 own.append(made[row])
@@ -127,8 +128,17 @@ def _means(network: Network, system: ModalSystem, names: Sequence[str]) -> Float
         if wave is None:
             levels.append(source.operating_value)
         else:
-            levels.append(wave.offset if isinstance(wave, Sine) else pieces_of(wave).mean)
+            levels.append(_level(wave))
     return np.asarray(np.array(levels) @ system.static)
+
+
+def _level(wave: Waveform) -> float:
+    """The mean over a period; where there is none, what the waveform comes to in the end."""
+    if isinstance(wave, Sine):
+        return wave.offset
+    if isinstance(wave, Exponential):
+        return wave.initial if wave.falls else wave.final
+    return pieces_of(wave).mean
 
 
 # ---------------------------------------------------------------------- the output

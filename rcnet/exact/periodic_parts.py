@@ -21,7 +21,7 @@ from ..circuit import Network, Sine
 from .contour import circle
 from .modes import Complex, Float, ModalSystem, Numbers, Pair, sampled
 from .pieces import Followed, Indices, Pieces, followed
-from .transient import turns_of
+from .swings import turns_of
 
 _LEAST_GAP = 1.25  # ratio between the moduli of neighbouring poles a circle needs to pass between them
 

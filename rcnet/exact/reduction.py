@@ -12,6 +12,7 @@ import math
 from collections.abc import Sequence
 
 import numpy as np
+import numpy.typing as npt
 
 from ..circuit import Network
 from ..errors import UndecidedError
@@ -19,6 +20,8 @@ from .branches import Branches, Float
 from .passive_modes import PassiveModes, refined_modes, right_vectors, whole_groups
 from .solver import Drive, solver_for
 from .span import span_of
+
+Complex = npt.NDArray[np.complex128]
 
 PER_DECADE = 8  # solutions per decade of the span, for each source and for each output
 _MOST_NUMBERS = 30_000_000  # of node voltages held at once
@@ -29,9 +32,9 @@ _PASSES = 6
 
 
 def reduced_modes(
-    network: Network, branches: Branches, of: Sequence[tuple[int, int]], sources: Sequence[str]
+    network: Network, branches: Branches, of: Sequence[tuple[int, int]], drives: Sequence[Complex]
 ) -> PassiveModes:
-    """The modes of a model with the network's own responses from `sources` to `of`.
+    """The modes of a model with the network's own responses to `drives`, each (parts,), at `of`.
 
     The caller compares them with the exact response. Raises UndecidedError where the network is too large to
     hold the solutions.
@@ -40,7 +43,7 @@ def reduced_modes(
     floating = branches.groups(branches.conductance)
     weights = branches.conductance + (span.low if floating else 0.0) * branches.capacitance
     first = whole_groups(branches, floating) / math.sqrt(span.low) if floating else None
-    solutions = _solutions(network, branches, of, sources)
+    solutions = _solutions(network, branches, of, drives)
     space = _energy_basis(branches, weights, solutions if first is None else np.hstack([first, solutions]))
     own = space[:, len(floating) :]
     stored = branches.across(own) * np.sqrt(branches.capacitance)[:, None]
@@ -55,34 +58,32 @@ def reduced_modes(
 
 
 def _solutions(
-    network: Network, branches: Branches, of: Sequence[tuple[int, int]], sources: Sequence[str]
+    network: Network, branches: Branches, of: Sequence[tuple[int, int]], drives: Sequence[Complex]
 ) -> Float:
-    """The inner voltages at real frequencies, fast ones first, for each source and for a current into each
+    """The inner voltages at real frequencies, fast ones first, for each drive and for a current into each
     output.
     """
     span, solver = span_of(network), solver_for(network)
     decades = math.log10(span.high / span.low) + 2
     points = span.high * 10 / 10 ** np.linspace(0, decades, math.ceil(decades * PER_DECADE) + 1)
-    columns = len(points) * (len(sources) + len(of))
+    columns = len(points) * (len(drives) + len(of))
     if columns * len(branches.inner) > _MOST_NUMBERS:
         raise UndecidedError(
             f"the network has {len(branches.inner)} inner nodes, too many for its response over time.",
         )
     nodes = network.arrays().node_count
     found = []
-    wanted: list[str | tuple[int, int]] = [*sources, *of]
-    for which in wanted:
-        drive = np.zeros(len(network), dtype=np.complex128)
+    dead = np.zeros(len(network), dtype=np.complex128)
+    wanted: list[tuple[Complex, tuple[int, int] | None]] = [(drive, None) for drive in drives]
+    for drive, pair in [*wanted, *((dead, pair) for pair in of)]:
         entering = np.zeros((nodes, 1))
-        if isinstance(which, str):
-            drive[network.part_index(which)] = 1.0
-        else:
-            np.add.at(entering, (list(which), 0), [1.0, -1.0])
+        if pair is not None:
+            np.add.at(entering, (list(pair), 0), [1.0, -1.0])
         blocks = []
         for start in range(0, len(points), solver.block()):
             part = points[start : start + solver.block()]
             # The solver works in place on the currents it is given.
-            currents = None if isinstance(which, str) else np.repeat(entering, len(part), axis=1)
+            currents = None if pair is None else np.repeat(entering, len(part), axis=1)
             blocks.append(solver.solve(part, Drive(drive, currents)).voltages[branches.inner])
         found.append(np.hstack(blocks).real)
     # Side by side by frequency: the solutions at one frequency are of one kind.
@@ -126,14 +127,12 @@ def _energy_basis(branches: Branches, weights: Float, solutions: Float) -> Float
     return forms[:count].T
 
 
-def fixed_potentials(network: Network, name: str) -> Float:
-    """(nodes,): the potentials of the nodes that voltage sources hold, the source `name` at one volt, others
-    at zero.
+def fixed_potentials(network: Network, drive: Float) -> Float:
+    """(nodes,): the potentials of the nodes that voltage sources hold, each at its volts in `drive`,
+    (parts,).
     """
     stiff = solver_for(network).stiff
     assert stiff is not None
-    unit = np.zeros(len(network))
-    unit[network.part_index(name)] = 1.0
     potential = np.zeros((network.arrays().node_count, 1, 1))
-    stiff.fill(potential, unit)
+    stiff.fill(potential, drive)
     return np.asarray(potential[:, 0, 0])

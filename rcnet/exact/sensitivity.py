@@ -2,6 +2,10 @@
 
 With v the solution and w the transposed one, dH = -w^T dA v (S. Director, R. Rohrer, IEEE Trans. Circuit
 Theory CT-16(3):318-323, 1969). An admittance y between two nodes gives dH/dy = -(w_a - w_b)(v_a - v_b).
+
+With i and h the unknowns of inductors in both, a mutual inductance gives dH/dM = s (h_1 i_2 + h_2 i_1). A
+coupled inductor moves its own inductance and, half as much, every mutual one. These sum to dH/d ln L = (h
+(v_a - v_b) + i (w_a - w_b))/2, where nothing of a current that another winding cancels is left.
 """
 
 from __future__ import annotations
@@ -114,8 +118,8 @@ def _block(network: Network, s: Numbers, of: Pair, slope: bool) -> Derivatives:
         return Derivatives(parts.names, response, by_part)
     # A v = b gives A v' = -A' v for a source that does not depend on s; likewise transposed.
     dead = np.zeros(len(network), dtype=np.complex128)
-    v_slope = equations.forward(dead, parts.pulled(v))
-    w_slope = equations.transposed(parts.pulled(w))
+    v_slope = equations.forward(dead, parts.pulled(v), parts.linked(v))
+    w_slope = equations.transposed(parts.pulled(w), parts.linked(w))
     return Derivatives(
         parts.names,
         response,
@@ -136,7 +140,9 @@ class _Parts:
         self.letters = letters[self.rows].tolist()
         names = network.names
         self.names = tuple(names[row] for row in self.rows.tolist())
-        self.admittances = np.isin(letters[self.rows], ["R", "C", "L"])
+        coupled = {row for coupling in network.couplings for row in network.coupled_by(coupling)}
+        self.coupled = np.isin(self.rows, list(coupled))
+        self.admittances = np.isin(letters[self.rows], ["R", "C", "L"]) & ~self.coupled
         self.value = self.arrays.values[self.rows]
         self.nodes = self.arrays.nodes[self.rows]
 
@@ -159,9 +165,21 @@ class _Parts:
         # An inductor is a short at s = 0 whatever its value.
         inductance = np.divide(one, self.s, out=np.zeros_like(self.s), where=self.s != 0)
         answer[self.admittances] = self._by_kind(one, -self.s, inductance) * self._both_across(w, v)
-        for k in np.flatnonzero(~self.admittances).tolist():
-            answer[k] = self._controlled(k, w, v)
+        for k in np.flatnonzero(~self.admittances & ~self.coupled).tolist():
+            answer[k] = self._mutual(k, w, v) if self.letters[k] == "K" else self._controlled(k, w, v)
+        for k in np.flatnonzero(self.coupled).tolist():
+            answer[k] = self._inductor(k, w, v)
         return answer
+
+    def _inductor(self, k: int, w: Field, v: Field) -> Numbers:
+        row, (a, b) = int(self.rows[k]), self.nodes[k, :2].tolist()
+        return np.asarray((w.branch(row) * v.across(a, b) + v.branch(row) * w.across(a, b)) / 2)
+
+    def _mutual(self, k: int, w: Field, v: Field) -> Numbers:
+        first, second = self.network.coupled_by(int(self.rows[k]))
+        roots = np.sqrt(self.arrays.values[[first, second]])
+        both = w.branch(first) * v.branch(second) + w.branch(second) * v.branch(first)
+        return np.asarray(self.s * (self.value[k] * roots[0] * roots[1]) * both)
 
     def _controlled(self, k: int, w: Field, v: Field) -> Numbers:
         row, letter, (a, b, c, d) = int(self.rows[k]), self.letters[k], self.nodes[k].tolist()
@@ -177,14 +195,29 @@ class _Parts:
 
     def slope(self, w: Field, v: Field) -> Numbers:
         """-w^T (dA/ds) v, (points,)."""
-        return -np.asarray((self._slopes() * self._both_across(w, v)).sum(axis=0))
+        total = -np.asarray((self._slopes() * self._both_across(w, v)).sum(axis=0))
+        for k in np.flatnonzero(self.coupled).tolist():
+            total += self._inductor(k, w, v) / self.s
+        return total
 
     def moved_products(self, w: Field, v: Field) -> Numbers:
         """-w^T (d^2A/ds d ln value) v for each part."""
         answer = np.zeros((len(self.rows), len(self.s)), dtype=np.complex128)
         sign = np.where(np.array(self.letters)[self.admittances] == "C", -1.0, 1.0)[:, None]
         answer[self.admittances] = sign * self._slopes() * self._both_across(w, v)
+        # A coupled inductor's derivative does not name s.
+        for k in (k for k, letter in enumerate(self.letters) if letter == "K"):
+            answer[k] = self._mutual(k, w, v) / self.s
         return answer
+
+    def linked(self, field: Field) -> Numbers | None:
+        """The volts -(dA/ds) times a solution in series with coupled inductors, (parts, points); or None."""
+        if not self.coupled.any():
+            return None
+        volts = np.zeros((len(self.network), len(self.s)), dtype=np.complex128)
+        a, b = self.nodes[self.coupled, 0], self.nodes[self.coupled, 1]
+        volts[self.rows[self.coupled]] = field.across(a, b) / self.s
+        return volts
 
     def pulled(self, field: Field) -> Numbers:
         """The currents -(dA/ds) times a solution, put into the nodes, (nodes, points)."""

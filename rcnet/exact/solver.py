@@ -17,6 +17,7 @@ from . import large, nodal
 from .elimination import Factors, Pattern, analyse, eliminate, substitute
 from .nodal import Numbers
 from .span import span_of
+from .windings import contradiction
 
 # A pass of elimination is a Python loop over nodes; beyond this many products the sparse factorisation wins.
 _MOST_WORK = 1_500_000
@@ -175,7 +176,7 @@ class Solver:
         """
         count, points = values.shape[1], len(s)
         answer = np.empty((len(wanted), count, points), dtype=np.complex128) if out is None else out
-        if self._compiles(s, None):
+        if self._compiles(s, None) or self.pattern is None:
             for k in range(count):
                 answer[:, k] = self.voltages_of(s, drive, wanted, values[:, k])
             return answer
@@ -208,10 +209,7 @@ class Solver:
 
     @property
     def _controlled(self) -> tuple[str, ...]:
-        codes = self.arrays.kinds.tolist()
-        return tuple(
-            name for name, code in zip(self.network.names, codes, strict=True) if chr(code) in "EGFH"
-        )
+        return nodal.culprits(self.network)
 
     # -- general networks
 
@@ -229,8 +227,7 @@ class Solver:
         answer = nodal.solve(eqs, s, rhs)
         voltages = np.vstack([np.zeros((1, len(s)), answer.dtype), answer[: eqs.node_count - 1]])
         currents_of = np.zeros((len(self.arrays.kinds), len(s)), answer.dtype)
-        for row, unknown in eqs.branch_of.items():
-            currents_of[row] = answer[unknown]
+        currents_of[list(eqs.branch_of)] = eqs.currents(answer)
         return Solution(voltages, currents_of)
 
     def _split(
@@ -523,7 +520,10 @@ _sound: weakref.WeakKeyDictionary[Network, tuple[PartArrays, set[bool]]] = weakr
 
 
 def require_solvable(network: Network, *, dc: bool = False) -> None:
-    """Raise UnsolvableError, naming parts and nodes, unless the graph allows one solution."""
+    """Raise UnsolvableError, naming parts and nodes, unless the graph allows one solution.
+
+    CircuitError where couplings contradict each other.
+    """
     arrays = network.arrays()
     kept = _sound.get(network)
     if kept is None or kept[0] is not arrays:
@@ -541,4 +541,6 @@ def require_solvable(network: Network, *, dc: bool = False) -> None:
         )
         if found[0].kind == "loop":
             remedy = "Put a resistance in the loop, or remove one of its parts."
+        if found[0].kind == "coupling":
+            raise contradiction(found[0].parts)
         raise UnsolvableError(explain(found[0], dc=dc), remedy=remedy)

@@ -225,8 +225,8 @@ def _term_value(term: Term, values: Mapping[str, float]) -> tuple[float, int]:
 def transfer_function(network: Network, of: str) -> TransferFunction:
     """The response at a node or a pair `"a b"`, per unit of the one driving source, in part names.
 
-    Raises UndecidedError for more than MOST_PARTS parts or MOST_TERMS products, CircuitError unless one
-    source carries ac, UnsolvableError where the network has no unique solution.
+    Raises UndecidedError for more than MOST_PARTS parts or MOST_TERMS products and for coupled inductors,
+    CircuitError unless one source carries ac, UnsolvableError where the network has no unique solution.
     """
     require_solvable(network)
     pair = node_pair(network, of)
@@ -234,6 +234,12 @@ def transfer_function(network: Network, of: str) -> TransferFunction:
     if len(driving) != 1:
         raise CircuitError(
             f"{len(driving)} sources carry ac; a transfer function has one.", remedy="Give ac to one source."
+        )
+    if network.couplings:
+        raise UndecidedError(
+            f"{network.names[network.couplings[0]]} couples inductors, and a mutual inductance, the root of "
+            "a product of two parts, has no place in a transfer function in part names.",
+            remedy="Ask for its numbers, poles and zeros instead.",
         )
     values = network.values
     if len(values) > MOST_PARTS:

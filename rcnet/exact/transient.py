@@ -4,22 +4,26 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-from ..circuit import Network, Sine, Source
+from ..circuit import Exponential, Network, Sine, Source, Step, Waveform
 from ..errors import CircuitError, UndecidedError
 from .ac import node_pair
-from .modes import ModalSystem, modal_system, sampled
+from .modes import Driver, ModalSystem, modal_system, sampled
 from .pieces import Pieces, followed, pieces_of
+from .rest import FromRest, Impulse
 from .solver import require_solvable
-from .twofold import two_product
+from .swings import swings_of, swung, turns_of
 
 Float = npt.NDArray[np.float64]
 Pair = tuple[int, int]
 
 _BLOCK = 4_000_000  # numbers held at once: times by terms
+_RESONANT = 1e-6  # a mode this near to a sine, relatively, rises with it rather than dies away from it
 
 
 def transient(network: Network, time: npt.ArrayLike, of: str | Sequence[str]) -> Float:
@@ -38,14 +42,14 @@ def transient(network: Network, time: npt.ArrayLike, of: str | Sequence[str]) ->
     points = _times(time)
     single = isinstance(of, str)
     pairs = [node_pair(network, text) for text in ([of] if isinstance(of, str) else of)]
-    names = driving(network)
+    driven = _together(network)
     require_solvable(network)
     answer = np.zeros((len(pairs), len(points)))
-    if names and pairs:
-        system = modal_system(network, pairs, names)
+    if driven and pairs:
+        system = modal_system(network, pairs, [each.driver for each in driven])
         with np.errstate(over="ignore", invalid="ignore"):
-            for number, name in enumerate(names):
-                answer += _from_source(network, pairs, system, number, network.sources[name], points)
+            for number, each in enumerate(driven):
+                answer += _from_source(network, pairs, system, number, each, points)
         if not np.isfinite(answer).all():
             raise UndecidedError("the circuit is unstable, and its output has outgrown every number by then.")
     return answer[0] if single else answer
@@ -75,23 +79,64 @@ def starting_value(source: Source) -> float:
     return source.waveform.start if source.waveform is not None else source.operating_value
 
 
+@dataclass(frozen=True, slots=True)
+class _Driven:
+    """A source, or several that do the same at once: what drives, its name, its past and its waveform."""
+
+    driver: Driver
+    name: str
+    start: float
+    wave: Waveform | Impulse | None
+
+
+def _together(network: Network) -> list[_Driven]:
+    """What drives the network; steps from nothing that happen at once, and impulses, as one."""
+    driven: list[_Driven] = []
+    alike: dict[Step | Impulse, list[tuple[str, float]]] = {}
+    for name in driving(network):
+        source = network.sources[name]
+        wave: Any = source.waveform
+        if isinstance(wave, FromRest):
+            if wave.first:
+                alike.setdefault(Step(0.0, 1.0), []).append((name, wave.first))
+            wave = wave.risen
+        if isinstance(wave, Impulse):
+            alike.setdefault(Impulse(1.0), []).append((name, wave.charge))
+        elif isinstance(wave, Step) and wave.initial == 0:
+            alike.setdefault(replace(wave, final=1.0), []).append((name, wave.final))
+        else:
+            driven.append(_Driven(name, name, starting_value(source), wave))
+    for wave, members in alike.items():
+        name = ", ".join(name for name, _ in members[:8])
+        driven.append(_Driven(tuple(members), name, 0.0, wave))
+    return driven
+
+
 def _from_source(
-    network: Network, pairs: Sequence[Pair], system: ModalSystem, number: int, source: Source, time: Float
+    network: Network, pairs: Sequence[Pair], system: ModalSystem, number: int, source: _Driven, time: Float
 ) -> Float:
     """What one source contributes: (outputs, times)."""
-    start, wave = starting_value(source), source.waveform
+    start, wave = source.start, source.wave
+    if isinstance(wave, Impulse):
+        return _after_impulse(system, number, time)
     static, integrating = system.static[number], system.integrating[number]
-    if integrating.any() and (start != 0 or isinstance(wave, Sine)):
+    if integrating.any() and start != 0:
         raise UndecidedError(
             f"there is no steady state to start from: {source.name} charges nodes that nothing drains.",
         )
-    if wave is None:
-        return np.repeat(static[:, None] * start, len(time), axis=1)
-    if isinstance(wave, Sine):
-        steady = sampled(network, pairs, [source.name], np.array([2j * math.pi * wave.frequency]))[0, :, 0]
-        return _under_sine(system, number, wave, steady, time)
-    pieces = pieces_of(wave)
     answer = np.repeat(static[:, None] * start, len(time), axis=1)
+    if wave is None:
+        return answer
+    if isinstance(wave, Sine) and _settles(system, number, wave):
+        s = np.array([2j * math.pi * wave.frequency])
+        steady = sampled(network, pairs, [source.driver], s)[0, :, 0]
+        return _under_sine(system, number, wave, steady, time)
+    if isinstance(wave, (Sine, Exponential)):
+        for swing in swings_of(wave):
+            for part in blocks(np.flatnonzero(time >= swing.begin), len(system.poles)):
+                answer[:, part] += swung(system, number, swing, time[part] - swing.begin)
+        return answer
+    pieces = pieces_of(wave)
     moving = system.poles != 0
     lag = followed(pieces, system.poles[moving])
     weights = system.weights[number][:, moving]
@@ -103,6 +148,15 @@ def _from_source(
         total = (system.residues[number][:, ~moving]).real.sum(axis=-1)
         answer += total[:, None] * np.where(time < pieces.begin, 0.0, _integral(pieces, time))
     return np.asarray(answer)
+
+
+def _after_impulse(system: ModalSystem, number: int, time: Float) -> Float:
+    """What remains of a unit of charge that the source has passed on at t = 0: (outputs, times)."""
+    answer = np.zeros((len(system.static[number]), len(time)))
+    for part in blocks(np.arange(len(time)), len(system.poles)):
+        left = np.exp(np.outer(time[part], system.poles))
+        answer[:, part] = np.real(left @ system.residues[number].T).T
+    return answer
 
 
 def blocks(rows: npt.NDArray[np.int64], terms: int) -> list[npt.NDArray[np.int64]]:
@@ -121,10 +175,11 @@ def _integral(pieces: Pieces, time: Float) -> Float:
     return np.asarray(turn * before[-1] + before[piece] + here)
 
 
-def turns_of(frequency: float, since: Float) -> Float:
-    """The part of a turn, in [-1/2, 1/2], that frequency times seconds leaves beyond whole turns."""
-    whole, missing = two_product(np.full_like(since, frequency), since)
-    return np.asarray((whole - np.rint(whole)) + missing)
+def _settles(system: ModalSystem, number: int, wave: Sine) -> bool:
+    """True where a sine has a steady response that all others die away from."""
+    apart = np.abs(system.poles - 2j * math.pi * wave.frequency)
+    resonant = bool((apart < _RESONANT * np.abs(system.poles)).any())
+    return not (wave.damping or resonant or system.integrating[number].any())
 
 
 def _under_sine(

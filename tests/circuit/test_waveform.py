@@ -8,7 +8,18 @@ import pytest
 from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
-from rcnet.circuit import EDGE_SHARE, Points, Sine, Square, Step, Waveform
+from rcnet.circuit import (
+    EDGE_SHARE,
+    NEVER,
+    Exponential,
+    Network,
+    Points,
+    Sine,
+    Square,
+    Step,
+    Waveform,
+    parse_circuit_file,
+)
 from rcnet.errors import CircuitError
 
 
@@ -41,6 +52,8 @@ STARTS: dict[str, tuple[Waveform, float]] = {
     "sine held until its delay": (Sine(2.0, 50.0, 1.0, -90.0, delay=1.0), -1.0),
     "step": (Step(1.0, 4.0), 1.0),
     "step later": (Step(1.0, 4.0, at=2.0, rise=1.0), 1.0),
+    "damped sine": (Sine(2.0, 50.0, 1.0, 90.0, 0.1, 30.0), 3.0),
+    "exponential": (Exponential(1.5, 4.0, 0.0, 1.0, 2.0, 3.0), 1.5),
     "points": (Points(((0.0, 3.0), (1.0, 5.0))), 3.0),
     "points that begin later": (Points(((0.5, 3.0), (1.0, 5.0))), 3.0),
     "points that repeat": (Points(((0.0, 3.0), (1.0, 5.0)), 2.0), 3.0),
@@ -61,7 +74,9 @@ def test_a_waveform_starts_from(name: str) -> None:
     [
         (Square(0, 1, 0.25, 0.1), 0.25),
         (Sine(1, 50), 0.02),
+        (Sine(1, 50, damping=1e-9), None),
         (Step(0, 1), None),
+        (Exponential(0, 1, 0, 1), None),
         (Points(((0, 0),)), None),
         (Points(((0, 0), (1, 1)), 4), 4),
     ],
@@ -158,6 +173,8 @@ def test_points_that_jump_where_they_repeat_get_an_edge() -> None:
     "wave",
     [
         Sine(1.0, 50.0),
+        Sine(1.0, 50.0, damping=5.0),
+        Exponential(0.0, 1.0, 0.0, 1e-15, 0.0, 1e-15),
         Points(((0.0, 0.0), (1.0, 4.0))),
         Points(((0.0, 0.0), (1.0, 4.0)), 2.0),
         Points(((0.0, 4.0), (0.5, 0.0), (1.0, 4.0)), 1.0),
@@ -186,6 +203,22 @@ REFUSED: dict[str, tuple[type[Waveform], tuple[object, ...], str]] = {
     "step from nowhere": (Step, (math.inf, 0), "from is inf"),
     "step before zero": (Step, (0, 1, -1.0), "at is -1.0 s"),
     "step of endless rise": (Step, (0, 1, 0.0, math.inf), "rise is inf s"),
+    "sine that grows": (Sine, (1, 1.0, 0.0, 0.0, 0.0, -1.0), "damping is -1.0 1/s"),
+    "sine of nan damping": (Sine, (1, 1.0, 0.0, 0.0, 0.0, math.nan), "damping is nan 1/s"),
+    "sine that dies at once": (Sine, (1, 1.0, 0.0, 0.0, 0.0, math.inf), "damping is inf 1/s"),
+    "exponential to nowhere": (Exponential, (0, math.inf, 0.0, 1.0), "to is inf"),
+    "exponential before zero": (Exponential, (0, 1, -1.0, 1.0), "at is -1.0 s"),
+    "exponential that never begins": (Exponential, (0, 1, math.inf, 1.0), "at is inf s"),
+    "exponential of no duration": (Exponential, (0, 1, 0.0, 0.0), "time_constant is 0.0 s"),
+    "exponential for ever": (Exponential, (0, 1, 0.0, math.inf), "time_constant is inf s"),
+    "exponential back before it begins": (
+        Exponential,
+        (0, 1, 2.0, 1.0, 1.0, 1.0),
+        "way back begins at 1.0 s",
+    ),
+    "exponential back at no time": (Exponential, (0, 1, 2.0, 1.0, math.nan, 1.0), "way back begins at nan s"),
+    "exponential back at once": (Exponential, (0, 1, 0.0, 1.0, 1.0, 0.0), "back_time_constant is 0.0 s"),
+    "exponential back for ever": (Exponential, (0, 1, 0.0, 1.0, 1.0), "back_time_constant is inf s"),
     "points at one time": (Points, (((1.0, 0.0), (1.0, 1.0)),), "1.0 s does not come after 1.0 s"),
     "points of endless value": (Points, (((0.0, math.inf),),), "value is inf"),
     "points of endless time": (Points, (((math.inf, 0.0),),), "time is inf"),
@@ -209,3 +242,84 @@ def test_a_duty_lies_between_zero_and_one(duty: float) -> None:
     """Both ends excluded."""
     with pytest.raises(CircuitError, match="not between 0 and 1"):
         Square.from_duty(0, 1, 1.0, duty)
+
+
+def test_an_exponential_that_falls_at_the_end_of_all_time_never_falls() -> None:
+    """SPICE's EXP has no other word for it; the time constant of that fall does not matter."""
+    assert not Exponential(0, 1, 0, 1).falls
+    assert not Exponential(0, 1, 0, 1, NEVER, 1.0).falls
+    assert Exponential(0, 1, 0, 1, 1e29, 1.0).falls
+
+
+FILE = """
+title = "Leak listener: what a closing valve sends down the main"
+output = "out"
+[parts]
+R1 = "in out 1k"
+C1 = "out 0 1u"
+[sources.Vin]
+nodes = "in 0"
+WAVE
+"""
+
+WRITTEN: dict[str, tuple[str, Waveform]] = {
+    "damped sine": (
+        'sine = { amplitude = "2 V", frequency = "1 kHz", delay = "1 ms", damping = "250" }',
+        Sine(2.0, 1e3, 0.0, 0.0, 1e-3, 250.0),
+    ),
+    "there": (
+        'exponential = { from = 0, to = "5 V", time_constant = "2 ms" }',
+        Exponential(0.0, 5.0, 0.0, 2e-3),
+    ),
+    "there and back": (
+        'exponential = { from = 1, to = 5, at = "1 ms", time_constant = "2 ms", back_at = "8 ms", '
+        'back_time_constant = "3 ms" }',
+        Exponential(1.0, 5.0, 1e-3, 2e-3, 8e-3, 3e-3),
+    ),
+}
+
+
+@pytest.mark.parametrize("name", WRITTEN)
+def test_a_circuit_file_holds(name: str) -> None:
+    """The waveform as its keys say it."""
+    text, wave = WRITTEN[name]
+    circuit = parse_circuit_file(FILE.replace("WAVE", text), "listener.rc.toml")
+    assert circuit.network.sources["Vin"].waveform == wave
+
+
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        ("exponential = { from = 0, to = 1 }", "Vin: exponential: 'time_constant' is missing"),
+        (
+            "exponential = { from = 0, to = 1, time_constant = 1, back_at = 2 }",
+            "'back_time_constant' is missing",
+        ),
+        (
+            "exponential = { from = 0, to = 1, time_constant = 1, back_time_constant = 2 }",
+            "'back_at' is missing",
+        ),
+        ("exponential = { from = 0, to = 1, time_constant = 1, after = 2 }", "unknown key 'after'"),
+        ('exponential = { from = 0, to = 1, time_constant = "0 s" }', "time_constant is 0.0 s"),
+        ('sine = { amplitude = 1, frequency = 1, damping = "3 s" }', "Vin: sine: damping"),
+        ("sine = { amplitude = 1, frequency = 1, damping = -3 }", "damping is -3.0 1/s"),
+    ],
+)
+def test_a_wrong_wave_in_a_circuit_file_is_told_with_its_line(text: str, words: str) -> None:
+    """The file, the line of the source's waveform, and what is wrong with it."""
+    with pytest.raises(CircuitError) as caught:
+        parse_circuit_file(FILE.replace("WAVE", text), "listener.rc.toml")
+    assert words in str(caught.value)
+    assert str(caught.value).startswith("listener.rc.toml:9")
+
+
+def test_a_network_takes_an_exponential_by_keyword_or_as_an_object() -> None:
+    """Both ways give the same source; what is no waveform is refused."""
+    table = {"from": 0, "to": 1, "time_constant": 1}
+    one, two = Network(), Network()
+    one.add_voltage_source("V1", "a", "0", exponential=table)
+    two.add_voltage_source("V1", "a", "0", waveform=Exponential(0.0, 1.0, 0.0, 1.0))
+    assert one.sources == two.sources
+    with pytest.raises(CircuitError, match="waveform is 3") as caught:
+        Network().add_voltage_source("V1", "a", "0", waveform=3)
+    assert "Exponential" in str(caught.value)

@@ -31,6 +31,7 @@ def solve(
         }
         size = len(nodes) + len(branches)
         matrix, right = mpmath.matrix(size, size), mpmath.matrix(size, 1)
+        inductance = {part.name: mpmath.mpf(part.value) for part in network.parts if part.kind == "L"}
 
         def add(row: int | None, column: int | None, value: object) -> None:
             if row is not None and column is not None:
@@ -57,6 +58,11 @@ def solve(
                         right[ends[end]] += sign * given
             elif part.kind == "L":
                 add(branches[part.name], branches[part.name], -s * value)
+            elif part.kind == "K":
+                first, second = part.couples
+                mutual = value * mpmath.sqrt(inductance[first] * inductance[second])
+                add(branches[first], branches[second], -s * mutual)
+                add(branches[second], branches[first], -s * mutual)
             elif part.kind == "E":
                 add(branches[part.name], ends[2], -value)
                 add(branches[part.name], ends[3], value)
