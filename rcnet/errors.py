@@ -15,6 +15,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
+from typing import Any
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,7 +86,9 @@ class RcnetError(Exception):
             )
             for p in self.problems
         )
-        return type(self)(problems=placed)
+        error = type(self)(problems=placed)
+        error.__dict__.update({key: value for key, value in self.__dict__.items() if key == "partial"})
+        return error
 
 
 def _rebuild(kind: type[RcnetError], problems: tuple[Problem, ...]) -> RcnetError:
@@ -101,7 +104,12 @@ class QuantityError(InputError):
 
 
 class CircuitError(InputError):
-    """A circuit file, a netlist or a call describes no valid circuit."""
+    """A circuit file, a netlist or a call describes no valid circuit.
+
+    partial: a Circuit of what could be read of a netlist all the same, or None
+    """
+
+    partial: Any = None
 
 
 class ResultsError(InputError):

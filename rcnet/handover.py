@@ -9,10 +9,23 @@ from pathlib import Path
 import numpy as np
 
 from .check import Check, check
-from .circuit import Analyses, Circuit, Network, Points, Step, Sweep, TransientRun, Waveform
+from .circuit import (
+    Analyses,
+    Circuit,
+    Exponential,
+    Network,
+    Points,
+    Sine,
+    Square,
+    Step,
+    Sweep,
+    TransientRun,
+    Waveform,
+)
 from .claims import half_power, profile
 from .errors import CircuitError, RcnetError
 from .exact import dc_solvable, driving_sources, natural_frequencies, node_pair, response, span_of
+from .measuring import measure_lines
 from .netlist import (
     DESPITE_ERRORS,
     Names,
@@ -22,14 +35,17 @@ from .netlist import (
     read_same,
     seal_comments,
     voltage,
-    write,
 )
+from .netlist.portable import ascii_text
+from .netlist.writer import sheet
 from .values import format_quantity
 
 _POINTS_PER_DECADE = 20
 _MOST_DECADES = 12
 _PERIODS = 10
 _TIME_CONSTANTS = 8
+_STEPS = 500
+_MOST_STEPS = 20_000
 _MOST_PARTS = 5000  # up to here a look at all frequencies takes a moment only
 
 
@@ -57,16 +73,16 @@ def with_analyses(circuit: Circuit | Network) -> Circuit:
     sources = whole.network.sources.values()
     chosen = Analyses(chosen=True)
     if any(source.ac for source in sources):
-        chosen = replace(chosen, ac=_sweep(whole))
+        chosen = replace(chosen, ac=chosen_sweep(whole))
     if dc_solvable(whole.network):
         if any(source.operating_value for source in sources):
             chosen = replace(chosen, operating_point=True)
         if any(source.waveform is not None for source in sources):
-            chosen = replace(chosen, transient=_transient(whole.network))
+            chosen = replace(chosen, transient=chosen_transient(whole.network))
     return replace(whole, analyses=chosen)
 
 
-def _sweep(circuit: Circuit) -> Sweep:
+def chosen_sweep(circuit: Circuit) -> Sweep:
     """Whole decades, two to either side of the corners; one, where two would make more than twelve in all."""
     network = circuit.network
     span = span_of(network)
@@ -93,7 +109,7 @@ def _cutoffs(network: Network, of: str) -> dict[str, float]:
         return {}
 
 
-def _transient(network: Network) -> TransientRun:
+def chosen_transient(network: Network) -> TransientRun:
     """Ten periods of the slowest wave, and every single event with eight of the slowest time constants."""
     waves = [source.waveform for source in network.sources.values() if source.waveform is not None]
     ends = [
@@ -105,12 +121,22 @@ def _transient(network: Network) -> TransientRun:
         slowest = 1 / np.abs(poles).min() if len(poles) else 1 / span_of(network).low
         ends.append(max(events) + _TIME_CONSTANTS * float(slowest))
     stop = max(ends)
-    return TransientRun(stop, stop / 500)
+    # A simulator's longest step follows from this one; longer than a swing, it would miss it.
+    swings = [1 / wave.frequency for wave in waves if isinstance(wave, Sine) and wave.damping]
+    step = max(min([stop / _STEPS, *(swing / _STEPS * _PERIODS for swing in swings)]), stop / _MOST_STEPS)
+    return TransientRun(stop, step)
 
 
 def _last_event(wave: Waveform) -> float:
     if isinstance(wave, Points):
         return wave.values[-1][0]
+    if isinstance(wave, Exponential):
+        there = wave.rise_delay + _TIME_CONSTANTS * wave.rise_time_constant
+        if not wave.falls:
+            return there
+        return max(there, wave.fall_delay + _TIME_CONSTANTS * wave.fall_time_constant)
+    if isinstance(wave, Sine):  # a damped one; ten turns show it as well as ten of one that repeats
+        return wave.delay + min(_PERIODS / wave.frequency, _TIME_CONSTANTS / wave.damping)
     assert isinstance(wave, Step)
     return wave.at + wave.rise
 
@@ -118,14 +144,38 @@ def _last_event(wave: Waveform) -> float:
 # ---------------------------------------------------------------------- the sealed netlist
 
 
-def sealed_netlist(circuit: Circuit | Network, done: Check | None = None, *, anyway: bool = False) -> Written:
+def sealed_netlist(
+    circuit: Circuit | Network,
+    done: Check | None = None,
+    *,
+    anyway: bool = False,
+    portable: bool = False,
+    measures: bool = False,
+) -> Written:
     """The checked netlist with its seal.
 
+    portable: keep to what every simulator descended from Berkeley's reads; measures: add `.meas` lines, each
+    with the exact value it should give, and ask for one analysis alone, because ngspice measures in one only
     Raises CircuitError where a finding is an error and `anyway` is not given (then the seal says so), or
     where the text, read back, is not the circuit bit for bit.
     """
     whole = with_analyses(circuit)
     done = done or check(whole)
+    require_sound(done, anyway=anyway)
+    asked = one_measured(whole) if measures else whole
+    made = sheet(asked, portable=portable, measured=measures)
+    bare = made.written(measure_lines(made.circuit, made.names) if measures else [])
+    back = read_same(bare)
+    notes = [] if asked is whole else [_ONE_ANALYSIS]
+    texts = [*header(asked, bare), *notes, *seal_comments(back, facts(asked, done, bare.names))]
+    return bare.with_comments(ascii_text(text) if portable else text for text in texts)
+
+
+_ONE_ANALYSIS = "ngspice measures in the analysis it runs last, and only there, so this netlist asks for one."
+
+
+def require_sound(done: Check, *, anyway: bool) -> None:
+    """Raise CircuitError where a finding is an error, unless it is to be written anyway."""
     if done.errors and not anyway:
         raise CircuitError(
             f"{len(done.errors)} finding{'s' if len(done.errors) > 1 else ''} of severity error; the first: "
@@ -134,9 +184,26 @@ def sealed_netlist(circuit: Circuit | Network, done: Check | None = None, *, any
             line=done.errors[0].line,
             remedy="Mend the circuit, or write the netlist all the same with --anyway.",
         )
-    bare = write(whole)
-    back = read_same(bare)
-    return write(whole, [*header(whole, bare), *seal_comments(back, _facts(whole, done, bare.names))])
+
+
+def one_measured(circuit: Circuit) -> Circuit:
+    """The circuit asking for the one analysis that can be measured in. Raises CircuitError for none."""
+    wanted = circuit.analyses
+    kept = Analyses(ac=wanted.ac, transient=None if wanted.ac else wanted.transient, chosen=wanted.chosen)
+    if not kept:
+        raise CircuitError(
+            "there is nothing to measure in: the circuit asks for neither an ac sweep nor a transient.",
+            remedy="Add one under [analysis].",
+        )
+    word = "ac" if kept.ac else "tran"
+    requests = tuple(
+        request
+        for request in circuit.requests
+        if request.word == ".meas" and request.text.split()[0].lower() == word
+    )
+    if replace(kept, chosen=False) == replace(wanted, chosen=False) and requests == circuit.requests:
+        return circuit
+    return replace(circuit, analyses=kept, requests=requests)
 
 
 def header(circuit: Circuit, written: Written) -> list[str]:
@@ -146,15 +213,30 @@ def header(circuit: Circuit, written: Written) -> list[str]:
     lines = [f"Netlist written by rcnet {package_version()} from {origin}."]
     if circuit.analyses.chosen:
         lines.append("The circuit asks for no analysis; those below were chosen by rcnet.")
-    held = written.circuit.network.sources
-    edged = [name for name, source in circuit.network.sources.items() if source != held[name]]
+    held, names = written.circuit.network.sources, written.names.parts
+    changed = {
+        name: (source.waveform, held[name].waveform)
+        for name, source in circuit.network.sources.items()
+        if source != held[name]
+    }
+    flat = [name for name, (wave, _) in changed.items() if isinstance(wave, Square) and not wave.width]
+    edged = [name for name in changed if name not in flat]
     if edged:
-        named = ", ".join(written.names.parts[name] for name in edged)
+        named = ", ".join(names[name] for name in edged)
         lines.append(f"Vertical edges of {named} are written as a millionth of the period (or the run) long.")
+    if flat:
+        named = ", ".join(names[name] for name in flat)
+        lines.append(f"Pulses of {named}, which have no width, are written with a billionth of the period.")
     return lines
 
 
-def _facts(circuit: Circuit, done: Check, names: Names) -> list[str]:
+def facts(circuit: Circuit, done: Check, names: Names) -> list[str]:
+    """What a seal says of a circuit: what was found, what was claimed, what a simulator should show."""
+    return [*findings_told(done), *_expectations(circuit, names)]
+
+
+def findings_told(done: Check) -> list[str]:
+    """How many findings there are of each severity, and how many claims are true."""
     lines = []
     if done.errors:
         lines.append(DESPITE_ERRORS)
@@ -166,7 +248,7 @@ def _facts(circuit: Circuit, done: Check, names: Names) -> list[str]:
         verdicts = [result.verdict for result in done.claims]
         hold, fail, open_ = (verdicts.count(word) for word in ("holds", "fails", "undecided"))
         lines.append(f"{_counted(len(verdicts), 'claim')}: {hold} true, {fail} false, {open_} undecided")
-    return lines + _expectations(circuit, names)
+    return lines
 
 
 def _counted(count: int, word: str) -> str:

@@ -21,3 +21,8 @@ def starters() -> dict[str, Path]:
     """The starter circuits by name, in alphabetical order."""
     found = sorted((templates() / "circuits").glob(f"*{SUFFIX}"))
     return {path.name[: -len(SUFFIX)]: path for path in found}
+
+
+def netlist_templates() -> Path:
+    """The folder of the templates from which decks are made."""
+    return templates() / "netlists"

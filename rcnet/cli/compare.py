@@ -7,6 +7,7 @@ from pathlib import Path
 import click
 
 from .options import FAILED, OK, examples, file_argument, json_option, print_json, quiet_option, spare
+from .reading import load_asked, reading_options
 
 
 @click.command(
@@ -18,6 +19,7 @@ from .options import FAILED, OK, examples, file_argument, json_option, print_jso
 @file_argument
 @click.argument("results", type=click.Path(), metavar="RESULTS")
 @json_option
+@reading_options
 @quiet_option
 @click.option("-o", "--output", type=click.Path(), help="Write the comparison there as JSON.")
 def command(file: str, results: str, as_json: bool, quiet: bool, output: str | None) -> int:
@@ -27,13 +29,12 @@ def command(file: str, results: str, as_json: bool, quiet: bool, output: str | N
     """
     from ..compare import compare
     from ..curves import read_results
-    from ..loading import load
     from ..report.document import comparison_document, to_json
     from ..report.terminal import console, show_comparison
     from ..system.files import write_file
 
     spare(output, file, results)
-    comparison = compare(load(file), read_results(results), who=Path(results).name)
+    comparison = compare(load_asked(file), read_results(results), who=Path(results).name)
     document = comparison_document(comparison)
     if output is not None:
         write_file(output, to_json(document))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from contextlib import ExitStack
 from pathlib import Path
 from typing import Any
@@ -24,10 +25,12 @@ from .options import (
     opinion_option,
     print_json,
     quiet_option,
+    silence_option,
     strict_option,
     timeout_option,
     with_progress,
 )
+from .reading import load_asked, reading_options
 
 
 @click.command(
@@ -38,8 +41,10 @@ from .options import (
 )
 @files_argument
 @json_option
+@reading_options
 @quiet_option
 @strict_option
+@silence_option
 @opinion_option(
     *("auto", "ngspice", "ngspice-library", "read-back", "none"),
     default="auto",
@@ -88,14 +93,14 @@ def command(files: tuple[str, ...], as_json: bool, quiet: bool, strict: bool, ou
     return code
 
 
-def _confirm(file: str, folder: Path, *, second_opinion: Any, **how: Any) -> Any:
+def _confirm(file: str, folder: Path, *, second_opinion: Any, silence: Iterable[str], **how: Any) -> Any:
     from ..confirm import confirm, forget
-    from ..loading import load
+    from ..findings import with_silence
 
     try:
-        circuit = load(file)
+        circuit = load_asked(file)
     except RcnetError:
         # What an earlier version of the file led to must not be taken for news.
         forget(folder)
         raise
-    return confirm(circuit, folder, which=second_opinion, **how)
+    return confirm(with_silence(circuit, silence), folder, which=second_opinion, **how)

@@ -10,6 +10,7 @@ import click
 
 from ..errors import InputError
 from .options import OK, examples, file_argument, json_option, print_json, spare
+from .reading import load_asked, reading_options
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -28,6 +29,7 @@ if TYPE_CHECKING:
 )
 @file_argument
 @json_option
+@reading_options
 @click.option("--quiet", is_flag=True, help="Leave out the headings of the table.")
 @click.option("--csv", "as_csv", is_flag=True, help="Print CSV.")
 @click.option("-o", "--output", type=click.Path(), help="Write to a file; its suffix (.csv, .json) says how.")
@@ -51,7 +53,6 @@ def command(
 ) -> int:
     """Give the exact response of a circuit, or its waveforms."""
     from ..curves import write_csv
-    from ..loading import load
     from ..report.document import response_document
     from ..report.terminal import console, show_response
     from ..system.files import write_file
@@ -60,7 +61,7 @@ def command(
         raise click.UsageError("--json does not go with --csv.")
     as_text = None if output is None else _writer(output)
     spare(output, file)
-    circuit = load(file)
+    circuit = load_asked(file)
     curves = _asked(circuit, [_named(circuit, node) for node in nodes], **wanted)
     if output is not None and as_text is not None:
         write_file(output, as_text(curves))

@@ -19,29 +19,41 @@ from .options import (
     opinion_option,
     print_json,
     quiet_option,
+    silence_option,
     timeout_option,
 )
+from .reading import load_asked, reading_options
 
 
 @click.command("simulate", epilog=examples("rcnet simulate noise-filter.rc.toml"))
 @file_argument
 @json_option
+@reading_options
 @quiet_option
+@silence_option
 @opinion_option(
     "ngspice", "ngspice-library", default="ngspice", about="Run ngspice as a program or as a library."
 )
 @timeout_option
 @anyway_option
 @folder_option
-def command(file: str, as_json: bool, quiet: bool, output: str, second_opinion: Any, **how: Any) -> int:
+def command(
+    file: str,
+    as_json: bool,
+    quiet: bool,
+    output: str,
+    silence: tuple[str, ...],
+    second_opinion: Any,
+    **how: Any,
+) -> int:
     """Run ngspice on the netlist; keep its results in out/NAME/."""
     from ..confirm import simulate
-    from ..loading import load
+    from ..findings import with_silence
     from ..report.document import simulation_document
     from ..report.terminal import console, show_findings, show_simulation
 
     folder = Path(output) / folder_names([file])[file]
-    done = simulate(load(file), folder, which=second_opinion, **how)
+    done = simulate(with_silence(load_asked(file), silence), folder, which=second_opinion, **how)
     if done.opinion is None:
         show_findings(done.check.errors, console(error=True))
         click.echo(

@@ -1,8 +1,8 @@
 """SPICE netlists: written from a circuit, read into one, sealed."""
 
-from .lines import Line, logical_lines, words_of
+from .limits import Limits, Reading, raised
 from .names import Names, folded, safe_names
-from .reader import parse_netlist, read_netlist, reads_as_part
+from .reader import parse_netlist, read_netlist, reads_as_part, with_parameters
 from .round_trip import differences, read_same
 from .seal import DESPITE_ERRORS, digest, find_seal, seal_comments
 from .sweep import frequencies, sweep_fault
@@ -10,8 +10,9 @@ from .writer import Written, analysis_lines, as_written, deck, network_of, reque
 
 __all__ = [
     "DESPITE_ERRORS",
-    "Line",
+    "Limits",
     "Names",
+    "Reading",
     "Written",
     "analysis_lines",
     "as_written",
@@ -21,9 +22,9 @@ __all__ = [
     "find_seal",
     "folded",
     "frequencies",
-    "logical_lines",
     "network_of",
     "parse_netlist",
+    "raised",
     "read_netlist",
     "read_same",
     "reads_as_part",
@@ -32,6 +33,6 @@ __all__ = [
     "seal_comments",
     "sweep_fault",
     "voltage",
-    "words_of",
+    "with_parameters",
     "write",
 ]

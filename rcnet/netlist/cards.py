@@ -86,35 +86,78 @@ def read_temperature(word: str) -> float:
     return number
 
 
-def read_options(text: str) -> dict[str, str]:
-    """The options on a line by lower-case name, numbers in the shortest form; `temp` is among them.
+# Options that reach into the circuit or its results -> what a simulator would do with them.
+_CHANGING = {
+    "rshunt": "would put that resistance from every node to ground",
+    "gshunt": "would put that conductance from every node to ground, at dc",
+    "cshunt": "would put that capacitance from every node to ground",
+    "rseries": "would put that resistance in series with every inductor",
+    "interp": "would make ngspice 39 write a results file that is wrong",
+}
+# Iteration, models of devices that are not read, solvers: nothing that a linear circuit notices.
+_NO_MATTER = re.compile(
+    r"gmin(steps)?|srcsteps|itl\d|absdv|reldv|noopiter|minbreak|ramptime|convstep|convabsstep|autostop|sparse|klu|"
+    r"savecurrents|seed(info)?|def(l|w|ad|as|m)|badmos3|bypass|oldlimit|keepopinfo|xmu|trytocompact|nostepsizelimit|"
+    r"noinit|post|probe|list|node|opts|acct|numdgt|ingold|brief|warn_?\w*|scale|scalm|limpts|cptime|parhier|units|"
+    r"dcap|method|lvltim|filetype|num_threads|spicemode|unsupp\w*|nomod|nopage|measdgt|unicode|epsmin|delmin"
+)
 
-    Options that only print are left out. Raises CircuitError for one that may change what is solved.
+PassedOver = tuple[str, str, str]
+
+
+def read_options(text: str) -> tuple[dict[str, str], list[PassedOver]]:
+    """The options on a line by lower-case name, numbers in the shortest form; `temp`, `tnom` are among them.
+
+    Also returns, for each option that may change what is solved and is left out: its name, message, remedy.
+    Options that only print or steer the iteration are left out without a word. Raises CircuitError for one
+    that cannot be read.
     """
     settings = re.sub(r"\s*=\s*", "=", text).replace(",", " ").split()[1:]
-    return {
-        key: value
-        for setting in settings
-        for key, value in [_option(*setting.lower().partition("=")[::2])]
-        if key not in _PRINTING
-    }
+    kept: dict[str, str] = {}
+    passed_over: list[PassedOver] = []
+    for setting in settings:
+        key, _, value = setting.lower().partition("=")
+        if (known := _option(key, value)) is not None:
+            kept[key] = known
+        elif key in _CHANGING:
+            message = (
+                f"the option {key} {_CHANGING[key]}; the exact curves and what is written are without it."
+            )
+            passed_over.append((key, message, "Remove it, or put the parts it stands for into the netlist."))
+        elif key not in _PRINTING and not _NO_MATTER.fullmatch(key):
+            message = f"the option {key!r} is not known here, so it is not handed on."
+            passed_over.append((key, message, "Check its name, or remove it."))
+    return kept, passed_over
 
 
-def _option(key: str, value: str) -> tuple[str, str]:
-    if key in _PRINTING or (key == "noopac" and not value) or (key == "method" and value in _METHODS):
-        return key, value
-    if key == "temp":
-        return key, write_spice_number(read_temperature(value))
+def _option(key: str, value: str) -> str | None:
+    """The value of an option that is kept, in its shortest form; None for the others."""
+    if (key == "noopac" and not value) or (key == "method" and value in _METHODS):
+        return value
+    if key in ("temp", "tnom"):
+        return write_spice_number(read_temperature(value))
     if key in _NUMERIC:
         number = read_spice_number(value).value
         if number <= 0:
             raise CircuitError(f"the option {key} is {value!r}.", remedy="Give a number above zero.")
-        return key, write_spice_number(number)
+        return write_spice_number(number)
     if key in ("noopac", "method"):
         raise CircuitError(f"the option {key} is {value!r}.", remedy="Write noopac, or method=trap or gear.")
-    raise CircuitError(
-        f"the option {key!r} is not read; it may change what the simulator solves.", remedy="Remove it."
-    )
+    return None
+
+
+_START = re.compile(r"v\s*\(\s*([^(),\s]+)\s*\)\s*=\s*(\S+)", re.IGNORECASE)
+
+
+def read_starts(text: str) -> dict[str, float]:
+    """The node voltages of a `.ic` line. Raises CircuitError or QuantityError."""
+    body = text.split(" ", 1)[1] if " " in text else ""
+    found = {node: read_spice_number(value.rstrip(",")).value for node, value in _START.findall(body)}
+    if not found or _START.sub("", body).replace(",", "").strip():
+        raise CircuitError(
+            ".ic cannot be read.", remedy="Write .ic v(out)=0.2 v(a)=1.", code="analysis-unreadable"
+        )
+    return found
 
 
 def printed_voltages(text: str) -> list[tuple[str, ...]]:

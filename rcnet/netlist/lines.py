@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from typing import NamedTuple
 
 _PARTING = re.compile(r"[ ,()=]+")
 # ngspice 39 takes `$` for a comment only behind what parts words; `1k$5` and `n$1` are words.
@@ -12,15 +12,15 @@ _COMMENT = re.compile(r"//.*|;.*|(?:^|(?<=[ \t,]))\$.*", re.DOTALL)
 _COMMAND = re.compile(r"\*(#|ng_script)", re.IGNORECASE)
 
 
-@dataclass(frozen=True, slots=True)
-class Line:
+class Line(NamedTuple):
     """A logical line: continuations joined, comments gone, tabs made blanks, never empty.
 
-    number: of its first physical line, from 1
+    number: of its first physical line, from 1; file: which of the netlist's files it stands in
     """
 
     number: int
     text: str
+    file: int = 0
 
 
 def physical_lines(text: str) -> list[str]:
@@ -28,19 +28,23 @@ def physical_lines(text: str) -> list[str]:
     lines = text.split("\n")
     if not lines[-1]:
         lines.pop()
-    return [line.removesuffix("\r") for line in lines]
+    if "\r" in text:
+        return [line.removesuffix("\r") for line in lines]
+    return lines
 
 
-def logical_lines(lines: Sequence[str]) -> Iterator[Line]:
+def logical_lines(lines: Sequence[str], *, title: bool = True, file: int = 0) -> Iterator[Line]:
     """Everything below the title as logical lines.
 
     `*` first and `//`, `;` or ` $` anywhere begin a comment; `+` continues the line before, across comments
     and blank lines, and never joins two words into one. A comment that is a command to ngspice (`*#`) comes
     as a line of its own, and so does a `+` that has nothing to continue.
+
+    title: whether the first line is one; an included file has none
     """
     number, pieces = 0, list[str]()
-    for count, raw in enumerate(lines[1:], start=2):
-        line = _uncommented(raw)
+    for count in range(1 if title else 0, len(lines)):
+        line = uncommented(lines[count])
         if not line:
             continue
         if line[0] == "+" and pieces:
@@ -48,13 +52,14 @@ def logical_lines(lines: Sequence[str]) -> Iterator[Line]:
                 pieces.append(piece)
             continue
         if pieces:
-            yield Line(number, " ".join(pieces))
-        number, pieces = count, [line]
+            yield Line(number, pieces[0] if len(pieces) == 1 else " ".join(pieces), file)
+        number, pieces = count + 1, [line]
     if pieces:
-        yield Line(number, " ".join(pieces))
+        yield Line(number, " ".join(pieces), file)
 
 
-def _uncommented(raw: str) -> str:
+def uncommented(raw: str) -> str:
+    """A physical line without its comment, tabs made blanks; a command hidden in a comment stays."""
     line = raw.strip(" \t")
     if line[:1] == "*":
         return line if _COMMAND.match(line) else ""

@@ -11,7 +11,7 @@ from .reader import parse_netlist
 from .writer import as_written, network_of, source_line
 
 # Our letter -> PySpice's method.
-_METHODS = {"R": "R", "C": "C", "L": "L", "E": "VCVS", "G": "VCCS", "F": "CCCS", "H": "CCVS"}
+_METHODS = {"R": "R", "C": "C", "L": "L", "E": "VCVS", "G": "VCCS", "F": "CCCS", "H": "CCVS", "K": "K"}
 
 
 def to_pyspice(network: Network) -> Any:
@@ -24,7 +24,8 @@ def to_pyspice(network: Network) -> Any:
     circuit = as_written(network_of(network))
     names = safe_names(circuit.network)
     result = kind(network.title or "rcnet")
-    for part in circuit.network.parts:
+    # PySpice looks for the inductors of a K among the elements it has already.
+    for part in sorted(circuit.network.parts, key=lambda part: part.kind == "K"):
         name = names.parts[part.name]
         nodes = [names.nodes[node] for node in part.nodes]
         source = circuit.network.sources.get(part.name)
@@ -33,9 +34,13 @@ def to_pyspice(network: Network) -> Any:
             words = source_line(source, names, circuit).split(" ", 3)[3]
             getattr(result, part.kind)(name[1:], *nodes, words)
         else:
-            sensed = [names.parts[part.senses]] if part.senses is not None else []
+            named = [names.parts[part.senses]] if part.senses is not None else []
+            if part.couples is not None:
+                inductors = circuit.network.coupled_by(circuit.network.part_index(part.name))
+                # Its names begin with its own capital letter.
+                named = [f"L{names.parts[circuit.network.names[row]][1:]}" for row in inductors]
             # PySpice's two-port elements take the output pair first, as SPICE does.
-            getattr(result, _METHODS[part.kind])(name[1:], *nodes, *sensed, part.value)
+            getattr(result, _METHODS[part.kind])(name[1:], *nodes, *named, part.value)
     return result
 
 

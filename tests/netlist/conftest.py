@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import re
 import subprocess
+import sys
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
@@ -14,6 +15,9 @@ import pytest
 from rcnet.curves import Curve, Curves
 from rcnet.curves.raw import parse_raw
 from rcnet.errors import ResultsError
+
+# pytest's importlib mode does not make the modules beside the tests importable.
+sys.path.insert(0, str(Path(__file__).parent))
 
 _TROUBLE = re.compile(
     r"^.*\b(?:error|warning|singular|aborted|mOhm|gmin step).*$", re.IGNORECASE | re.MULTILINE
