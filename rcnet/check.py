@@ -5,20 +5,24 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 
-from .circuit import Circuit, Network, Place
+from .circuit import Circuit, Network, Place, Seen
 from .claims import ClaimResult, Verdict, judge, overall
-from .findings import Finding, findings
+from .findings import Finding, found, in_order, sifted
 from .netlist import network_of
 from .values import format_quantity
 
 
 @dataclass(frozen=True)
 class Check:
-    """What a check found. verdict: of all claims, and `fails` wherever a finding is an error."""
+    """What a check found. verdict: of all claims, and `fails` wherever a finding is an error.
+
+    silenced: the findings that are not to be told; they count nowhere else
+    """
 
     circuit: Circuit
     findings: tuple[Finding, ...]
     claims: tuple[ClaimResult, ...]
+    silenced: tuple[Finding, ...] = ()
 
     @cached_property
     def errors(self) -> tuple[Finding, ...]:
@@ -44,10 +48,9 @@ def check(circuit: Circuit | Network) -> Check:
     """Findings and verdicts of a circuit. Nothing is written and no simulator is asked."""
     whole = network_of(circuit)
     results = judge(whole)
-    found = [*findings(whole), *(remark for result in results for remark in _about_hand(whole, result))]
-    return Check(
-        whole, tuple(sorted(found, key=lambda f: ("ewn".index(f.severity[0]), f.line or 0))), results
-    )
+    about_hands = (remark for result in results for remark in _about_hand(whole, result))
+    told, silenced = sifted(whole, in_order([*found(whole), *about_hands, *_about_parts(whole)]))
+    return Check(whole, told, results, silenced)
 
 
 def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
@@ -56,9 +59,7 @@ def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
     place = claim.hand_place or claim.place or Place(circuit.file or circuit.name, None)
     if result.hand_why is not None:
         message = f"{claim.says!r}: the hand formula gives no number: {result.hand_why}"
-        return [
-            Finding("hand-fails", "warning", message, place.file, place.line, "Mend the formula.", place.text)
-        ]
+        return [_warning("hand-fails", message, "Mend the formula.", place)]
     if not result.hand_misleads:
         return []
     assert result.hand is not None and result.exact is not None
@@ -71,4 +72,33 @@ def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
         "Trust the exact value; the formula leaves out something this network does "
         "(often one stage loading another)."
     )
-    return [Finding("hand-misleads", "warning", message, place.file, place.line, remedy, place.text)]
+    return [_warning("hand-misleads", message, remedy, place)]
+
+
+def _about_parts(circuit: Circuit) -> list[Finding]:
+    """Ratings that are exceeded or nearly so, and what is dangerous to touch."""
+    from .claims.caution import caution_findings
+    from .claims.ratings import rating_findings
+
+    return [_found(seen) for seen in (*rating_findings(circuit), *caution_findings(circuit))]
+
+
+def _found(seen: Seen) -> Finding:
+    place = seen.place
+    return Finding(
+        seen.code,
+        seen.severity or "warning",
+        seen.message,
+        place.file,
+        place.line,
+        seen.remedy,
+        place.text,
+        place.column,
+        place.width,
+    )
+
+
+def _warning(code: str, message: str, remedy: str, place: Place) -> Finding:
+    return Finding(
+        code, "warning", message, place.file, place.line, remedy, place.text, place.column, place.width
+    )

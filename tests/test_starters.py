@@ -35,6 +35,9 @@ MISLEADING = {
     "unbuffered-cascade": "Corner at 200 Hz",
 }
 
+# The dc link of a drive is at lethal voltage, and rcnet says so.
+DESERVED = {"compensated-divider": ["hazardous-voltage"]}
+
 Values = Mapping[str, float]
 Function = Callable[[Any, Values], Any]  # of s in rad/s and the parts' values
 
@@ -624,8 +627,11 @@ class TestFile:
         done = rcnet.check(circuit)
         assert 4 <= len(done.claims) <= 7
         assert [result.verdict for result in done.claims] == ["holds"] * len(done.claims)
-        assert [finding.code for finding in done.findings] == ["hand-misleads"] * (name in MISLEADING)
-        assert all(MISLEADING[name] in finding.message for finding in done.findings)
+        others = DESERVED.get(name, [])
+        found = [finding for finding in done.findings if finding.code not in others]
+        assert [finding.code for finding in found] == ["hand-misleads"] * (name in MISLEADING)
+        assert all(MISLEADING[name] in finding.message for finding in found)
+        assert len(done.findings) == len(found) + len(others)
 
     def test_introduces_itself(self, name: str) -> None:
         """Two to six comment lines on top say what to change first, and own up to a misleading formula."""
@@ -850,7 +856,7 @@ def test_the_seal_verifies(name: str, tmp_path: Path) -> None:
     back = rcnet.read_netlist(tmp_path / "netlist.cir")
     assert back.seal is not None
     assert not back.seal.anyway
-    assert rcnet.check(back).findings == ()
+    assert [finding.code for finding in rcnet.check(back).findings] == DESERVED.get(name, [])
 
 
 @pytest.mark.ngspice

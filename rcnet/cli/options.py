@@ -10,7 +10,7 @@ from typing import Any, TypeVar
 
 import click
 
-from ..errors import OutputError, RcnetError
+from ..errors import OutputError, Problem, RcnetError
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
@@ -29,6 +29,16 @@ def _note_json(ctx: click.Context, _: click.Parameter, wanted: bool) -> bool:
     return wanted
 
 
+def _known_rules(ctx: click.Context, param: click.Parameter, codes: tuple[str, ...]) -> tuple[str, ...]:
+    if codes:
+        from ..findings import unknown_code
+
+        for code in codes:
+            if (message := unknown_code(code)) is not None:
+                raise click.BadParameter(message, ctx, param)
+    return codes
+
+
 files_argument = click.argument("files", nargs=-1, required=True, type=click.Path(), metavar="FILE...")
 file_argument = click.argument("file", type=click.Path(), metavar="FILE")
 json_option = click.option(
@@ -42,6 +52,13 @@ json_option = click.option(
 quiet_option = click.option("--quiet", is_flag=True, help="Print one line for each circuit.")
 strict_option = click.option("--strict", is_flag=True, help="Let warnings count as failures.")
 anyway_option = click.option("--anyway", is_flag=True, help="Write the netlist although findings are errors.")
+silence_option = click.option(
+    "--silence",
+    multiple=True,
+    metavar="CODE",
+    callback=_known_rules,
+    help="Do not tell findings of this rule, nor let them count; may be given several times.",
+)
 folder_option = click.option(
     "-o", "--output", type=click.Path(), default="out", show_default=True, help="Folder for the results."
 )
@@ -70,14 +87,29 @@ def print_json(document: Any) -> None:
     click.echo(to_json(document, ascii_only=encoding != "utf8"), nl=False)
 
 
-def complain(error: RcnetError, *, as_json: bool = False) -> None:
-    """An error on standard error, one line for each problem; where JSON was asked for, as that too."""
+def complain(error: RcnetError, *, as_json: bool = False, codes: bool = False) -> None:
+    """An error on standard error, one line for each problem; where JSON was asked for, as that too.
+
+    Where a problem is known to stand somewhere on its line, the line follows with carets beneath. codes: the
+    names of the broken rules are told too.
+    """
     from ..report.plain import printable
 
     for problem in error.problems:
-        click.echo(f"rcnet: {printable(str(problem))}", err=True)
+        code = f" [{problem.code}]" if codes and problem.code else ""
+        click.echo(f"rcnet: {printable(str(problem) + code)}", err=True)
+        if problem.text and problem.column is not None:
+            _point(problem)
     if as_json:
         print_json(error_document(error))
+
+
+def _point(problem: Problem) -> None:
+    from ..report.excerpt import excerpt
+
+    lines = excerpt(problem.text, problem.column, problem.width, room=76)
+    for mark, line in zip("| ", lines, strict=False):
+        click.echo(f"  {mark} {line}", err=True)
 
 
 def json_wanted(ctx: click.Context) -> bool:
@@ -89,7 +121,15 @@ def error_document(error: RcnetError) -> dict[str, Any]:
     """An error as a JSON document."""
     return {
         "errors": [
-            {"message": p.message, "file": p.file, "line": p.line, "remedy": p.remedy} for p in error.problems
+            {
+                "message": p.message,
+                "file": p.file,
+                "line": p.line,
+                "remedy": p.remedy,
+                "code": p.code,
+                "column": p.column,
+            }
+            for p in error.problems
         ]
     }
 
@@ -103,7 +143,7 @@ def listed_error_document(error: RcnetError, file: str, files: Iterable[str]) ->
     return {**named, **error_document(error)}
 
 
-def spare(output: str | None, *inputs: str) -> None:
+def spare(output: str | None, *inputs: str, option: str = "--output") -> None:
     """Refuse an output that would replace an input, however its path is spelt. Raises OutputError."""
     if output is None:
         return
@@ -116,7 +156,7 @@ def spare(output: str | None, *inputs: str) -> None:
             raise OutputError(
                 f"this would overwrite the input {given!r}.",
                 file=output,
-                remedy="Choose another place with --output.",
+                remedy=f"Choose another place with {option}.",
             )
 
 

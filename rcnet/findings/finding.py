@@ -46,24 +46,28 @@ RuleFunction = Callable[[Circuit], Iterable[Remark]]
 
 @dataclass(frozen=True, slots=True)
 class Rule:
-    """One rule: its code, its usual severity, what it looks for (its docstring), and the function."""
+    """One rule: its code, its usual severity, what it looks for (its docstring), and the function.
+
+    of_text: it looks at what was read, line by line, so that it holds also where other lines cannot be read
+    """
 
     code: str
     severity: Severity
     about: str
     look: RuleFunction
+    of_text: bool = False
 
 
 RULES: dict[str, Rule] = {}
 
 
-def rule(code: str, severity: Severity) -> Callable[[RuleFunction], RuleFunction]:
+def rule(code: str, severity: Severity, *, of_text: bool = False) -> Callable[[RuleFunction], RuleFunction]:
     """Register a function as the rule `code`. Its docstring is what users read about it."""
 
     def register(function: RuleFunction) -> RuleFunction:
         if code in RULES:
             raise ValueError(f"two rules are called {code!r}")
-        RULES[code] = Rule(code, severity, (function.__doc__ or "").strip(), function)
+        RULES[code] = Rule(code, severity, (function.__doc__ or "").strip(), function, of_text)
         return function
 
     return register
@@ -71,15 +75,44 @@ def rule(code: str, severity: Severity) -> Callable[[RuleFunction], RuleFunction
 
 def all_rules() -> tuple[Rule, ...]:
     """Every rule there is, in the order of its code."""
-    from . import graph_rules, netlist_rules  # noqa: F401 - importing them registers their rules
+    # Importing them registers their rules.
+    from . import (  # noqa: F401
+        analysis_rules,
+        claim_rules,
+        graph_rules,
+        name_rules,
+        netlist_rules,
+        reach_rules,
+        refusal_rules,
+        silence,
+        structure_rules,
+        trap_rules,
+        value_rules,
+    )
 
     return tuple(RULES[code] for code in sorted(RULES))
 
 
 def findings(circuit: Circuit) -> tuple[Finding, ...]:
-    """Everything the rules find, errors first, then by line."""
-    found = [finding for each in all_rules() for finding in _of(each, circuit)]
-    return tuple(sorted(found, key=lambda finding: (ORDER[finding.severity], finding.line or 0)))
+    """What the rules find and nobody silenced, errors first, then by line."""
+    from .silence import sifted
+
+    return sifted(circuit, found(circuit))[0]
+
+
+def found(circuit: Circuit) -> tuple[Finding, ...]:
+    """Everything the rules find, silenced or not, errors first, then by line."""
+    return in_order(finding for each in all_rules() for finding in _of(each, circuit))
+
+
+def found_in_text(circuit: Circuit) -> tuple[Finding, ...]:
+    """What the rules about text find in as much of a netlist as could be read."""
+    return in_order(finding for each in all_rules() if each.of_text for finding in _of(each, circuit))
+
+
+def in_order(several: Iterable[Finding]) -> tuple[Finding, ...]:
+    """Findings as they are told: errors first, then by line."""
+    return tuple(sorted(several, key=lambda finding: (ORDER[finding.severity], finding.line or 0)))
 
 
 def _of(each: Rule, circuit: Circuit) -> Iterator[Finding]:

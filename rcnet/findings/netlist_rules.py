@@ -8,8 +8,10 @@ from dataclasses import replace
 
 from ..circuit import KINDS, Circuit, Place, Sweep
 from ..errors import RcnetError
-from ..netlist import digest, folded, logical_lines, reads_as_part, sweep_fault, words_of
+from ..netlist import digest, folded, reads_as_part, sweep_fault
+from ..netlist.seal import changes
 from ..values import SpiceNumber, format_quantity, number_oddity, read_spice_number
+from ._telling import at_node, few
 from .finding import Remark, rule
 
 # oddity of a number -> what it is, what to do. Every one is read by ngspice 39 without a word.
@@ -35,31 +37,43 @@ _ODDITIES: dict[str, tuple[str, str]] = {
 }
 
 
-@rule("odd-number", "error")
+@rule("odd-number", "error", of_text=True)
 def odd_number(circuit: Circuit) -> Iterator[Remark]:
     """A number that SPICE reads otherwise than a person: `1M` on a resistor, `1F` on a capacitor, `4,7k`.
 
     A warning where only letters are passed over that may be a unit.
     """
     for name, text in circuit.value_texts.items():
+        if name not in circuit.network:
+            continue  # its line is refused for something else
         kind = KINDS[circuit.network.part(name).kind]
-        yield from _remarks(name, text, kind.letter, kind.unit, circuit.place_of(name))
-    if circuit.origin == "netlist":
-        yield from _elsewhere(circuit)
+        yield from _remarks(name, text, kind.letter, kind.unit, circuit.place_of(name).at(text))
+    for owner, text, place in circuit.other_numbers:
+        yield from _remarks(owner, text, "V", "", place.at(text))
+    yield from _of_parameters(circuit)
+    yield from _of_magnitudes(circuit)
 
 
-def _elsewhere(circuit: Circuit) -> Iterator[Remark]:
-    """Odd numbers on the lines of sources and analyses."""
-    for line in logical_lines(circuit.lines):
-        words = words_of(line.text)
-        if words and (line.text[0] in "VvIi" or words[0].lower() in (".ac", ".tran", ".noise", ".temp")):
-            place = Place(circuit.file or circuit.name, line.number, circuit.lines[line.number - 1])
-            for word in words[3:] if line.text[0] != "." else words[1:]:
-                if re.match(r"[-+]?\.?[0-9]", word):
-                    yield from _remarks(words[0], word, "V", "", place)
-            if comma := re.search(r"\bac[ =]*([-+]?[0-9.]+,[0-9]\S*)", line.text, re.IGNORECASE):
-                remark = _remark(words[0], comma[1], "decimal-comma", "magnitude and phase", place)
-                yield replace(remark, severity="warning")
+def _of_parameters(circuit: Circuit) -> Iterator[Remark]:
+    """Odd numbers behind `.param`: what is odd depends on the parts they become."""
+    for each in circuit.parameters.values():
+        if not re.fullmatch(r"[-+]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)[a-zA-Zµμ]*", each.text):
+            continue
+        kinds = {circuit.network.part(name).kind for name in each.parts if name in circuit.network}
+        kind = kinds.pop() if len(kinds) == 1 else "V"
+        oddity = number_oddity(read_spice_number(each.text), kind)
+        if oddity in ("milli-not-mega", "femto-not-farad"):
+            read_as = format_quantity(each.value, KINDS[kind].unit)
+            yield _remark(each.name, each.text, oddity, read_as, each.place.at(each.text))
+
+
+def _of_magnitudes(circuit: Circuit) -> Iterator[Remark]:
+    """`AC 1,5`: not a magnitude of one and a half, but a magnitude and a phase."""
+    for name in circuit.network.sources if circuit.origin == "netlist" else ():
+        place = circuit.place_of(name)
+        if comma := re.search(r"\bac[ =]*([-+]?[0-9.]+,[0-9]\S*)", place.text, re.IGNORECASE):
+            remark = _remark(name, comma[1], "decimal-comma", "magnitude and phase", place.at(comma[1]))
+            yield replace(remark, severity="warning")
 
 
 def _remarks(name: str, text: str, kind: str, unit: str, place: Place) -> Iterator[Remark]:
@@ -107,7 +121,7 @@ def empty_sweep(circuit: Circuit) -> Iterator[Remark]:
         )
 
 
-@rule("title-is-part", "warning")
+@rule("title-is-part", "warning", of_text=True)
 def title_is_part(circuit: Circuit) -> Iterator[Remark]:
     """The first line of a netlist is its title, whatever it holds: a part there is not in the circuit."""
     title = circuit.lines[0] if circuit.origin == "netlist" and circuit.lines else ""
@@ -117,7 +131,7 @@ def title_is_part(circuit: Circuit) -> Iterator[Remark]:
         yield Remark(
             f"the first line looks like the part {name}, but it is the title and no part.",
             "Put a title line above it.",
-            Place(circuit.file or circuit.name, 1, title),
+            Place(circuit.file or circuit.name, 1, title).at(name),
         )
 
 
@@ -125,15 +139,17 @@ def title_is_part(circuit: Circuit) -> Iterator[Remark]:
 def ground_lookalike(circuit: Circuit) -> Iterator[Remark]:
     """Nodes called `00`, `0.0`, `ground` or `gnd!` are ordinary nodes to ngspice, not ground."""
     lookalike = re.compile(r"0[0.]+|ground|gnd!|vss|earth", re.IGNORECASE)
-    found = {node for node in circuit.network.nodes[1:] if lookalike.fullmatch(node)}
-    for part in circuit.network.parts if found else ():
-        for node in found.intersection(part.nodes):
-            found.remove(node)
-            yield Remark(
-                f"node {node!r} is not ground to a simulator.",
-                "Write 0 if ground is meant.",
-                circuit.place_of(part.name),
-            )
+    nodes = circuit.network.nodes
+
+    def tell(node: int) -> Remark:
+        return Remark(
+            f"node {nodes[node]!r} is not ground to a simulator.",
+            "Write 0 if ground is meant.",
+            at_node(circuit, node),
+        )
+
+    found = [node for node in range(1, len(nodes)) if lookalike.fullmatch(nodes[node])]
+    yield from few(found, tell, "nodes are called like ground and are not")
 
 
 @rule("names-merge", "error")
@@ -143,38 +159,41 @@ def names_merge(circuit: Circuit) -> Iterator[Remark]:
     ngspice 39 keeps every byte outside ASCII as `_`, so that `né` and `nü` are one node; the micro sign it
     keeps as `u`.
     """
-    if circuit.origin != "netlist":
+    nodes = circuit.network.nodes
+    if circuit.origin != "netlist" or "".join(nodes).isascii():
         return
-    first: dict[str, str] = {}
-    seen: set[str] = set()
-    for part in circuit.network.parts:
-        for node in part.nodes:
-            if node in seen:
-                continue
-            seen.add(node)
-            other = first.setdefault(folded(node), node)
-            if other != node:
-                yield Remark(
-                    f"the nodes {other!r} and {node!r} are one node to ngspice.",
-                    "Name them with the letters a to z, digits and _.",
-                    circuit.place_of(part.name),
-                )
+    first: dict[str, int] = {}
+    pairs = [(first.setdefault(folded(name), node), node) for node, name in enumerate(nodes)]
+
+    def tell(pair: tuple[int, int]) -> Remark:
+        other, node = pair
+        return Remark(
+            f"the nodes {nodes[other]!r} and {nodes[node]!r} are one node to ngspice.",
+            "Name them with the letters a to z, digits and _.",
+            at_node(circuit, node),
+        )
+
+    merged = [pair for pair in pairs if pair[0] != pair[1]]
+    yield from few(merged, tell, "nodes are one with another to ngspice")
 
 
 @rule("seal-broken", "error")
 def seal_broken(circuit: Circuit) -> Iterator[Remark]:
     """The netlist carries a seal, but what it holds is not what was sealed."""
-    if circuit.seal is not None and circuit.seal.digest != digest(circuit):
-        line = circuit.seal.line
-        what = (
-            "the netlist was changed after it was sealed: a part, a node, a value, a source, an analysis, an "
-            "option or the output differs."
-        )
-        yield Remark(
-            what if circuit.seal.digest else "the netlist's seal has lost its digest.",
-            "Write it again with `rcnet netlist`, or remove the seal's comment lines if the change is meant.",
-            Place(circuit.file or circuit.name, line, circuit.lines[line - 1]),
-        )
+    if circuit.seal is None or circuit.seal.digest == digest(circuit):
+        return
+    line = circuit.seal.line
+    differing = changes(circuit)
+    what = "a part, a node, a value, a source, an analysis, an option or the output differs"
+    if differing is not None:
+        what = "; ".join(differing) or "nothing that the seal lists differs, but its digest does"
+    yield Remark(
+        f"the netlist was changed after it was sealed: {what}."
+        if circuit.seal.digest
+        else "the netlist's seal has lost its digest.",
+        "Write it again with `rcnet netlist`, or remove the seal's comment lines if the change is meant.",
+        Place(circuit.file or circuit.name, line, circuit.lines[line - 1]).at("digest"),
+    )
 
 
 @rule("sealed-despite-errors", "warning")

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from ..check import Check
+    from ..circuit import Circuit
     from ..claims import ClaimResult
     from ..compare import Comparison, CurveComparison, Difference
     from ..confirmation import Confirmation
@@ -49,9 +50,29 @@ def check_document(check: Check) -> dict[str, Any]:
     return {
         "circuit": check.circuit.name,
         "verdict": check.verdict,
+        **left_out_document(check.circuit),
         "findings": [finding_document(finding) for finding in check.findings],
         "claims": [claim_document(result) for result in check.claims],
+        "silenced": len(check.silenced),
     }
+
+
+def left_out_document(circuit: Circuit) -> dict[str, Any]:
+    """The parts left out as not linear and the nodes where they were connected; {} where there are none."""
+    if not circuit.left_out:
+        return {}
+    parts = [
+        {
+            "name": left.name,
+            "kind": left.kind,
+            "nodes": list(left.nodes),
+            "file": left.place.file,
+            "line": left.place.line,
+        }
+        for left in circuit.left_out
+    ]
+    boundary = list(dict.fromkeys(node for left in circuit.left_out for node in left.nodes))
+    return {"left_out": parts, "boundary": boundary}
 
 
 def finding_document(finding: Finding) -> dict[str, Any]:
@@ -63,6 +84,8 @@ def finding_document(finding: Finding) -> dict[str, Any]:
         "file": finding.file,
         "line": finding.line,
         "remedy": finding.remedy,
+        "column": finding.column,
+        "width": finding.width,
     }
 
 
@@ -171,6 +194,7 @@ def simulation_document(done: Confirmation) -> dict[str, Any]:
         "circuit": done.check.circuit.name,
         "simulator": None if done.opinion is None else done.opinion.who,
         "findings": [finding_document(finding) for finding in done.check.findings],
+        "silenced": len(done.check.silenced),
         "curves": [{"name": c.name, "analysis": c.analysis, "points": len(c)} for c in curves],
         "folder": None if done.folder is None else str(done.folder),
         "files": list(done.files),
@@ -182,5 +206,6 @@ def netlist_document(check: Check, text: str | None) -> dict[str, Any]:
     return {
         "circuit": check.circuit.name,
         "findings": [finding_document(finding) for finding in check.findings],
+        "silenced": len(check.silenced),
         "netlist": text,
     }

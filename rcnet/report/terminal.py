@@ -10,6 +10,8 @@ from collections.abc import Iterable, Sequence
 from typing import TYPE_CHECKING
 
 from ..values import format_quantity
+from .claim_table import show_claims
+from .excerpt import excerpt
 from .plain import printable
 
 if TYPE_CHECKING:
@@ -17,7 +19,7 @@ if TYPE_CHECKING:
     from rich.text import Text
 
     from ..check import Check
-    from ..claims import ClaimResult
+    from ..circuit import Circuit
     from ..compare import Comparison, CurveComparison, Difference
     from ..confirmation import Confirmation
     from ..curves import Curve
@@ -25,8 +27,6 @@ if TYPE_CHECKING:
 
 WIDTH = 80
 MOST_LISTED = 12  # curves or spans shown one by one; the JSON document holds them all
-# A hand value closer than this to the exact one is shown as the same: no part is made that well.
-SAME = {"dB": 1e-3, "deg": 1e-2, "share": 1e-4}
 # The remark about coarse curves names them and says why; the JSON document holds it, here a count is enough.
 _COARSE = "smaller differences do not count there."
 ROUNDING = 1e-9  # a difference below this share of the value is told as such; its decibels say nothing
@@ -118,8 +118,33 @@ def show_check(check: Check, out: Console, *, quiet: bool = False) -> None:
     """The verdict, the findings and the claims of one circuit; one line where `quiet`."""
     _headline(check.circuit.name, [_word(check.verdict)], _summary(check), out, quiet=quiet)
     if not quiet:
+        show_left_out(check.circuit, out)
         show_findings(check.findings, out)
-        show_claims(check.claims, out)
+        show_claims(check.claims, out, _say)
+
+
+def show_left_out(circuit: Circuit, out: Console) -> None:
+    """The parts of a netlist that were left out as not linear, and the nodes where they were connected."""
+    for left in circuit.left_out[:MOST_LISTED]:
+        nodes = ", ".join(left.nodes) or "none that is left"
+        where = f"{left.place.file}:{left.place.line}"
+        _say(
+            out,
+            "left out  ",
+            _styled(where, "dim"),
+            f"  {left.name} is {left.kind}; nodes: {nodes}",
+            indent=2,
+            hang=10,
+        )
+    if len(circuit.left_out) > MOST_LISTED:
+        _say(out, f"and {len(circuit.left_out) - MOST_LISTED} more left out", indent=2)
+    if circuit.left_out:
+        boundary = dict.fromkeys(node for left in circuit.left_out for node in left.nodes)
+        _say(
+            out,
+            f"what follows is about the linear rest; boundary nodes: {', '.join(boundary) or 'none'}",
+            indent=2,
+        )
 
 
 def _headline(name: str, verdict: Sequence[str | Text], details: str, out: Console, *, quiet: bool) -> None:
@@ -137,61 +162,26 @@ def _summary(check: Check) -> str:
     verdicts = _verdicts(Counter(result.verdict for result in check.claims), ("holds", "fails", "undecided"))
     found = Counter(finding.severity for finding in check.findings)
     named = [_counted(found[word], word) for word in ("error", "warning", "note") if found[word]]
-    return "; ".join(
-        [f"claims: {verdicts}" if verdicts else "no claims", *([", ".join(named)] if named else [])]
-    )
+    details = [f"claims: {verdicts}" if verdicts else "no claims"]
+    if named:
+        details.append(", ".join(named))
+    if check.silenced:
+        details.append(f"{len(check.silenced)} silenced")
+    return "; ".join(details)
 
 
 def show_findings(findings: Iterable[Finding], out: Console) -> None:
-    """Each finding with its place, the line itself and the remedy."""
+    """Each finding with its place, the line itself, carets under what is meant there, and the remedy."""
     for finding in findings:
         place = finding.file if finding.line is None else f"{finding.file}:{finding.line}"
         _say(out, _word(finding.severity), f" {finding.code}  ", _styled(place, "dim"), indent=2, hang=2)
-        line = printable(finding.text.strip())
-        if line and not line.startswith("["):  # a table's own heading tells nothing
-            _say(out, _styled(f"| {line[:70]}{'...' if len(line) > 70 else ''}", "dim"), indent=4)
+        if finding.column is not None or not finding.text.lstrip().startswith("["):
+            # A table's own heading tells nothing.
+            lines = excerpt(finding.text, finding.column, finding.width, room=out.width - 6)
+            for mark, line in zip("| ", lines, strict=False):
+                out.print(_styled(f"    {mark} {line}", "dim"), soft_wrap=True)
         _say(out, finding.message, indent=4)
         _say(out, f"-> {finding.remedy}", indent=4, hang=3)
-
-
-def show_claims(claims: Sequence[ClaimResult], out: Console) -> None:
-    """Each claim: its verdict and what it says; below, what is exact, what was wanted, what the hand says."""
-    if not claims:
-        return
-    margin = max(len(result.verdict) for result in claims) + 2
-    for result in claims:
-        verdict = _word(result.verdict)
-        verdict.pad_right(margin - len(result.verdict))
-        _say(out, verdict, result.claim.says, indent=2, hang=margin)
-        _say(out, "; ".join(_numbers(result)), indent=2 + margin)
-        if result.why:
-            _say(out, result.why, indent=2 + margin)
-
-
-def _numbers(result: ClaimResult) -> list[str]:
-    unit = result.claim.measure.unit
-    wanted = result.claim.bound.text + (" over tolerance" if result.claim.over_tolerance else "")
-    row = [] if result.exact is None else [f"exact {format_quantity(result.exact, unit)}"]
-    row.append(f"wanted {wanted}")
-    if result.hand is not None:
-        row.append(f"by hand {format_quantity(result.hand, unit)}{_error_of_hand(result)}")
-    return row
-
-
-def _error_of_hand(result: ClaimResult) -> str:
-    assert result.hand is not None
-    if result.exact is None:
-        return ""
-    off = result.hand - result.exact
-    unit = result.claim.measure.unit
-    if unit in ("dB", "deg"):
-        return " (the same)" if abs(off) < SAME[unit] else f" ({off:+.2g} {unit})"
-    if abs(off) <= SAME["share"] * abs(result.exact):
-        return " (the same)"
-    if not result.exact:
-        return ""
-    error = 100 * off / result.exact
-    return f" ({error:+.0f} %)" if 100 <= abs(error) < 1e5 else f" ({error:+.2g} %)"
 
 
 # ---------------------------------------------------------------------- compare
@@ -319,7 +309,7 @@ def show_confirmation(done: Confirmation, out: Console, *, strict: bool = False,
     if quiet:
         return
     show_findings(done.check.findings, out)
-    show_claims(done.check.claims, out)
+    show_claims(done.check.claims, out, _say)
     if done.comparison is not None:
         _say(out, *_verdict_of(done.comparison), f": {_counted_curves(done.comparison)}", indent=2, hang=2)
         _show_details(done.comparison, out)

@@ -27,8 +27,10 @@ def clear(ended: Ended, says: str, code: int = 2, *, lines: int = 1) -> None:
     assert "Traceback" not in ended.err
     assert "defect of rcnet" not in ended.err
     assert re.search(says, ended.err), ended.err
-    assert ended.err.count("\n") == lines, ended.err
-    assert ended.err.rstrip().endswith((".", "?")), ended.err
+    # The line that is meant may follow, indented, with carets beneath.
+    sentences = [line for line in ended.err.splitlines() if not line.startswith("  ")]
+    assert len(sentences) == lines, ended.err
+    assert sentences[-1].endswith((".", "?")), ended.err
 
 
 def left() -> set[str]:

@@ -153,20 +153,19 @@ def test_check_tells_claims_with_numbers(rcnet: Rcnet) -> None:
     """Each claim is told with its exact value, what was wanted and what the hand says."""
     ended = rcnet("check", circuit("gauge.rc.toml", WARNS, FAILS))
     # 1/(2 pi 10k 10n) = 1591.549 Hz; without the 2 pi 10 kHz, 2 pi times as much
-    assert "exact 1.592 kHz" in ended.out
-    assert "by hand 10 kHz (+528 %)" in ended.out
-    assert "wanted at least 2 kHz" in ended.out
-    assert re.search(r"^  fails  Corner$", ended.out, re.MULTILINE)
+    assert re.search(r"^    verdict  exact +by hand +wanted +margin$", ended.out, re.MULTILINE)
+    assert re.search(r"^    holds +1\.592 kHz  10 kHz \(\+528 %\)", ended.out, re.MULTILINE)
+    assert re.search(r"^  Corner\n    fails +1\.592 kHz +at least 2 kHz +-408 Hz$", ended.out, re.MULTILINE)
 
 
 def test_check_document(rcnet: Rcnet) -> None:
     """`check --json` prints the interface's document and nothing else; with several files a list."""
     one, two = circuit("one.rc.toml", WARNS, OPEN), circuit("two.rc.toml", FAILS)
     got = document(rcnet("check", "--json", one))
-    assert set(got) == {"circuit", "verdict", "findings", "claims"}
+    assert set(got) == {"circuit", "verdict", "findings", "claims", "silenced"}
     assert (got["circuit"], got["verdict"]) == ("one", "undecided")
     (finding,) = got["findings"]
-    assert set(finding) == {"code", "severity", "message", "file", "line", "remedy"}
+    assert set(finding) == {"code", "severity", "message", "file", "line", "remedy", "column", "width"}
     assert (finding["severity"], finding["file"]) == ("warning", one)
     holds, undecided = got["claims"]
     for claim in (holds, undecided):
