@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 import numpy.typing as npt
@@ -16,6 +17,9 @@ from .exact import transient_from
 from .handover import with_analyses
 from .netlist import frequencies
 from .values import parse_quantity
+
+if TYPE_CHECKING:
+    from .claims import Envelope
 
 Values = npt.NDArray[np.complex128] | npt.NDArray[np.float64]
 
@@ -65,6 +69,16 @@ def response_curves(circuit: Circuit, nodes: Sequence[str], axis: Sequence[float
     """The exact response at `axis` (Hz) of some nodes or pairs, else of the output, else of every node."""
     named = _named(circuit, nodes)
     return _curves(circuit, "ac", "1", named, axis, circuit.network.response(axis, named))
+
+
+def response_envelopes(circuit: Circuit, nodes: Sequence[str], axis: Sequence[float]) -> dict[str, Envelope]:
+    """The least and the greatest gain over the tolerances at `axis` (Hz), by the name of the same curves."""
+    from .claims import response_envelope
+
+    return {
+        f"v({','.join(name.split())})": response_envelope(circuit.network, axis, name, circuit.conditions)
+        for name in _named(circuit, nodes)
+    }
 
 
 def time_curves(circuit: Circuit, nodes: Sequence[str], axis: Sequence[float]) -> Curves:

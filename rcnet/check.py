@@ -44,10 +44,13 @@ class Check:
         return self.verdict == "holds" and not (strict and self.warnings)
 
 
-def check(circuit: Circuit | Network) -> Check:
-    """Findings and verdicts of a circuit. Nothing is written and no simulator is asked."""
+def check(circuit: Circuit | Network, *, samples: int | None = None, seed: int = 1) -> Check:
+    """Findings and verdicts of a circuit. Nothing is written and no simulator is asked.
+
+    samples, seed: for claims over tolerances whose extremes are not proven; see `rcnet.claims.judge`
+    """
     whole = network_of(circuit)
-    results = judge(whole)
+    results = judge(whole, samples=samples, seed=seed)
     about_hands = (remark for result in results for remark in _about_hand(whole, result))
     told, silenced = sifted(whole, in_order([*found(whole), *about_hands, *_about_parts(whole)]))
     return Check(whole, told, results, silenced)
@@ -68,11 +71,17 @@ def _about_hand(circuit: Circuit, result: ClaimResult) -> list[Finding]:
         f"{claim.says!r}: by hand {format_quantity(result.hand, unit)}, in the real network "
         f"{format_quantity(result.exact, unit)}."
     )
-    remedy = (
-        "Trust the exact value; the formula leaves out something this network does "
-        "(often one stage loading another)."
-    )
-    return [_warning("hand-misleads", message, remedy, place)]
+    return [_warning("hand-misleads", message, _what_hand_misses(circuit, result), place)]
+
+
+def _what_hand_misses(circuit: Circuit, result: ClaimResult) -> str:
+    from .claims.reasons import why_off
+
+    assert result.hand is not None and result.exact is not None
+    reason = why_off(circuit, result.claim, result.hand, result.exact)
+    if reason is None:
+        return "Trust the exact value; the formula leaves out something this network does."
+    return f"Trust the exact value: {reason.says}."
 
 
 def _about_parts(circuit: Circuit) -> list[Finding]:

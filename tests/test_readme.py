@@ -15,11 +15,17 @@ import pytest
 
 README = Path(__file__).parents[1] / "README.md"
 _CONSOLE = re.compile(r"^```console\n(.*?)^```$", re.DOTALL | re.MULTILINE)
+_NETLIST = re.compile(r"^```spice\n(\* (\S+\.cir):.*?)^```$", re.DOTALL | re.MULTILINE)
 _PYTHON = re.compile(r"^```python\n(.*?)^```$", re.DOTALL | re.MULTILINE)
 
 
 def rendered(block: str, folder: Path) -> str:
-    """A console block with the output its commands really give, run one after another in one folder."""
+    """A console block with the output its commands really give, run one after another in one folder.
+
+    The netlists shown lie in that folder, each under the name its title begins with.
+    """
+    for netlist, name in _NETLIST.findall(README.read_text(encoding="utf-8")):
+        (folder / name).write_text(netlist, encoding="utf-8")
     lines = []
     for line in block.splitlines():
         if line.startswith("$ "):

@@ -285,6 +285,8 @@ def by_differences(
         _nonzero(evaluate(network, measure, of, options))
     found = {}
     for name, nominal in network.values.items():
+        if network.part(name).couples is not None:
+            continue  # a coupling near one has no room for the steps, and no tolerance
 
         def at(step: float, name: str = name, nominal: float = nominal) -> float:
             changed = network.with_values({name: nominal * math.exp(step)})

@@ -62,6 +62,12 @@ def _print_rules(*, as_json: bool) -> None:
 @click.option(
     "--sarif", type=click.Path(), metavar="OUT", help="Write one SARIF 2.1.0 log too; - is standard output."
 )
+@click.option(
+    "--samples",
+    type=click.IntRange(16, 10_000_000),
+    metavar="N",
+    help="Judge claims over tolerances by N samples, and tell the yield.",
+)
 @click.option("--rules", is_flag=True, help="List the rules and end.")
 @click.pass_context
 def command(
@@ -86,6 +92,7 @@ def _check(
     quiet: bool,
     strict: bool,
     silence: tuple[str, ...],
+    samples: int | None,
     sarif: str | None,
 ) -> int:
     from ..report.document import check_document, finding_document
@@ -98,7 +105,7 @@ def _check(
     code = OK
     out = console(error=sarif == "-")  # standard output then belongs to the log
     for file in files:
-        done = _checked(file, silence)
+        done = _checked(file, silence, samples)
         if isinstance(done, RcnetError):
             complain(done, codes=not as_json)
             others = _beside(done, silence)
@@ -130,12 +137,12 @@ def _check(
     return code
 
 
-def _checked(file: str, silence: tuple[str, ...]) -> Check | RcnetError:
+def _checked(file: str, silence: tuple[str, ...], samples: int | None) -> Check | RcnetError:
     from ..check import check
     from ..findings import with_silence
 
     try:
-        return check(with_silence(load_asked(file), silence))
+        return check(with_silence(load_asked(file), silence), samples=samples)
     except RcnetError as exc:
         return exc.at(file)
 

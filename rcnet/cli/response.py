@@ -17,6 +17,7 @@ if TYPE_CHECKING:
 
     from ..circuit import Circuit
     from ..curves import Curves
+    from ..report.envelope import Envelopes
 
 
 @click.command(
@@ -42,6 +43,7 @@ if TYPE_CHECKING:
 @click.option("--at", "at", multiple=True, metavar="F", help="A single frequency; may be repeated.")
 @click.option("--until", metavar="T", help="Give the waveform from t = 0 to this time, as '5 ms'.")
 @click.option("--points", type=click.IntRange(2), help="How many times, evenly spaced.  [default: 201]")
+@click.option("--tolerance", is_flag=True, help="Add the least and the greatest gain over the tolerances.")
 def command(
     file: str,
     as_json: bool,
@@ -49,11 +51,10 @@ def command(
     as_csv: bool,
     output: str | None,
     nodes: tuple[str, ...],
+    tolerance: bool,
     **wanted: Any,
 ) -> int:
     """Give the exact response of a circuit, or its waveforms."""
-    from ..curves import write_csv
-    from ..report.document import response_document
     from ..report.terminal import console, show_response
     from ..system.files import write_file
 
@@ -62,28 +63,53 @@ def command(
     as_text = None if output is None else _writer(output)
     spare(output, file)
     circuit = load_asked(file)
-    curves = _asked(circuit, [_named(circuit, node) for node in nodes], **wanted)
+    named = [_named(circuit, node) for node in nodes]
+    curves = _asked(circuit, named, **wanted)
+    envelopes = _envelopes(circuit, named, curves) if tolerance else None
     if output is not None and as_text is not None:
-        write_file(output, as_text(curves))
+        write_file(output, as_text(curves, envelopes))
     if as_json:
-        print_json(response_document(list(curves)))
+        print_json(_document(curves, envelopes))
     elif as_csv:
-        click.echo(write_csv(curves), nl=False)
+        click.echo(_csv(curves, envelopes), nl=False)
     elif output is None:
-        show_response(curves.curves, console(), quiet=quiet)
+        show_response(curves.curves, console(), quiet=quiet, envelopes=envelopes)
     return OK
 
 
-def _writer(output: str) -> Callable[[Curves], str]:
-    """How a response is written, as the file's suffix says."""
+def _envelopes(circuit: Circuit, nodes: list[str], curves: Curves) -> Envelopes:
+    from ..answers import response_envelopes
+
+    if curves.curves[0].analysis != "ac":
+        raise InputError("--tolerance is about the response over frequency.", remedy="Leave --until out.")
+    return response_envelopes(circuit, nodes, curves.curves[0].axis.tolist())
+
+
+def _document(curves: Curves, envelopes: Envelopes | None) -> dict[str, Any]:
+    from ..report.document import response_document
+    from ..report.envelope import envelope_document
+
+    return (
+        response_document(list(curves)) if envelopes is None else envelope_document(list(curves), envelopes)
+    )
+
+
+def _csv(curves: Curves, envelopes: Envelopes | None) -> str:
     from ..curves import write_csv
-    from ..report.document import response_document, to_json
+    from ..report.envelope import envelope_csv
+
+    return write_csv(curves) if envelopes is None else envelope_csv(list(curves), envelopes)
+
+
+def _writer(output: str) -> Callable[[Curves, Envelopes | None], str]:
+    """How a response is written, as the file's suffix says."""
+    from ..report.document import to_json
 
     suffix = Path(output).suffix.lower()
     if suffix == ".csv":
-        return write_csv
+        return _csv
     if suffix == ".json":
-        return lambda curves: to_json(response_document(list(curves)))
+        return lambda curves, envelopes: to_json(_document(curves, envelopes))
     what = f"a response is not written as {suffix!r}." if suffix else "the file's name has no suffix."
     raise InputError(what, file=output, remedy="Let the name end in .csv or .json.")
 

@@ -8,7 +8,7 @@ from dataclasses import replace
 
 from ..circuit import KINDS, Circuit, Place, Sweep
 from ..errors import RcnetError
-from ..netlist import digest, folded, reads_as_part, sweep_fault
+from ..netlist import digest, folded, sweep_fault
 from ..netlist.seal import changes
 from ..values import SpiceNumber, format_quantity, number_oddity, read_spice_number
 from ._telling import at_node, few
@@ -43,13 +43,19 @@ def odd_number(circuit: Circuit) -> Iterator[Remark]:
 
     A warning where only letters are passed over that may be a unit.
     """
+    arrays, rows = circuit.network.arrays(), circuit.network
+    known: dict[tuple[str, str], bool] = {}  # many instances of one subcircuit have the same text
     for name, text in circuit.value_texts.items():
-        if name not in circuit.network:
+        if name not in rows:
             continue  # its line is refused for something else
-        kind = KINDS[circuit.network.part(name).kind]
-        yield from _remarks(name, text, kind.letter, kind.unit, circuit.place_of(name).at(text))
+        letter = chr(arrays.kinds[rows.part_index(name)])
+        if (odd := known.get((letter, text))) is None:
+            odd = known[letter, text] = _oddity(text, letter) is not None
+        if odd:
+            yield from _remarks(name, text, letter, KINDS[letter].unit, circuit.place_of(name).at(text))
     for owner, text, place in circuit.other_numbers:
-        yield from _remarks(owner, text, "V", "", place.at(text))
+        if _oddity(text, "V") is not None:
+            yield from _remarks(owner, text, "V", "", place.at(text))
     yield from _of_parameters(circuit)
     yield from _of_magnitudes(circuit)
 
@@ -76,12 +82,19 @@ def _of_magnitudes(circuit: Circuit) -> Iterator[Remark]:
             yield replace(remark, severity="warning")
 
 
-def _remarks(name: str, text: str, kind: str, unit: str, place: Place) -> Iterator[Remark]:
+def _number(text: str) -> SpiceNumber:
     try:
-        number = read_spice_number(text)
+        return read_spice_number(text)
     except RcnetError:  # node and value in one word, parted by a comma
-        number = read_spice_number(text.rpartition(",")[2])
-    oddity = "decimal-comma" if "," in text else number_oddity(number, kind)
+        return read_spice_number(text.rpartition(",")[2])
+
+
+def _oddity(text: str, kind: str) -> str | None:
+    return "decimal-comma" if "," in text else number_oddity(_number(text), kind)
+
+
+def _remarks(name: str, text: str, kind: str, unit: str, place: Place) -> Iterator[Remark]:
+    number, oddity = _number(text), _oddity(text, kind)
     if oddity is None:
         return
     if oddity == "unknown-letters" and number.tail and text.startswith(number.tail):
@@ -97,6 +110,9 @@ def _harmless(number: SpiceNumber) -> bool:
 
 def _remark(name: str, text: str, oddity: str, read_as: str, place: Place) -> Remark:
     what, remedy = _ODDITIES[oddity]
+    if oddity == "digits-after-suffix" and (marked := re.fullmatch(r"([0-9]+)([a-zA-Z]+)([0-9]+)", text)):
+        letter = "" if marked[2] in ("R", "r") else marked[2]
+        remedy = f"Write a decimal point: {marked[1]}.{marked[3]}{'Meg' if letter == 'M' else letter}."
     return Remark(f"{name}: {text!r} is read as {read_as}: {what}.", remedy, place)
 
 
@@ -121,13 +137,21 @@ def empty_sweep(circuit: Circuit) -> Iterator[Remark]:
         )
 
 
+def _reads_as_part(text: str) -> bool:
+    from ..netlist import reads_as_part
+
+    return reads_as_part(text)
+
+
 @rule("title-is-part", "warning", of_text=True)
 def title_is_part(circuit: Circuit) -> Iterator[Remark]:
     """The first line of a netlist is its title, whatever it holds: a part there is not in the circuit."""
     title = circuit.lines[0] if circuit.origin == "netlist" and circuit.lines else ""
     name = title.split()[0] if title.strip() else ""
     named_so = re.fullmatch(r"[RCLEGFHVI][0-9]\w*|[VI](in|s|cc|dd|bat)\w*", name, re.IGNORECASE)
-    if named_so and reads_as_part(title):
+    nodes = {node.lower() for node in circuit.network.nodes}
+    connected = nodes.issuperset(word.lower() for word in title.split()[1:3]) and len(title.split()) == 4
+    if (named_so or connected) and _reads_as_part(title):
         yield Remark(
             f"the first line looks like the part {name}, but it is the title and no part.",
             "Put a title line above it.",

@@ -227,3 +227,9 @@ def card_kept(circuit: Circuit) -> Iterator[Remark]:
 def card_ignored(circuit: Circuit) -> Iterator[Remark]:
     """A line such as `.sens` or `.nodeset` that is neither computed nor handed on."""
     yield from _seen(circuit, "card-ignored", "lines are neither computed nor handed on")
+
+
+@rule("dc-without-number", "warning", of_text=True)
+def dc_without_number(circuit: Circuit) -> Iterator[Remark]:
+    """The word DC without a number: ngspice 39 takes 0 for the operating point, whatever waveform follows."""
+    yield from _seen(circuit, "dc-without-number", "sources say DC and no number")

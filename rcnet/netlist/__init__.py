@@ -1,12 +1,30 @@
 """SPICE netlists: written from a circuit, read into one, sealed."""
 
-from .limits import Limits, Reading, raised
+from __future__ import annotations
+
+import importlib
+from typing import TYPE_CHECKING, Any
+
 from .names import Names, folded, safe_names
-from .reader import parse_netlist, read_netlist, reads_as_part, with_parameters
 from .round_trip import differences, read_same
 from .seal import DESPITE_ERRORS, digest, find_seal, seal_comments
 from .sweep import frequencies, sweep_fault
 from .writer import Written, analysis_lines, as_written, deck, network_of, requested, voltage, write
+
+if TYPE_CHECKING:
+    from .limits import Limits, Reading, raised
+    from .reader import parse_netlist, read_netlist, reads_as_part, with_parameters
+
+# The reader is loaded when it is first used: checking a circuit file has no need of it.
+_LATE = {
+    "Limits": "limits",
+    "Reading": "limits",
+    "parse_netlist": "reader",
+    "raised": "limits",
+    "read_netlist": "reader",
+    "reads_as_part": "reader",
+    "with_parameters": "reader",
+}
 
 __all__ = [
     "DESPITE_ERRORS",
@@ -36,3 +54,12 @@ __all__ = [
     "with_parameters",
     "write",
 ]
+
+
+def __getattr__(name: str) -> Any:
+    home = _LATE.get(name)
+    if home is None:
+        raise AttributeError(f"module 'rcnet.netlist' has no attribute {name!r}")
+    value = getattr(importlib.import_module(f".{home}", __name__), name)
+    globals()[name] = value
+    return value

@@ -11,7 +11,7 @@ import numpy.typing as npt
 from ..circuit import GROUND, LeftOut, Network, Part, Place, Source
 from ..errors import CircuitError, RcnetError
 from ..values import read_spice_number
-from .element import NODES, Element, read_element
+from .element import NODES, Element, coupled_and_multiplied, read_element
 from .environment import Environment, Known, Shared
 from .environment import Source as Depended
 from .gather import Gathered
@@ -21,8 +21,6 @@ from .refusals import no_part, unmodelled, unseen_character
 from .runs import Run
 from .scopes import Defined, Model, Scope
 from .words import assignments, split_words
-
-ONE = Known(1.0)
 
 
 @dataclass(frozen=True, slots=True)
@@ -108,12 +106,13 @@ class Assembly:
         self._failed: set[tuple[int, int]] = set()
         self.unread: set[str] = set()  # parts whose lines could not be read
         self._bad_couplings = 0
+        self._multiplied: set[str] = set()  # inductors with an `m=`
         self._noticed: set[tuple[str, int, int, str]] = set()
 
     def assemble(self) -> Network:
         """Everything put in place. What cannot be is among the gathered problems."""
         if self._fits():
-            Instance(self, self.defined.top, self.top, "", {}, ONE).expand()
+            Instance(self, self.defined.top, self.top, "", {}, None).expand()
         self._build()
         return self.network
 
@@ -238,6 +237,8 @@ class Assembly:
         self.numbers += [(name, number, line) for number in element.numbers]
         if element.start is not None:
             self.starts[name] = element.start
+        if element.multiplied and isinstance(item, Part) and item.kind == "L":
+            self._multiplied.add(name)
         for source in self.top.shared.joined(element.of):
             self.depends.setdefault(source, []).append(name)
         self._records.append((line, item))
@@ -270,6 +271,8 @@ class Assembly:
                 self._build_run(record)
                 continue
             line, item = record
+            if isinstance(item, Part) and self._senses_what_is_left_out(line, item):
+                continue
             try:
                 if isinstance(item, Source):
                     self.network.add_source(item)
@@ -298,6 +301,15 @@ class Assembly:
             except RcnetError as exc:
                 self.complain(exc, line)
 
+    def _senses_what_is_left_out(self, line: Line, part: Part) -> bool:
+        """Leave out too what senses the current of a part that was left out."""
+        gone = {left.name.lower() for left, _ in self.dangling_left}
+        if part.senses is None or part.senses.lower() not in gone:
+            return False
+        left = LeftOut(part.name, f"controlled by {part.senses}", (), self.gathered.place(line))
+        self.dangling_left.append((left, part.nodes))
+        return True
+
     def _linked(self, part: Part) -> Part:
         """The part with the names of others spelt as those are."""
         if part.senses is not None:
@@ -310,6 +322,7 @@ class Assembly:
     def _check_links(self, line: Line, part: Part) -> None:
         if self.gathered.full:
             return
+        part = self._linked(part)
         named = part.couples or ((part.senses,) if part.senses is not None else ())
         if not named:
             return
@@ -323,6 +336,8 @@ class Assembly:
                 self.network.sensed_by(row)
             else:
                 self.network.coupled_by(row)
+                if not self._multiplied.isdisjoint(named):
+                    raise coupled_and_multiplied(part.name)
         except RcnetError as exc:
             self._bad_couplings += part.couples is not None
             self.complain(exc, line)
@@ -332,7 +347,8 @@ class Assembly:
         found = []
         for left, nodes in self.dangling_left:
             kept = [self.spelling.get(node.lower(), node) for node in nodes]
-            known = tuple(dict.fromkeys(node for node in kept if self.network.has_node(node)))
+            there = (node for node in kept if node != GROUND and self.network.has_node(node))
+            known = tuple(dict.fromkeys(there))
             found.append(replace(left, nodes=known))
         return tuple(found)
 
@@ -374,7 +390,7 @@ class Instance:
     environment: Environment
     path: str
     ports: Mapping[str, str]
-    multiplier: Known
+    multiplier: Known | None
     line: Line = field(default_factory=lambda: Line(1, ""))
 
     def expand(self) -> None:
@@ -382,7 +398,7 @@ class Instance:
         for item in self.scope.statements:
             if not isinstance(item, Run):
                 self.statement(item)
-            elif self.path or self.multiplier.value != 1.0:
+            elif self.path:
                 for line in item.lines():
                     self.statement(line)
             else:
@@ -439,11 +455,19 @@ class Instance:
                 remedy="Name one node for each port, in their order.",
                 code="pin-count",
             )
+        if self.multiplier is not None:
+            raise CircuitError(
+                f"{call.name} stands inside a subcircuit that is multiplied by m=, which ngspice 39 does not "
+                "pass on.",
+                remedy="Write the outer subcircuit out as many times as it is there.",
+                code="unreadable",
+            )
         inner.uses += 1
         given, multiplier = self._given(call, inner, line)
         ports = {port.lower(): self.node(node) for port, node in zip(inner.ports, call.nodes, strict=True)}
         ports = {port: node for port, node in ports.items() if port not in ("0", "gnd")}
         environment = Environment(inner, self.environment.shared, self.environment, given)
+        self._require_unambiguous(call, environment)
         path = f"{self.path}{call.name}."
         Instance(self.assembly, inner, environment, path, ports, multiplier).expand()
 
@@ -456,10 +480,10 @@ class Instance:
             code="subcircuit-unknown",
         )
 
-    def _given(self, call: Call, inner: Scope, line: Line) -> tuple[dict[str, Known], Known]:
+    def _given(self, call: Call, inner: Scope, line: Line) -> tuple[dict[str, Known], Known | None]:
         """What an instance sets: parameters, and how many times it is there."""
         given: dict[str, Known] = {}
-        multiplier = self.multiplier
+        multiplier: Known | None = None
         for key, text in call.given:
             if key in inner.defaults or key in inner.parameters:
                 given[key] = self.environment.evaluate(text)
@@ -469,7 +493,7 @@ class Instance:
                     raise CircuitError(
                         f"{call.name} is there {own.value:g} times.", remedy="Give m= above zero."
                     )
-                multiplier = Known(multiplier.value * own.value, multiplier.of | own.of)
+                multiplier = own
             else:
                 self.line = line
                 self.notice(
@@ -480,6 +504,23 @@ class Instance:
                     key,
                 )
         return given, multiplier
+
+    def _require_unambiguous(self, call: Call, inside: Environment) -> None:
+        """Refuse `r={q}` where q is one thing here and another inside the subcircuit.
+
+        ngspice 39 computes it inside, with whatever is known there by then (measured).
+        """
+        for key, text in call.given:
+            for name in sorted(self.environment.needed(text)) if not text.isdigit() else ():
+                if name == key or not (name in inside.scope.defaults or name in inside.scope.parameters):
+                    continue
+                if self.environment.known(name).value != inside.known(name).value:
+                    raise CircuitError(
+                        f"{call.name} sets {key}={text}, but {name!r} is one number here and another inside "
+                        f"{call.of!r}; which of them ngspice 39 takes depends on their order.",
+                        remedy="Give one of the two another name.",
+                        code="unreadable",
+                    )
 
     # -- the site of a part
 
@@ -506,14 +547,14 @@ class Instance:
     def node(self, word: str) -> str:
         """A node's name in the whole network."""
         lower = word.lower()
+        if lower in self.assembly.defined.global_nodes:
+            return self.assembly.spelled(word)
         if lower in self.ports:
             return self.ports[lower]
         if "{" in word or "'" in word or '"' in word:
             raise CircuitError(
                 f"{word} stands where a node belongs.", remedy="Name the node.", code="node-missing"
             )
-        if not self.path or lower in self.assembly.defined.global_nodes:
-            return self.assembly.spelled(word)
         return self.assembly.spelled(self.path + word)
 
     def part(self, word: str) -> str:

@@ -117,6 +117,8 @@ def read_options(text: str) -> tuple[dict[str, str], list[PassedOver]]:
     passed_over: list[PassedOver] = []
     for setting in settings:
         key, _, value = setting.lower().partition("=")
+        if key in kept:
+            continue  # of two on one line ngspice 39 takes the first (measured)
         if (known := _option(key, value)) is not None:
             kept[key] = known
         elif key in _CHANGING:

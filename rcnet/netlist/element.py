@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
+import math
 import re
-from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Protocol
 
@@ -22,12 +22,19 @@ NODES = {"R": 2, "C": 2, "L": 2, "E": 4, "G": 4, "F": 2, "H": 2, "V": 2, "I": 2}
 _VALUE_KEYS = {
     "R": ("r", "resistance"),
     "C": ("c", "cap", "capacitance"),
-    "L": ("l", "ind", "inductance"),
+    "L": ("l", "inductance"),
     "E": ("gain",),
     "G": ("gain",),
     "F": ("gain",),
     "H": ("gain",),
 }
+# The same in a model (measured: not all names of the one are names of the other).
+_MODEL_VALUE_KEYS = {
+    "R": ("r", "res", "resistance"),
+    "C": ("cap", "capacitance"),
+    "L": ("ind", "inductance"),
+}
+_DEFAULT_SIZE = 10e-6  # m: width of R and C, length of R, where neither part nor model states one (measured)
 # ngspice 39 stamps `m=` on these only; on the others it refuses the word (measured).
 _MULTIPLIED = "RCLGFI"
 _DECIMAL_COMMA = re.compile(r"[ =(]([-+]?[0-9]+,[0-9][^\s,]*)$")
@@ -39,7 +46,7 @@ _NOMINAL = 27.0  # degrees Celsius: the temperature at which values are meant, u
 class Site(Protocol):
     """Where a part stands: what names, nodes and models mean there."""
 
-    multiplier: Known
+    multiplier: Known | None  # where it stands inside a subcircuit that is there `m=` times
 
     @property
     def temperature(self) -> float:
@@ -90,7 +97,7 @@ class Site(Protocol):
 class Element:
     """A part or a source, the parameters its value depends on, its value as written, where it starts.
 
-    numbers: other numbers on its line, as written; start: `ic=`
+    numbers: other numbers on its line, as written; start: `ic=`; multiplied: by an `m=` that is not 1
     """
 
     item: Part | Source | None
@@ -98,6 +105,7 @@ class Element:
     text: str | None = None
     numbers: list[str] = field(default_factory=list)
     start: float | None = None
+    multiplied: bool = False
 
 
 @dataclass(slots=True)
@@ -119,8 +127,10 @@ def read_element(text: str, site: Site) -> Element:
 
     Raises CircuitError or QuantityError.
     """
-    words = _both_coefficients(split_words(text))
+    words = split_words(text)
     name, letter = words[0], words[0][0].upper()
+    if letter == "R":
+        words = _both_coefficients(words)
     if letter == "K":
         return _coupling(words, site)
     count = NODES[letter]
@@ -225,24 +235,30 @@ def _valued(line: _Line, site: Site) -> Element:
     model, text = _model_and_value(line, site)
     settings = _Settings(line, site, model)
     base = settings.from_model() if text is None else _written_value(line, text, site)
+    if line.letter == "R" and base == 0:
+        base = _least_resistance(line, site)
     value = _at_temperature(line, base, settings) if line.letter in "RCL" else base
-    value = _multiplied(line, value, settings, site)
+    factor = settings.number("m") if line.letter in _MULTIPLIED else None
+    value = _multiplied(line, value * settings.scale(), factor, site)
     start = settings.number("ic") if line.letter in "CL" else None
     settings.require_all_read()
     part = _part(line, value, sensed, site)
     shown = _shown_value(line, text)
     line.numbers[:] = [number for number in line.numbers if number != text]
-    return Element(part, frozenset(line.of) or NOTHING, shown, line.numbers, start)
+    multiplied = (factor is not None and factor != 1) or site.multiplier is not None
+    return Element(part, frozenset(line.of) or NOTHING, shown, line.numbers, start, multiplied)
+
+
+def _least_resistance(line: _Line, site: Site) -> float:
+    site.notice(
+        "zero-resistance",
+        f"{line.name} has 0 ohm, which ngspice silently makes 1 milliohm; so it is read here.",
+        "Write the resistance of the link, or give both its ends one node name.",
+    )
+    return 1e-3
 
 
 def _part(line: _Line, value: float, sensed: str | None, site: Site) -> Part | None:
-    if line.letter == "R" and value == 0:
-        site.notice(
-            "zero-resistance",
-            f"{line.name} has 0 ohm, which ngspice silently makes 1 milliohm; so it is read here.",
-            "Write the resistance of the link, or give both its ends one node name.",
-        )
-        value = 1e-3
     if line.letter == "C" and value == 0:
         site.notice(
             "zero-capacitance",
@@ -274,9 +290,9 @@ def _model_and_value(line: _Line, site: Site) -> tuple[Model | None, str | None]
         named = not _is_value(word) and not site.is_parameter(word.lower())
         found = site.model(word.lower()) if named else None
         if found is not None and model is None and MODEL_KINDS.get(found.kind) == line.letter:
-            if line.letter == "C" and values:
+            if line.letter != "R" and values:
                 raise CircuitError(
-                    f"{line.name}: a capacitor's model stands before its value.",
+                    f"{line.name}: such a part's model stands before its value.",
                     remedy=f"Write {line.name} a b {word} {values[0]}.",
                     code="unreadable",
                 )
@@ -361,12 +377,10 @@ class _Settings:
     def from_model(self) -> float:
         """The value where none is written: the model's own, or from length and width."""
         letter = self.line.letter
-        length, width = self.number("l"), self.number("w")
-        if length is not None:
-            found = self._from_size(letter, length, width)
-            if found is not None:
-                return found
-        found = self.of_model(*_VALUE_KEYS[letter])
+        written = self.of_model(*_MODEL_VALUE_KEYS[letter])
+        sized = None if letter == "L" else self._from_size(letter)
+        # Where a model gives both, ngspice 39 takes the sheet of a resistor, but the value of a capacitor.
+        found = written if sized is None or (letter == "C" and written is not None) else sized
         if found is None:
             assert self.model is not None
             raise CircuitError(
@@ -376,21 +390,31 @@ class _Settings:
             )
         return found
 
-    def _from_size(self, letter: str, length: float, width: float | None) -> float | None:
+    def _from_size(self, letter: str) -> float | None:
         """Ngspice manual, "Semiconductor Resistor Model" and "Semiconductor Capacitor Model"."""
         narrow, short = self.of_model("narrow") or 0.0, self.of_model("short") or 0.0
-        width = self.of_model("defw") if width is None else width
+        length, width = self.number("l"), self.number("w")
         if width is None:
-            return None
+            width = self.of_model("defw", "w")
+            width = _DEFAULT_SIZE if width is None else width
         if letter == "R":
+            length = self.of_model("l") if length is None else length
+            length = _DEFAULT_SIZE if length is None else length
             sheet = self.of_model("rsh")
+            if not (sheet and length and width):
+                return None
             # ngspice 39 takes both reductions twice on a resistor, once on a capacitor (measured).
-            return None if sheet is None else sheet * (length - 2 * short) / (width - 2 * narrow)
+            return _quotient(self.line, sheet * (length - 2 * short), width - 2 * narrow)
         area, edge = self.of_model("cj"), self.of_model("cjsw") or 0.0
-        if letter != "C" or area is None:
+        if area is None or length is None:
             return None
         length, width = length - short, width - narrow
         return area * length * width + 2 * edge * (length + width)
+
+    def scale(self) -> float:
+        """`scale=` of the part or its model."""
+        found = self.either("scale") if self.line.letter in "RCL" else None
+        return 1.0 if found is None else found
 
     def require_all_read(self) -> None:
         for key, text in self.unread.items():
@@ -398,41 +422,71 @@ class _Settings:
                 continue  # a size beside a value says nothing
             message, remedy, code = reason_behind_value(self.line.name, key, f"{key}={text}")
             raise CircuitError(message, remedy=remedy, code=code)
+        if self.line.letter == "R" and self.of_model("kf"):
+            raise CircuitError(
+                f"the model of {self.line.name} has flicker noise (kf), which is not computed.",
+                remedy="Take kf out of the model.",
+                code="unreadable",
+            )
+
+
+def _quotient(line: _Line, above: float, below: float) -> float:
+    if not below:
+        raise CircuitError(
+            f"{line.name}: its model makes it 0 m wide.", remedy="Mind `narrow`, which counts twice."
+        )
+    return above / below
 
 
 def _at_temperature(line: _Line, base: float, settings: _Settings) -> float:
-    """R(T) = R (1 + tc1 dT + tc2 dT^2), dT from the nominal temperature (ngspice manual, "Resistors")."""
+    """R(T) = R (1 + tc1 dT + tc2 dT^2), dT from the nominal temperature (ngspice manual, "Resistors").
+
+    Or R 1.01^(tce dT), which goes before that.
+    """
     site = settings.site
     first, second = settings.either("tc1"), settings.either("tc2")
-    own, more = settings.number("temp"), settings.number("dtemp")
+    power = settings.either("tce") if line.letter == "R" else None
+    own, more = settings.either("temp"), settings.either("dtemp")
     tnom = settings.of_model("tnom")
     warmer = (site.temperature + (more or 0.0) if own is None else own) - (
         site.tnom if tnom is None else tnom
     )
     if not warmer:
         return base
+    if power is not None:
+        try:
+            return float(base * 1.01 ** (power * warmer))
+        except OverflowError:
+            return math.inf
     return base * (1.0 + (first or 0.0) * warmer + (second or 0.0) * warmer * warmer)
 
 
-def _multiplied(line: _Line, value: float, settings: _Settings, site: Site) -> float:
-    """`m=` parts side by side, and `scale=`."""
-    factor = settings.number("m") if line.letter in _MULTIPLIED else None
-    scale = settings.number("scale") if line.letter in "RCL" else None
-    value *= 1.0 if scale is None else scale
-    count = (1.0 if factor is None else factor) * site.multiplier.value
-    if site.multiplier.value != 1.0:
+def _multiplied(line: _Line, value: float, factor: float | None, site: Site) -> float:
+    """`m=` parts side by side: its own, or that of the subcircuit it stands in."""
+    if site.multiplier is not None:
         line.of.update(site.multiplier.of)
-        if line.letter in "FH":
+        if factor is not None:
+            raise _multiplied_twice(line.name)
+        if line.letter in "FH" and site.multiplier.value != 1.0:
             raise CircuitError(
                 f"{line.name} senses a current inside a subcircuit that is multiplied by m=.",
                 remedy="Write the subcircuit out as many times as it is there.",
                 code="unreadable",
             )
-    if count == 1.0 or line.letter not in _MULTIPLIED:
+        factor = site.multiplier.value
+    if factor is None or line.letter not in _MULTIPLIED:
         return value
-    if not count > 0:
-        raise CircuitError(f"{line.name} is there {count:g} times.", remedy="Give m= a number above zero.")
-    return value * count if line.letter in "CGF" else value / count
+    if not factor > 0:
+        raise CircuitError(f"{line.name} is there {factor:g} times.", remedy="Give m= a number above zero.")
+    return value * factor if line.letter in "CGF" else value / factor
+
+
+def _multiplied_twice(name: str) -> CircuitError:
+    return CircuitError(
+        f"{name} has m= inside a subcircuit that has m= as well; ngspice 39 forgets the inner one.",
+        remedy="Multiply one of the two, or write the part out as many times as it is there.",
+        code="unreadable",
+    )
 
 
 # ---------------------------------------------------------------------- sources and couplings
@@ -462,12 +516,22 @@ def _source(name: str, words: list[str], text: str, site: Site) -> Element:
     lower = [word.lower() for word in rest]
     if "m" in lower and name[0] in "Ii" and lower.index("m") + 1 < len(rest):
         at = lower.index("m")
-        multiplier = number(rest[at + 1]) or 1.0
+        found = number(rest[at + 1])
+        if found is None:
+            raise CircuitError(
+                f"{name}: m={rest[at + 1]} is no number.", remedy="Write m=2.", code="unreadable"
+            )
+        if site.multiplier is not None:
+            raise _multiplied_twice(name)
+        multiplier = found
         del rest[at : at + 2]
     drive = read_drive(name, (site.node(nodes[0]), site.node(nodes[1])), rest, number, site)
     drive = replace(drive, name=site.part(name))
-    if name[0] in "Ii" and (total := multiplier * site.multiplier.value) != 1.0:
-        drive = scaled(drive, total)
+    if name[0] in "Ii" and site.multiplier is not None:
+        multiplier = site.multiplier.value
+        of.update(site.multiplier.of)
+    if multiplier != 1.0:
+        drive = scaled(drive, multiplier)
     return Element(drive, frozenset(of) or NOTHING, None, numbers)
 
 
@@ -482,10 +546,17 @@ def _coupling(words: list[str], site: Site) -> Element:
     name, first, second = alone[:3]
     text = pairs[0][1] if pairs else alone[3]
     line = _Line(name, "K", (), [], {}, " ".join(words))
+    if site.multiplier is not None and site.multiplier.value != 1.0:
+        raise coupled_and_multiplied(name)
     value = _number(line, text, site, note=False)
     part = Part(site.part(name), "K", (), value, couples=(site.part(first), site.part(second)))
     return Element(part, frozenset(line.of) or NOTHING, text if _NUMBER.match(text) else None)
 
 
-Reader = Callable[[str, Site], Element]
-Models = Mapping[str, Model]
+def coupled_and_multiplied(name: str) -> CircuitError:
+    """The error for a coupling of inductors with an `m=`."""
+    return CircuitError(
+        f"{name} couples inductors that are multiplied by m=; ngspice 39 couples them more than fully.",
+        remedy="Write the inductors without m=.",
+        code="unreadable",
+    )

@@ -112,11 +112,11 @@ class Environment:
         """
         return self._computed(self.shared.parse(text))
 
-    def _computed(self, expression: NetlistExpression) -> Known:
+    def _computed(self, expression: NetlistExpression, defining: str = "") -> Known:
         of: set[Source] = set()
 
         def lookup(name: str) -> float:
-            known = self.known(name)
+            known = self._site(name, defining).known(name)
             of.update(known.of)
             return known.value
 
@@ -131,10 +131,10 @@ class Environment:
 
     def known(self, name: str) -> Known:
         """What a name (lower case) means here."""
+        if name == "temper":
+            return Known(self.shared.temperature)
         owner = self._owner(name)
         if owner is None:
-            if name == "temper":
-                return Known(self.shared.temperature)
             raise CircuitError(
                 f"the parameter {name!r} is not defined.",
                 remedy=self._nearest(name),
@@ -145,6 +145,11 @@ class Environment:
         if name not in owner.found:
             owner._settle(name)
         return owner.found[name]
+
+    def _site(self, name: str, defining: str) -> Environment:
+        """Where a name is looked up while one is computed: `r={2*r}` in a subcircuit means the outer r."""
+        doubly = name in self.scope.parameters and name in self.scope.defaults
+        return self.outer if name == defining and self.outer is not None and not doubly else self
 
     def is_defined(self, name: str) -> bool:
         """True if a name (lower case) is a parameter here."""
@@ -186,7 +191,7 @@ class Environment:
             is_new = key not in path
             path[key] = owner
             expression = owner._parsed(name)
-            unsettled = list(owner._unsettled(expression)) if is_new else []
+            unsettled = list(owner._unsettled(expression, name)) if is_new else []
             for other, needed in unsettled:
                 if needed in other.broken:
                     raise DefinitionError.at_line(other.broken[needed], other.broken[needed].definition)
@@ -215,9 +220,9 @@ class Environment:
                 f"parameter {name}: {exc.message}", remedy=exc.remedy, code=exc.problems[0].code
             ) from exc
 
-    def _unsettled(self, expression: NetlistExpression) -> Iterator[tuple[Environment, str]]:
+    def _unsettled(self, expression: NetlistExpression, defining: str) -> Iterator[tuple[Environment, str]]:
         for needed in sorted(self._names_in(expression)):
-            other = self._owner(needed)
+            other = self._site(needed, defining)._owner(needed)
             if other is not None and needed not in other.found:
                 yield other, needed
 
@@ -243,7 +248,7 @@ class Environment:
 
     def _result(self, name: str, expression: NetlistExpression) -> Known:
         try:
-            known = self._computed(expression)
+            known = self._computed(expression, name)
         except QuantityError as exc:
             raise QuantityError(f"parameter {name}: {exc.message}", remedy=exc.remedy) from exc
         if self.outer is not None:

@@ -20,8 +20,9 @@ KEPT_PROBLEMS = 1000  # of more than these only the number is kept
 _COMMAND_TITLE = re.compile(r"\s*(\*#|\*ng_script|\.control|\.inc|\.lib)", re.IGNORECASE)
 # Commands that reach beyond the simulation: other programs, other files, native code.
 _REACHING = re.compile(
-    r"^\s*(?:shell|system|!|codemodel|pre_\w+|use|cd|chdir|source|load|write\w*|wr\w+|wrdata|hardcopy|snsave|snload|"
-    r"rusage|echo|set\s+\w*(?:path|dir|shell)\w*|osdi|edit|quit|exec)\b|[>`|]",
+    r"^\s*(?:shell|system|codemodel|pre_\w+|use|cd|chdir|source|load|write\w*|wr\w+|hardcopy|snsave|snload|"
+    r"rusage|echo|set\s+\w*(?:path|dir|shell|unixcom|editor)\w*|osdi|edit|quit|exec|alias|aspice|rspice|jobs)\b"
+    r"|^\s*!|[>`|]",
     re.IGNORECASE,
 )
 _SILENCE = re.compile(r"rcnet:\s*silence\b[\s:=]*([\w ,-]*)", re.IGNORECASE)
@@ -189,9 +190,10 @@ class _Gatherer:
                 remedy = "Save the file with LF or CRLF line ends."
                 found.keep(Problem(message, name, number, remedy, "unreadable"))
             if "rcnet:" in line:
-                self._silence(name, number, line)
+                self._silence(name, number, lines)
 
-    def _silence(self, name: str, number: int, line: str) -> None:
+    def _silence(self, name: str, number: int, lines: list[str]) -> None:
+        line = lines[number - 1]
         match = _SILENCE.search(line)
         if match is None:
             return
@@ -199,6 +201,11 @@ class _Gatherer:
         if not alone and not re.search(r";|//|\$", line[: match.start()]):
             return
         place = Place(name, number, line)
+        # A finding names the first of several lines that continue one another.
+        while not alone and number > 1 and lines[number - 1].lstrip()[:1] == "+":
+            number -= 1
+            while number > 1 and lines[number - 1].strip()[:1] in ("", "*"):
+                number -= 1
         for code in re.findall(r"[\w-]+", match[1]):
             silence = Silence(code.lower(), place=place.at(code))
             self.found.silenced.append(silence if alone else replace(silence, file=name, line=number))
@@ -225,6 +232,8 @@ class _Gatherer:
                     after_end = None
                 continue
             word = item.text.split(" ", 1)[0].lower() if item.text[0] == "." else ""
+            # ngspice 39 looks at no more than these letters (measured).
+            word = next((each for each in (".control", ".endc") if word.startswith(each)), word)
             if word in _SECTION_WORDS:
                 try:
                     self.section(word, item, source, folder, stack)
@@ -273,7 +282,7 @@ class _Gatherer:
         commands: list[Line] = []
         for item in source:
             inside = list(item.lines()) if isinstance(item, Run) else [item]
-            if inside[0].text.split(" ", 1)[0].lower() == ".endc":
+            if inside[0].text[:5].lower() == ".endc":
                 break
             commands += inside
         reaching = next((each for each in commands if _REACHING.search(each.text)), None)
@@ -313,12 +322,12 @@ class _Gatherer:
     def library(self, line: Line, source: Iterator[Line | Run], folder: Path | None, stack: Stack) -> None:
         words = _quoted_words(line.text)
         if len(words) == 2:
-            # A section's own beginning, in a file that is not read as a library: nobody asks for it here.
+            # Perhaps a section's own beginning, in a file that is not read as a library.
             for item in source:
                 if isinstance(item, Line) and item.text.split(" ", 1)[0].lower() == ".endl":
-                    return
+                    break
             raise CircuitError(
-                f".lib {words[1]!r} names no section; ngspice passes over such a line.",
+                f".lib {words[1]!r} names no section.",
                 remedy=f'Write .lib "{words[1]}" SECTION, or .include "{words[1]}".',
                 code="section-missing",
             )
@@ -436,4 +445,10 @@ def _of_section(items: Iterator[Line | Run], section: str) -> list[Line | Run] |
             return inside
         else:
             inside.append(item)
-    return inside
+    if inside is not None:
+        raise CircuitError(
+            f"the section {section!r} of the library is never closed.",
+            remedy="Add .endl behind its last line.",
+            code="section-missing",
+        )
+    return None

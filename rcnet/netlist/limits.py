@@ -42,6 +42,10 @@ class Reading:
     limits: Limits = field(default_factory=Limits)
 
 
+# What is one within another takes stack as well as memory; this much there always is.
+_MOST = {"depth": 150, "nesting": 150}
+
+
 def raised(limits: Limits, settings: Iterable[str]) -> Limits:
     """The limits with some set anew, each as `parts=10000000`. Raises InputError."""
     known = {each.name for each in fields(Limits)}
@@ -51,6 +55,10 @@ def raised(limits: Limits, settings: Iterable[str]) -> Limits:
             raise InputError(
                 f"the limit {setting!r} cannot be read.",
                 remedy=f"Write NAME=NUMBER; names are {', '.join(sorted(known))}.",
+            )
+        if int(number) > _MOST.get(key, int(number)):
+            raise InputError(
+                f"the limit {setting!r} is too high.", remedy=f"Give {key} at most {_MOST[key]}."
             )
         limits = replace(limits, **{key: int(number)})
     return limits

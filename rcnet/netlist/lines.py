@@ -47,6 +47,9 @@ def logical_lines(lines: Sequence[str], *, title: bool = True, file: int = 0) ->
         line = uncommented(lines[count])
         if not line:
             continue
+        if line[0] == "*":
+            yield Line(count + 1, line, file)  # as a comment it does not end the line before
+            continue
         if line[0] == "+" and pieces:
             if piece := line[1:].strip(" "):
                 pieces.append(piece)

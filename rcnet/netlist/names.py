@@ -15,7 +15,7 @@ _EXPRESSIONS = {"poly", "value", "vol", "cur", "table", "laplace", "freq"}
 KEYWORDS = frozenset(_DRIVES | _EXPRESSIONS)
 # Words a simulator uses for its own vectors (a node called `time` disappears from the results of ngspice 39)
 # or takes for ground.
-_RESERVED = KEYWORDS | {"time", "frequency", "gnd", "ground", "all"}
+_RESERVED = KEYWORDS | {"time", "frequency", "temper", "gnd", "ground", "all"}
 _LOUD = frozenset(word.upper() for word in _RESERVED)
 MAX_NAME = 36  # characters: `+ v(a,b)` with two such names fits in a line
 _MANY = 1000  # names; fewer are looked at one by one

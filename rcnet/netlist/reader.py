@@ -159,6 +159,7 @@ class _Reader:
         self.requests: list[tuple[Line, Request]] = []
         self.node_starts: list[tuple[Line, dict[str, float]]] = []
         self.card_numbers: list[tuple[str, str, Line]] = []
+        self.has_temperature = False
         self.card_parameters: set[Depended] = set()
         self.environment = Environment(deck.defined.top, self.shared)
         self.assembly = Assembly(deck.defined, self.gathered, deck.reading, self.shared, self.setting)
@@ -440,7 +441,9 @@ class _Reader:
     def set_options(self, line: Line) -> None:
         found, passed_over = read_options(line.text)
         if "temp" in found:
-            self.set_temperature(float(found.pop("temp")))
+            celsius = float(found.pop("temp"))
+            if not self.has_temperature:
+                self.set_temperature(celsius)
         if "tnom" in found:
             self.setting = replace(self.setting, tnom=float(found.pop("tnom")))
         self.options.update(found)
@@ -448,6 +451,7 @@ class _Reader:
             self.gathered.notice("option-changes-circuit", line, message, remedy, key)
 
     def temperature(self, line: Line) -> None:
+        self.has_temperature = True  # .temp goes before .options temp=, wherever the two stand (measured)
         words = words_of(line.text)[1:]
         if not words:
             raise CircuitError(".temp names no temperature.", remedy="Give one; ngspice takes 27 otherwise.")

@@ -11,7 +11,6 @@ import numpy as np
 from ..circuit import Circuit, Exponential, Network, Points, Source, Step, TransientRun, Waveform
 from ..errors import CircuitError, RcnetError
 from .names import Names
-from .reader import parse_netlist
 from .writer import Written, exponential_numbers
 
 DEFECT = "This is a defect of rcnet; please report it with the circuit."
@@ -22,6 +21,8 @@ def read_same(written: Written) -> Circuit:
 
     Raises CircuitError unless it holds the very parts, nodes, values (bit for bit), sources and analyses.
     """
+    from .reader import parse_netlist
+
     try:
         back = parse_netlist(written.text, "")
     except RcnetError as exc:

@@ -52,6 +52,9 @@ def lines_and_runs(lines: Sequence[str], *, title: bool, file: int) -> Iterator[
         line = uncommented(raw)
         if not line:
             continue
+        if line[0] == "*":
+            yield Line(count + 1, line, file)  # as a comment it does not end the line before
+            continue
         if line[0] == "+" and last_is_plain:
             # The line before goes on: it was not as plain as it looked.
             pieces, number = [" ".join(run.rows.pop())], run.numbers.pop()

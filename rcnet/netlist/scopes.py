@@ -174,8 +174,15 @@ class _Builder:
                 remedy="Flatten them, or raise the limit with --limit depth=NUMBER.",
                 code="limit",
             )
+        if defaults and line.text[:6].lower() == ".macro":
+            raise CircuitError(
+                ".macro takes no parameters; ngspice 39 takes them for nodes.",
+                remedy="Write .subckt and .ends.",
+                code="unreadable",
+            )
         scope = Scope(name, line, self.here, tuple(ports))
         for key, text in defaults:
+            _require_free(key)
             scope.defaults[key] = Definition(text, line)
         first = self.here.subcircuits.get(name.lower())
         if first is None:
@@ -216,16 +223,23 @@ class _Builder:
     def ends(self, line: Line) -> None:
         if self.here.parent is None:
             raise CircuitError(".ends closes nothing.", remedy="Remove it.", code="unreadable")
+        closes, self.here = self.here, self.here.parent
+        assert closes.line is not None
         words = line.text.split()
-        if len(words) > 1 and words[1].lower() != self.here.name.lower():
+        if (words[0].lower() == ".eom") != (closes.line.text[:6].lower() == ".macro"):
+            raise CircuitError(
+                f"{words[0]} does not close what line {closes.line.number} begins.",
+                remedy="Write .subckt with .ends.",
+                code="unreadable",
+            )
+        if len(words) > 1 and words[1].lower() != closes.name.lower():
             self.gathered.notice(
                 "ends-name",
                 line,
-                f".ends names {words[1]!r}, but the subcircuit it closes is {self.here.name!r}.",
+                f"{words[0]} names {words[1]!r}, but the subcircuit it closes is {closes.name!r}.",
                 "Let them agree; a simulator does not look at the name.",
                 words[1],
             )
-        self.here = self.here.parent
 
     def close(self) -> None:
         while self.here.parent is not None:
@@ -255,6 +269,7 @@ class _Builder:
         if (call := re.match(r"(\w+)\((.*)\)$", key)) is not None:
             self.here.functions[call[1]] = parse_netlist_function(f"{key} {text}")
             return
+        _require_free(key)
         if (first := self.here.parameters.get(key)) is not None:
             self.gathered.notice(
                 "duplicate-parameter",
@@ -305,8 +320,17 @@ class _Builder:
         self.global_nodes.update(word.lower() for word in split_words(line.text)[1:])
 
 
-# Model types that belong to linear parts -> the part's letter.
-MODEL_KINDS = {"r": "R", "res": "R", "c": "C", "cap": "C", "l": "L", "ind": "L"}
+def _require_free(key: str) -> None:
+    if key == "temper":
+        raise CircuitError(
+            "the parameter 'temper' is the circuit's temperature, whatever is written for it.",
+            remedy="Choose another name, or write .temp.",
+            code="unreadable",
+        )
+
+
+# Model types that belong to linear parts -> the part's letter (measured: `cap` and `ind` are none).
+MODEL_KINDS = {"r": "R", "res": "R", "c": "C", "capacitor": "C", "l": "L", "inductor": "L"}
 
 _CARDS: dict[str, Callable[[_Builder, Line], None]] = {
     ".subckt": _Builder.subcircuit,

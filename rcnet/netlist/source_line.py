@@ -56,6 +56,14 @@ def read_drive(name: str, nodes: tuple[str, str], words: list[str], number: Numb
             repeat, more = _repeat(words[position + 1 + used :], number) if key == "PWL" else (None, 0)
             source = _with_wave(source, _wave(name, key, numbers, run, repeat), numbers)
             key, used = "waveform", used + more
+        elif key == "DC" and not numbers and position + 1 < len(words):
+            source = replace(source, dc=0.0)  # the manual of ngspice writes `DC PWL(...)` so
+            run.notice(
+                "dc-without-number",
+                f"{name}: DC stands without a number, which is 0 for the operating point.",
+                "Write the number, or leave DC out.",
+                words[position],
+            )
         elif key == "DC":
             numbers = numbers[:1] if bare else numbers
             _need(name, word, numbers, 1, 1)
@@ -64,9 +72,17 @@ def read_drive(name: str, nodes: tuple[str, str], words: list[str], number: Numb
             _need(name, word, numbers, 0, 2)
             magnitude, phase = (*numbers, *(1.0, 0.0)[len(numbers) :])
             source = replace(source, ac=magnitude, ac_phase=phase)
+        elif key in _UNREAD_WAVES:
+            run.notice(
+                "waveform-unknown",
+                f"{name}: {word} is a waveform that is not read; it was left out, so nothing is true over "
+                "time.",
+                _READ,
+                word,
+            )
+            key = "waveform"
         else:
-            what = "a waveform that is not read" if word in _UNREAD_WAVES else "not read"
-            raise CircuitError(f"{name}: {words[position]!r} is {what}.", remedy=_READ, code="unreadable")
+            raise CircuitError(f"{name}: {words[position]!r} is not read.", remedy=_READ, code="unreadable")
         if key in seen:
             raise CircuitError(
                 f"{name} has two {key} entries.",
@@ -166,11 +182,15 @@ def _pulse(name: str, numbers: list[float], run: Run) -> Waveform | None:
     """Ngspice manual, "Pulse"; what is left out or zero is filled in as ngspice 39 does it (measured)."""
     _need(name, "PULSE", numbers, 2, 7)
     low, high, delay, rise, fall, width, period = (*numbers, *(0.0,) * 5)[:7]
-    missing = [
-        what
-        for what, value in (("rise", rise), ("fall", fall), ("width", width), ("period", period))
-        if value <= 0
-    ]
+    times = (("rise", rise), ("fall", fall), ("width", width), ("period", period))
+    for what, value in times:
+        if value < 0:
+            raise CircuitError(
+                f"{name}: PULSE has a {what} of {value:g} s.",
+                remedy="Give times above zero.",
+                code="unreadable",
+            )
+    missing = [what for what, value in times if value == 0]
     if not missing:
         return Square(low, high, period, width, rise, fall, delay)
     if not _filled(
@@ -183,6 +203,12 @@ def _pulse(name: str, numbers: list[float], run: Run) -> Waveform | None:
         return None
     assert run.step is not None and run.stop is not None
     rise, fall = rise if rise > 0 else run.step, fall if fall > 0 else run.step
+    if 0 < period < run.stop - delay and rise + (width or run.stop) + fall > period:
+        raise CircuitError(
+            f"{name}: PULSE repeats after {period:g} s, before it is over.",
+            remedy="Write all its numbers; rise, width and fall fit into the period.",
+            code="unreadable",
+        )
     if width <= 0 or width >= run.stop:
         return Step(low, high, delay, rise)  # it stays high until the run ends
     # A pulse that comes once in the run; its period is too long to matter.

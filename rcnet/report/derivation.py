@@ -177,8 +177,12 @@ def _table_of(what: str, roots: Sequence[Root], width: int) -> Iterator[Line]:
         text = ("  " + f"{row[0]:<{widths[0]}}" if not number else "    " + cells[0]) + "  "
         if not number:
             text = f"  {row[0]:<{widths[0] + 2}}  "
-        text += "  ".join([*cells[1:], row[4]])
-        yield text.rstrip()[:width], "bold" if not number else ""
+        text += "  ".join(cells[1:])
+        if len(text) + 2 + len(row[4]) <= width:
+            yield f"{text}  {row[4]}".rstrip(), "" if number else "bold"
+        else:
+            yield text.rstrip(), ""
+            yield from _wrapped(row[4], width, indent=8)
     if len(roots) > MOST_LISTED:
         last = format_quantity(roots[-1].frequency, "Hz")
         yield from _wrapped(f"and {len(roots) - MOST_LISTED} more, up to {last}.", width, indent=4)
@@ -235,7 +239,7 @@ def _group_lines(group: list[Result], width: int, first: int) -> Iterator[Line]:
         yield from _wrapped(f"= {result.formula}{where}", width, indent=11, hang=2, style="dim")
         if result.why is not None:
             yield from _wrapped(f"no exact value: {result.why}", width, indent=11, style="dim")
-    because = dict.fromkeys(result.because for result in group)
+    because = list(dict.fromkeys(result.because for result in group))[:2]
     yield from _wrapped(
         f"assumes {lead.assumes}; here {' '.join(because)}", width, indent=9, hang=2, style="dim"
     )
@@ -267,8 +271,8 @@ def error_text(result: Result) -> str:
 
 def _wrapped(text: str, width: int, *, indent: int = 0, hang: int = 0, style: str = "") -> Iterator[Line]:
     """Broken between words; a word too long for a line behind a sign of multiplication or a comma."""
-    room, line = width - indent, ""
-    margin = indent + len(text) - len(text.lstrip())
+    margin, line = indent + len(text) - len(text.lstrip()), ""
+    room = width - margin
     for piece in _pieces(text, width - indent - hang):
         if line.strip() and len(line) + len(piece.rstrip()) > room:
             yield " " * margin + line.rstrip(), style

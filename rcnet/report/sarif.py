@@ -12,8 +12,8 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from .plain import printable
 from .claim_table import claim_numbers
+from .plain import printable
 
 if TYPE_CHECKING:
     from ..check import Check

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 
 from ..values import format_quantity
 from .claim_table import show_claims
+from .envelope import envelope_columns
 from .excerpt import excerpt
 from .plain import printable
 
@@ -24,6 +25,7 @@ if TYPE_CHECKING:
     from ..confirmation import Confirmation
     from ..curves import Curve
     from ..findings import Finding
+    from .envelope import Envelopes
 
 WIDTH = 80
 MOST_LISTED = 12  # curves or spans shown one by one; the JSON document holds them all
@@ -351,23 +353,31 @@ def show_total(words: Sequence[str], out: Console) -> None:
 # ---------------------------------------------------------------------- response
 
 
-def show_response(curves: Sequence[Curve], out: Console, *, quiet: bool = False) -> None:
+def show_response(
+    curves: Sequence[Curve], out: Console, *, quiet: bool = False, envelopes: Envelopes | None = None
+) -> None:
     """Curves of one axis as a table, of dB and degrees or of volts; side by side as many as fit.
 
-    No headings where `quiet`.
+    No headings where `quiet`. envelopes: the least and the greatest gain over the tolerances, by curve
     """
     timed = curves[0].analysis == "transient"
     heading, unit = ("time", "s") if timed else ("frequency", "Hz")
     columns = [_column(heading, [format_quantity(x, unit, 6) for x in curves[0].axis.tolist()])]
     block: list[list[str]] = []
     for curve in curves:
-        pair = _waveform_column(curve) if timed else _phasor_columns(curve)
+        if envelopes is not None:
+            pair = [_column(*each) for each in envelope_columns(curve, envelopes[curve.name])]
+        else:
+            pair = _waveform_column(curve) if timed else _phasor_columns(curve)
         if block and sum(len(column[0]) + 2 for column in columns + block + pair) - 2 > out.width:
             _show_rows(columns + block, out, quiet=quiet)
             out.print()
             block = []
         block += pair
     _show_rows(columns + block, out, quiet=quiet)
+    if envelopes is not None and not quiet:
+        methods = sorted({envelope.method for envelope in envelopes.values()})
+        _say(out, _styled(f"least and most over the tolerances: {' and '.join(methods)}", "dim"))
 
 
 def _waveform_column(curve: Curve) -> list[list[str]]:

@@ -387,3 +387,20 @@ def test_two_hundred_thousand_parts_take_no_time() -> None:
     began = time.process_time()
     assert findings(circuit) == ()
     assert time.process_time() - began < 5
+
+
+# ------------------------------------------------------------------------------------------ couplings
+
+
+def test_windings_that_contradict_one_another() -> None:
+    """Three windings whose coefficients allow a stored energy below zero; two of 0.9 and one of 0.7 do not.
+
+    The matrix of the coefficients has to be positive semidefinite: 1 + 2abc - a^2 - b^2 - c^2 >= 0.
+    """
+    windings = ("V1 in 0 AC 1", "R1 in a", "L1 a 0", "L2 b 0", "R2 b 0", "L3 out 0", "R3 out 0")
+    for third, fires in ((0.7, False), (-0.9, True)):
+        made = built(windings)
+        for name, pair, k in (("K1", "L1 L2", 0.9), ("K2", "L2 L3", 0.9), ("K3", "L1 L3", third)):
+            made.network.add_coupling(name, *pair.split(), k)
+        assert (1 + 2 * 0.81 * third - 2 * 0.81 - third**2 < 0) == fires
+        assert bool(told(made, "contradictory-couplings")) == fires

@@ -40,6 +40,7 @@ NOTICED = {
     "include-end": "warning",
     "ends-name": "note",
     "encoding": "warning",
+    "dc-without-number": "warning",
     "include-ambiguous": "warning",
     "duplicate-subcircuit": "error",
     "duplicate-model": "error",

@@ -18,7 +18,7 @@ from rcnet.curves import Curves
 from rcnet.curves.raw import parse_raw
 from rcnet.errors import CircuitError, Problem, ResultsError, UnsolvableError
 from rcnet.exact import dc_solvable, require_solvable, transient
-from rcnet.netlist import Reading, parse_netlist
+from rcnet.netlist import Reading, frequencies, parse_netlist
 from rcnet.opinion.ngspice import find_ngspice
 from rcnet.system.process import Finished, clean_environment, run_limited
 
@@ -119,7 +119,11 @@ def compared(example: Example, circuit: Circuit, ngspice: Ngspice) -> list[str]:
         done.append(same_numbers(circuit, ngspice(example.deck(".op"))[1], "operating point"))
     if any(source.ac for source in circuit.network.sources.values()):
         sweep = example.asked("ac") or _SWEEP
-        done.append(same_numbers(circuit, ngspice(example.deck(".options noopac", sweep))[1], "ac"))
+        curves = ngspice(example.deck(".options noopac", sweep))[1]
+        done.append(same_numbers(circuit, curves, "ac"))
+        if curves is not None and circuit.analyses.ac is not None:
+            axis = curves.of("ac")[0].axis
+            np.testing.assert_allclose(axis, frequencies(circuit.analyses.ac), rtol=1e-12)
     moving = any(source.waveform for source in circuit.network.sources.values())
     own_step = any(each.code == "edge-from-step" for each in circuit.seen)
     if moving and not (circuit.initial or own_step):

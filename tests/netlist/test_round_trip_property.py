@@ -12,6 +12,7 @@ from itertools import pairwise
 from typing import Any
 
 import networkx as nx
+import numpy as np
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
@@ -37,7 +38,7 @@ from rcnet.circuit import (
 )
 from rcnet.compare import compare
 from rcnet.errors import UnsolvableError
-from rcnet.exact import require_solvable
+from rcnet.exact import require_solvable, response
 from rcnet.netlist import Names, Written, parse_netlist, write
 
 # ---------------------------------------------------------------------- networks
@@ -45,15 +46,15 @@ from rcnet.netlist import Names, Written, parse_netlist, write
 # Names that differ in case alone, that ngspice takes for one another, that mean something else to a
 # simulator, or that hold what parts words.
 NASTY = (
-    *("out", "OUT", "Out", "n1", "N1", "né", "nü", "n__", "µ", "μ", "u", "Ω", "水位", "a.b", "X1.mid", "x1.MID"),
-    *("time", "frequency", "all", "hertz", "v1#branch", "dc", "AC", "pulse", "poly", "value", "tran", "table"),
+    *("out", "OUT", "Out", "n1", "N1", "né", "nü", "n__", "µ", "μ", "u", "Ω", "水位", "a.b", "X1.mid"),
+    *("time", "frequency", "all", "hertz", "v1#branch", "dc", "AC", "pulse", "poly", "value", "table"),
     *("00", "0.0", "gnd!", "GROUND", "1k", "1e3", "-", "+", "_", "=", "'", '"', "{x}", "$a", "a;b", "a//b"),
     *("v(1)", "(a)", "*a", "*#quit", ".end", ".control", "+x", "back\\", "m=2", "ic=1", "n" * 200, "é" * 199),
-    *("end", "out_2", "out_3", "n_time", "a_b", "A_B", "a,b", "a\N{MIDDLE DOT}b"),
+    *("end", "out_2", "out_3", "n_time", "a_b", "A_B", "a,b", "a\N{MIDDLE DOT}b", "x1.MID", "tran"),
 )  # fmt: skip
 LETTERS = "abXY019_.-:#é水"
 TAILS = ("", "1", "01", "a", "A", ".x", "é", "è", "1.5k", "#b", "=", "(", "*", "µ", "in", "IN", "x" * 199)
-PLAIN = tuple("abcdefgh")
+BASE = {"R": 1e3, "C": 1e-9, "L": 1e-3, "E": 1.0, "G": 1e-3, "F": 1.0, "H": 1e3}
 
 
 def name(rng: random.Random) -> str:
@@ -126,7 +127,7 @@ def network(
             ):
                 made.add_part(Part(label("K"), "K", (), rng.uniform(-1, 1), couples=pair))
         elif not kind.senses_branch or sensed:
-            value = size(rng, decades) * (1 if kind.is_passive else rng.choice((-1, 1)))
+            value = BASE[letter] * size(rng, decades) * (1 if kind.is_passive else rng.choice((-1, 1)))
             senses = rng.choice(sensed) if kind.senses_branch else None
             made.add_part(Part(label(letter), letter, ends(kind.nodes), value, senses))
     return made
@@ -267,12 +268,15 @@ def at(wave: Waveform, time: float) -> float:
     return v0 + (v1 - v0) * (time - t0) / (t1 - t0)
 
 
-@settings(max_examples=2500, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+@settings(max_examples=2100, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 @given(st.randoms(use_true_random=False))
 def test_read_of_write_is_isomorphic_to_the_bit(rng: random.Random) -> None:
     """read(write(x)) has the parts, nodes, values, sources, analyses, start and temperature of x."""
     circuit = any_circuit(rng)
-    written = write(circuit)
+    waves = [source.waveform for source in circuit.network.sources.values()]
+    # Other simulators know no phase of a sine, and print no operating point.
+    portable = rng.random() < 0.2 and not any(isinstance(wave, Sine) and wave.phase for wave in waves)
+    written = write(circuit, portable=portable)
     back = parse_netlist(written.text, "written.cir")
     assert_same(written, back)
     assert_same_drives(written, back)
@@ -280,7 +284,7 @@ def test_read_of_write_is_isomorphic_to_the_bit(rng: random.Random) -> None:
     assert back.conditions == circuit.conditions
     assert back.initial.parts == {written.names.parts[k]: v for k, v in circuit.initial.parts.items()}
     assert back.initial.nodes == {written.names.nodes[k]: v for k, v in circuit.initial.nodes.items()}
-    if circuit.output and circuit.analyses:
+    if circuit.output and circuit.analyses and not portable:
         assert back.output == tuple(written.names.nodes[node] for node in circuit.output)
 
 
@@ -296,7 +300,7 @@ def solvable_circuit(rng: random.Random) -> Circuit:
             rng, "RCLKEFGHRCRC", [GROUND, *nodes], rng.randint(2, 12), 6, lambda: rng.choice(TAILS)
         )
         for k, node in enumerate(nodes):  # a tree of resistors holds every node
-            made.add_resistor(f"Rtree{k}", rng.choice([GROUND, *nodes[:k]]), node, 1e3 * size(rng, 4))
+            made.add_resistor(f"Rtree{k}", rng.choice([GROUND, *nodes[:k]]), node, 1e3 * size(rng, 2))
         made.add_current_source(
             "Idrive", GROUND, nodes[0], ac=rng.uniform(0.5, 2), ac_phase=rng.uniform(0, 360)
         )
@@ -304,18 +308,28 @@ def solvable_circuit(rng: random.Random) -> Circuit:
             require_solvable(made)
         except UnsolvableError:
             continue
-        sweep = Sweep(10.0 ** rng.randint(-2, 3), 10.0 ** rng.randint(4, 7), rng.randint(2, 6))
+        sweep = Sweep(10.0 ** rng.randint(1, 3), 10.0 ** rng.randint(5, 7), rng.randint(2, 6))
         return Circuit(made, analyses=Analyses(ac=sweep), options={"noopac": ""})
 
 
 def assert_agrees(circuit: Circuit, ran: Any, names: Names | None = None) -> float:
-    """Ngspice's values are ours at every node, within what its rounding explains; the largest difference."""
+    """The voltages of ngspice are ours at every node; returns the largest difference, a share of the value.
+
+    Within what its rounding explains, or a thousand-millionth of the greatest voltage: where voltage sources
+    tie nodes together it loses digits now and then (see `rcnet.compare.allowance`).
+    """
     assert ran.code == 0, ran.log
     assert ran.curves is not None, ran.log
     found = compare(circuit, ran.curves, names)
     told = {curve.name for curve in found.curves if curve.analysis == "ac"}
     assert told >= {f"v({node})" for node in circuit.network.nodes[1:]}
-    assert found.verdict == "agree", [curve.worst for curve in found.curves if curve.spans]
+    for curve in found.curves:
+        if curve.spans and curve.name.startswith("v("):
+            node = curve.name[2:-1]
+            other = ran.curve(f"v({(names.nodes[node] if names else node).lower()})")
+            exact = response(circuit.network, other.axis, list(circuit.network.nodes[1:]))
+            mine = exact[circuit.network.node_index(node) - 1]
+            assert np.abs(other.values - mine).max() <= 1e-9 * np.abs(exact).max(), curve.worst
     return max(curve.worst.relative for curve in found.curves)
 
 
@@ -326,12 +340,52 @@ SAMPLE = 80
 def test_ngspice_says_of_the_text_what_we_say(ngspice: Callable[..., Any]) -> None:
     """The ac answer on the written text, names and all, is the exact response of the network."""
     worst = []
-    for number in range(SAMPLE):
-        circuit = solvable_circuit(random.Random(f"round trip {number}"))
+    for seed in range(SAMPLE):
+        circuit = solvable_circuit(random.Random(f"round trip {seed}"))
         written = write(circuit)
         worst.append(assert_agrees(circuit, ngspice(written.text), written.names))
     # The bound follows from the network; most of these are benign.
     assert sum(each < 1e-9 for each in worst) >= 0.8 * SAMPLE, sorted(worst)
+
+
+WORDS = (
+    "time",
+    "frequency",
+    "hertz",
+    "value",
+    "table",
+    "ac",
+    "dc",
+    "all",
+    "poly",
+    "tran",
+    "end",
+    "pi",
+    "v",
+    "0.0",
+)
+
+
+@pytest.mark.ngspice
+@pytest.mark.parametrize(
+    "word",
+    [*WORDS, "temper"],
+)
+def test_no_word_stops_ngspice(ngspice: Callable[..., Any], word: str) -> None:
+    """A node called like a word of a simulator's own is written so that ngspice gives its voltage."""
+    made = Network("Flow meter")
+    made.add_voltage_source("V1", word, GROUND, ac=1, sine={"amplitude": 1, "frequency": 1e3})
+    made.add_resistor("R1", word, "b", 1e3)
+    made.add_resistor("R2", GROUND, "b", 1e3)
+    made.add_voltage_controlled_voltage_source("E1", "c", GROUND, GROUND, word, 2.0)
+    made.add_resistor("R3", "c", GROUND, 1e3)
+    analyses = Analyses(Sweep(10.0, 1e3, 1), TransientRun(1e-3, 1e-5), operating_point=True)
+    written = write(Circuit(made, analyses=analyses))
+    ran = ngspice(written.text)
+    assert ran.code == 0, ran.log
+    for analysis in ("ac", "transient", "operating point"):
+        assert len(ran.curve(f"v({written.names.nodes[word].lower()})", analysis)) > 0
+    assert ran.curve("v(c)").values[0] == pytest.approx(-2)
 
 
 # ---------------------------------------------------------------------- hierarchical netlists
@@ -381,19 +435,20 @@ def hierarchical(rng: random.Random) -> str:
     nodes = ["in", "Mid", "out"]
     body = ["V1 in 0 DC 1 AC 1"]
     for k, (here, there) in enumerate(pairwise(nodes)):
+        index = rng.randrange(count)
         extra = rng.choice(("", f" r={number(rng, 1e3)}", f" c={number(rng, 1e-9)}", " m=2"))
-        # A sensed current within a multiplied block is not read, and ngspice 39 gets coupled inductors wrong.
-        if extra == " m=2" and re.search(r"'[FK]1", str(blocks)):
+        # Where such lines stand within a multiplied block, ngspice 39 does not do as it is told.
+        if extra == " m=2" and any(line[0] in "FKX" for line in blocks[index]):
             extra = ""
-        body.append(f"X{k} {here.upper()} {there} s{rng.randrange(count)}{extra}")
+        body.append(f"X{k} {here.upper()} {there} s{index}{extra}")
     body.append(f"RL out 0 {number(rng, 1e4)}")
     rng.shuffle(blocks)
     lines += [*(line for block in blocks[:1] for line in block), *body]
     lines += [line for block in blocks[1:] for line in block]
-    return "\n".join([*lines, ".options noopac", ".ac dec 3 10 100k", ".print ac v(OUT)", ".end", ""])
+    return "\n".join([*lines, ".options noopac", ".ac dec 4 10 10k", ".print ac v(OUT)", ".end", ""])
 
 
-@settings(max_examples=300, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+@settings(max_examples=200, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 @given(st.randoms(use_true_random=False))
 def test_a_hierarchical_netlist_written_flat_is_the_same(rng: random.Random) -> None:
     """What was read from subcircuits, written flat and read again, is isomorphic and the same to the bit."""
@@ -411,7 +466,7 @@ def test_a_hierarchical_netlist_written_flat_is_the_same(rng: random.Random) -> 
 def test_ngspice_says_the_same_of_the_blocks_and_of_the_flat_text(
     ngspice: Callable[..., Any], seed: int
 ) -> None:
-    """Ngspice's own expansion of the subcircuits, and what was written flat, have our response."""
+    """The subcircuits as ngspice itself expands them, and what was written flat, have our response."""
     text = hierarchical(random.Random(f"blocks {seed}"))
     circuit = parse_netlist(text, "blocks.cir")
     written = write(circuit)

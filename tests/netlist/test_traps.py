@@ -203,6 +203,11 @@ def aborts(ran: Ran) -> None:
     assert ran.code < 0
 
 
+def fails(ran: Ran) -> None:
+    """It crashes, or says something about a syntax that is not there."""
+    assert ran.code
+
+
 def touches(ran: Ran) -> None:
     """A file is there that the netlist named."""
     assert ran.files & {"touched", "touched.data"}
@@ -270,6 +275,7 @@ def with_parameter(text: str, value: str, code: str, severity: str, line: int) -
 SUB = ".subckt s a b r=1k\nRs a b {r}\n.ends\n"
 INNER = ".subckt s a b\nRq a b 7k m=2\n.ends\n"
 FAILS = "measure-fails"
+COUPLED = ".subckt s a b\nL1 a 0 1m\nL2 b 0 2m\nK1 L1 L2 0.4\n.ends\n"
 READS_FILE = 'a1 [x] fs\n.model fs filesource (file="a.txt" amploffset=[0] amplscale=[1])\n'
 COMMANDS = ".control\necho hello > touched\n.endc\n"
 
@@ -516,6 +522,9 @@ NAMES = {
         "warning",
         3,
     ),
+    "node called temper": Trap(
+        f"{V}R1 in temper 1k\nR2 temper 0 1k\n{OP}", fails, "vanishing-name", "error", 3
+    ),
     "node inside a subcircuit": Trap(
         f"{V}X1 in out s\n.subckt s a b\nR1 a mid 1k\nR2 mid b 1k\n.ends\nR3 out 0 1k\nR4 X1.mid 0 1k\n{OP}",
         gives(0.2),
@@ -566,16 +575,45 @@ STRUCTURE = {
     "m= within m=": Trap(
         f"{V}R1 in out 1k\n{INNER}X1 out 0 s m=3\n{OP}",
         like(f"{V}R1 in out 1k\nRq out 0 7k m=3\n{OP}"),
-        "multiplier-nested",
-        "error",
+        None,
+        "refused",
+        5,
+    ),
+    "X within m=": Trap(
+        f"{D}{SUB}.subckt u a b\nX3 a b s r=7k\n.ends\nX1 out 0 u m=3\n{OP}",
+        like(f"{D}Rq out 0 7k\n{OP}"),
+        None,
+        "refused",
+        8,
+    ),
+    "coupled inductors within m=": Trap(
+        f"{D}{COUPLED}X1 out b s m=2\nR2 b 0 50\n{AC}",
+        # Twice the parts have half the inductances; the mutual one stays as it was: k is twice as great.
+        like(f"{D}L1 out 0 0.5m\nL2 b 0 1m\nK1 L1 L2 0.8\nR2 b 0 50\n{AC}"),
+        None,
+        "refused",
+        7,
+    ),
+    "coupled inductors with m=": Trap(
+        f"{D}L1 out 0 1m m=2\nL2 b 0 2m m=2\nK1 L1 L2 0.4\nR2 b 0 50\n{AC}",
+        like(f"{D}L1 out 0 0.5m\nL2 b 0 1m\nK1 L1 L2 0.8\nR2 b 0 50\n{AC}"),
+        None,
+        "refused",
+        6,
+    ),
+    "sensed current within m=": Trap(
+        f"{D}.subckt s a b\nRq a x 7k\nVs x b 0\nF1 a b Vs 1\n.ends\nX1 out 0 s m=2\n{OP}",
+        like(f"{D}Rq out x 3.5k\nVs x 0 0\nF1 out 0 Vs 2\n{OP}"),
+        "unreadable",
+        "refused",
         7,
     ),
     "X with m= within m=": Trap(
         f"{D}{INNER.replace(' m=2', '')}.subckt u a b\nX3 a b s m=2\n.ends\nX1 out 0 u m=3\n{OP}",
         like(f"{V}R1 in out 1k\nRq out 0 7k m=3\n{OP}"),
-        "multiplier-nested",
-        "error",
-        10,
+        None,
+        "refused",
+        8,
     ),
     "parameter defined twice": with_parameter(
         ".param a=1k\n.param a=3k", "3k", "duplicate-parameter", "warning", 4
@@ -623,7 +661,11 @@ STRUCTURE = {
         4,
     ),
     "source that says DC and no number": Trap(
-        f"{T}V1 in 0 DC PWL(0 1 1m 2)\nR1 in out 1k\nR2 out 0 1k\n{OP}", gives(0), "unreadable", "refused", 2
+        f"{T}V1 in 0 DC PWL(0 1 1m 2)\nR1 in out 1k\nR2 out 0 1k\n{OP}",
+        gives(0),
+        "dc-without-number",
+        "warning",
+        2,
     ),
     "resistor at every node": Trap(
         f"{D}R2 out 0 1k\n.options rshunt=1k\n{OP}",
@@ -931,11 +973,6 @@ SOUND: dict[str, tuple[str, str]] = {
         f"{T}V1 in 0 PULSE(0,5,0,1u,1u,1m,2m)\nR1 in out 1k\nC1 out 0 1u\n.tran 10u 9m\n.end\n",
         "card-comma",
     ),
-    "m= handed down": (
-        f"{D}.subckt s a b m=1\nRq a b 7k m={{m*2}}\n.ends\nX1 out 0 s m=3\n{OP}",
-        "multiplier-nested",
-    ),
-    "m= beside another": (f"{D}{INNER}X1 out 0 s\nR3 out 0 1k m=2\n{OP}", "multiplier-nested"),
     "currents that are kept": (f"{RC}.save v(out) i(v1)\n.ac dec 10 10 10k\n.end\n", "printed-absent"),
     "current through a probe": (f"{RC}.probe i(r1)\n.ac dec 10 10 10k\n.end\n", "printed-absent"),
     "node of a subcircuit": (
