@@ -14,10 +14,9 @@ Errors
 
 from __future__ import annotations
 
-import importlib
-import sys
-from types import ModuleType
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
+
+from .lazily import hand_out
 
 if TYPE_CHECKING:
     from .api import compare, write_netlist
@@ -90,26 +89,4 @@ __all__ = [
 ]
 
 
-class _Package(ModuleType):
-    """The package, in which a public function keeps its name from a room or a module called the same."""
-
-    def __setattr__(self, name: str, value: Any) -> None:
-        # Python puts rcnet/compare into the package as `compare` once anything has imported it.
-        if name not in _HOMES or not isinstance(value, ModuleType):
-            super().__setattr__(name, value)
-
-
-sys.modules[__name__].__class__ = _Package
-
-
-def __getattr__(name: str) -> Any:
-    home = _HOMES.get(name)
-    if home is None:
-        raise AttributeError(f"module 'rcnet' has no attribute {name!r}")
-    value = getattr(importlib.import_module(f".{home}", __name__), name)
-    globals()[name] = value
-    return value
-
-
-def __dir__() -> list[str]:
-    return sorted({*globals(), *__all__})
+hand_out(__name__, _HOMES)

@@ -11,7 +11,6 @@ from ..errors import RcnetError, UndecidedError
 from ..values import format_quantity
 from .measures import evaluate
 from .strain import Strain, driven, most_volts
-from .time_measures import ends_of
 
 MOST_PARTS = 5000
 # Limits commonly quoted, not checked against the standards' own text: extra-low voltage, IEC 61140 and
@@ -104,6 +103,8 @@ def _looked(network: Network) -> tuple[list[_Alarm], list[_Store]]:
         # What stores charge and what drives first: beyond a number, a waveform takes long to follow.
         order = {"C": 0, "V": 1, "I": 1}
         parts = sorted(parts, key=lambda part: order.get(part.kind, 2))[:_MOST_PAIRS]
+    from .time_measures import ends_of
+
     pairs = [ends_of(network, part.name) for part in parts]
     named = [(_across(part), part.name) for part in parts]
     for node, part in _nodes(network, {pair for pair in pairs if 0 in pair}):

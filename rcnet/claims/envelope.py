@@ -112,7 +112,7 @@ def _climbed(network: Network, box: Box, starts: Float, points: Float, of: str, 
     def level(places: Float, who: npt.NDArray[np.int64]) -> Float:
         return np.maximum(sign * decibels(answer(box.values(places), s[who])), -_SILENCE)
 
-    return climb(level, starts, _ROUNDS)[1]
+    return climb(level, starts, _ROUNDS, rivals=False)[1]
 
 
 def _at_own_frequency(network: Network, box: Box, of: str) -> Callable[[Float, Complex], Complex]:

@@ -14,7 +14,6 @@ from ..errors import CircuitError, RcnetError, UndecidedError
 from ..values import format_quantity
 from .box import Box, box_of
 from .strain import Float, Strain, driven, most_volts, once
-from .time_measures import ends_of
 
 Quantity = Literal["power", "peak voltage", "rms current"]
 Method = Literal["nominal", "corners", "proven", "searched"]
@@ -136,6 +135,8 @@ class _Bench:
         found = np.full(len(self.gauges), np.nan)
         self.why = {}
         plain = [k for k, gauge in enumerate(self.gauges) if gauge.part.name not in self.metered]
+        from .time_measures import ends_of
+
         self._read(network, plain, [ends_of(network, self.gauges[k].part.name) for k in plain], found)
         rows = [k for k, gauge in enumerate(self.gauges) if gauge.part.name in self.metered]
         if rows:

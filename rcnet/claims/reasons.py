@@ -16,10 +16,10 @@ from ..exact import driving_sources, node_pair
 from .idealised import Split, altered, buffered, splits
 from .measures import evaluate
 from .profile import profile
+from .question import options_at
 from .reason_words import Words
 from .related_measures import related
 from .time_measures import TIME_MEASURES
-from .question import options_at
 from .trials import Change, Gap, Hit, Kind
 
 MOST_PARTS = 60

@@ -126,18 +126,22 @@ def _modelled(places: Float, values: Float, sign: float) -> Float:
     return np.asarray(tops[int(np.argmax(heights))])
 
 
-def climb(function: Function, starts: Float, rounds: int = 100) -> tuple[Float, Float]:
+def climb(
+    function: Function, starts: Float, rounds: int = 100, *, rivals: bool = True
+) -> tuple[Float, Float]:
     """Climb from every start: the places reached, (climbers, dimensions), and the heights, (climbers,).
 
     Each round tries a step up and down every coordinate, then all the steps that helped together. A climber
     whose round gains nothing takes shorter steps; the first ones reach from face to face, so that no single
-    part at its other limit does better in the end.
+    part at its other limit does better in the end. rivals: True where all climb the same function, so that
+    one who comes to where another stands may stop.
     """
     places, count = starts.copy(), len(starts)
     heights = function(places, np.arange(count))
     steps, spread_seen = np.ones(count), 0.0
     for _ in range(rounds):
-        steps = np.where(_meets_another(places, heights), 0.0, steps)
+        if rivals:
+            steps = np.where(_meets_another(places, heights), 0.0, steps)
         active = np.flatnonzero(steps >= _FINEST)
         if not len(active):
             break

@@ -4,14 +4,17 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 import numpy.typing as npt
 
+from .. import exact  # its rooms load when they are used: most circuits need none of them here
 from ..circuit import Exponential, Network, Points, Sine, Source, Step, Waveform
 from ..errors import RcnetError, UndecidedError
-from ..exact import natural_frequencies, operating_point, output_impedance, span_of, transient
-from ..exact.periodic import Periodic, periodic_pairs, repeats, settled_values
+
+if TYPE_CHECKING:
+    from ..exact import Periodic
 
 Float = npt.NDArray[np.float64]
 Pair = tuple[int, int]
@@ -49,12 +52,14 @@ class Strain:
 
     def _before(self) -> None:
         if any(source.operating_value for source in self.network.sources.values()):
-            volts = np.array([0.0, *operating_point(self.network).values()])
+            volts = np.array([0.0, *exact.operating_point(self.network).values()])
             self.rests.append(np.array([volts[a] - volts[b] for a, b in self.pairs]))
         else:
             self.rests.append(np.zeros(len(self.pairs)))
 
     def _after(self) -> None:
+        from ..exact.periodic import periodic_pairs, repeats, settled_values
+
         if repeats(self.network):
             self.periodic = periodic_pairs(self.network, self.pairs)
         elif once(self.network):
@@ -121,7 +126,7 @@ def most_volts(network: Network) -> float:
         elif low or high:
             nodes = (network.node_index(source.nodes[0]), network.node_index(source.nodes[1]))
             try:
-                seen = abs(complex(output_impedance(network, np.zeros(1), nodes)[0]))
+                seen = abs(complex(exact.output_impedance(network, np.zeros(1), nodes)[0]))
             except RcnetError:
                 return math.inf
             total += grown * max(abs(low), abs(high)) * seen
@@ -163,13 +168,13 @@ def _extremes(network: Network, pairs: Sequence[Pair]) -> Float:
 
 
 def _highest(network: Network, texts: list[str], times: Float) -> Float:
-    size = np.abs(transient(network, times, texts))
+    size = np.abs(exact.transient(network, times, texts))
     best, places, last = size.max(axis=1), size.argmax(axis=1), len(times) - 1
     low, high = times[np.maximum(places - 1, 0)], times[np.minimum(places + 1, last)]
     rows, shares = np.arange(len(texts)), np.linspace(0, 1, _ZOOMED)
     for _ in range(_ZOOMS):  # each pair's own surroundings, all of them at once
         near = low[:, None] + (high - low)[:, None] * shares
-        every = np.abs(transient(network, near.ravel(), texts)).reshape(len(texts), *near.shape)
+        every = np.abs(exact.transient(network, near.ravel(), texts)).reshape(len(texts), *near.shape)
         size = every[rows, rows]
         best, places = np.maximum(best, size.max(axis=1)), size.argmax(axis=1)
         low, high = near[rows, np.maximum(places - 1, 0)], near[rows, np.minimum(places + 1, _ZOOMED - 1)]
@@ -179,10 +184,10 @@ def _highest(network: Network, texts: list[str], times: Float) -> Float:
 def _times(network: Network) -> Float:
     """Times at which voltages are looked at: dense after every corner, and just before each."""
     corners = sorted({time for wave in _once(network) for time in _corners(wave) if math.isfinite(time)})
-    span = span_of(network)
+    span = exact.span_of(network)
     each = min(max(_MOST_TIMES // max(len(corners), 1), _PER_EVENT[0]), _PER_EVENT[1])
     after = np.geomspace(1e-3 / span.high, _GONE / span.low, each)
-    ringing = [p for p in natural_frequencies(network) if p.real < 0 and abs(p.imag) > 0.02 * abs(p)]
+    ringing = [p for p in exact.natural_frequencies(network) if p.real < 0 and abs(p.imag) > 0.02 * abs(p)]
     swings = [np.arange(1, 1 + min(each, 24 * 20)) * (2 * math.pi / (24 * abs(p.imag))) for p in ringing[:8]]
     found = [np.zeros(1)]
     for corner, following in zip(corners, [*corners[1:], math.inf], strict=True):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
@@ -11,8 +12,9 @@ import numpy as np
 import numpy.typing as npt
 
 from ..circuit import Bound, Circuit, Claim
+from ..errors import UndecidedError
 from .box import Box
-from .question import About, Ends, Question
+from .question import About, Ends, Question, options_at
 
 Float = npt.NDArray[np.float64]
 
@@ -61,7 +63,8 @@ def bounds(circuit: Circuit, about: About) -> ToleranceBounds:
     limiting = question.limiting(found, bound)
     needed = None
     if limiting is not None and bound is not None and found.margin(bound) < 0:
-        needed = _needed(question, found, bound, limiting)
+        with contextlib.suppress(UndecidedError):
+            needed = _needed(question, found, bound, limiting)
     return ToleranceBounds(
         found.low,
         found.high,
@@ -100,9 +103,9 @@ def _needed(question: Question, found: Ends, bound: Bound, part: str) -> float |
     wide = max(tolerance.high, -tolerance.low)
     share = _largest(margin)
     for _ in range(4):
-        share = _rounded_down(share * wide) / wide
         if share < _SMALLEST_SHARE:
             return None
+        share = _rounded_down(share * wide) / wide
         # The worst corner may be another one now.
         if question.narrowed(part, share).answer().margin(bound) >= 0:
             return _rounded_down(share * wide * (1 + 1e-12))
@@ -134,4 +137,4 @@ def _rounded_down(value: float) -> float:
     return math.floor(value * 10.0**digits * (1 + 1e-12)) / 10.0**digits
 
 
-__all__ = ["ToleranceBounds", "bounds", "is_proven"]
+__all__ = ["ToleranceBounds", "bounds", "is_proven", "options_at"]

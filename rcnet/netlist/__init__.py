@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-import importlib
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
+from ..lazily import hand_out
 from .names import Names, folded, safe_names
 from .round_trip import differences, read_same
 from .seal import DESPITE_ERRORS, digest, find_seal, seal_comments
@@ -56,10 +56,4 @@ __all__ = [
 ]
 
 
-def __getattr__(name: str) -> Any:
-    home = _LATE.get(name)
-    if home is None:
-        raise AttributeError(f"module 'rcnet.netlist' has no attribute {name!r}")
-    value = getattr(importlib.import_module(f".{home}", __name__), name)
-    globals()[name] = value
-    return value
+hand_out(__name__, _LATE)

@@ -21,7 +21,7 @@ _COMMAND_TITLE = re.compile(r"\s*(\*#|\*ng_script|\.control|\.inc|\.lib)", re.IG
 # Commands that reach beyond the simulation: other programs, other files, native code.
 _REACHING = re.compile(
     r"^\s*(?:shell|system|codemodel|pre_\w+|use|cd|chdir|source|load|write\w*|wr\w+|hardcopy|snsave|snload|"
-    r"rusage|echo|set\s+\w*(?:path|dir|shell|unixcom|editor)\w*|osdi|edit|quit|exec|alias|aspice|rspice|jobs)\b"
+    r"set\s+\w*(?:path|dir|shell|unixcom|editor)\w*|osdi|edit|alias|aspice|rspice|jobs)\b"
     r"|^\s*!|[>`|]",
     re.IGNORECASE,
 )
