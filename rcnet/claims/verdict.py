@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
 from ..circuit import Circuit, Claim
 from ..errors import RcnetError, UndecidedError
 from ..values import Tolerance, format_quantity
 from .measures import evaluate
-from .question import options_at, values_text
-from .tolerance import ToleranceBounds, bounds, is_proven
+
+if TYPE_CHECKING:
+    from .samples import SampleResult
+    from .tolerance import ToleranceBounds
 
 Verdict = Literal["holds", "fails", "undecided"]
 
@@ -66,7 +69,7 @@ def judge(circuit: Circuit, *, samples: int | None = None, seed: int = 1) -> tup
 
 def _judge(circuit: Circuit, claim: Claim, samples: int | None, seed: int) -> ClaimResult:
     hand, hand_why = _hand(circuit, claim)
-    options = options_at(claim.measure.name, claim.options, circuit.conditions.nominal)
+    options = _options(circuit, claim)
     exact = None
     try:
         exact = evaluate(circuit.network, claim.measure.name, " ".join(claim.of) or None, options)
@@ -87,17 +90,34 @@ def _judge(circuit: Circuit, claim: Claim, samples: int | None, seed: int) -> Cl
     return ClaimResult(claim, exact, hand, "fails", claim.bound.margin(exact), why=why, hand_why=hand_why)
 
 
+def _options(circuit: Circuit, claim: Claim) -> Mapping[str, float | str]:
+    """The claim's options; thermal noise is that of the circuit's own temperature."""
+    if claim.measure.name != "noise":
+        return claim.options
+    from .question import options_at
+
+    return options_at(claim.measure.name, claim.options, circuit.conditions.nominal)
+
+
 # ---------------------------------------------------------------------- over the tolerances
 
 
 def _over_tolerance(
     circuit: Circuit, claim: Claim, exact: float, samples: int | None, seed: int
 ) -> ClaimResult:
+    # The search and the proofs load where a claim asks for them.
+    from .tolerance import bounds, is_proven
+
     if samples is not None and not is_proven(circuit, claim):
         return _sampled(circuit, claim, exact, samples, seed)
     found = bounds(circuit, claim)
     margin = found.margin(claim.bound)
     verdict: Verdict = "holds" if margin >= 0 else "fails"
+    why = [] if verdict == "holds" else [_why(circuit, claim, found)]
+    if samples is not None:
+        from .samples import sample
+
+        why.append(_yield_told(sample(circuit, claim, samples, seed), claim.measure.unit))
     return ClaimResult(
         claim,
         exact,
@@ -107,7 +127,7 @@ def _over_tolerance(
         found.low,
         found.high,
         found.method,
-        _why(circuit, claim, found) if verdict == "fails" else None,
+        " ".join(why) or None,
         limiting=found.limiting,
         needed=found.needed,
     )
@@ -119,6 +139,8 @@ def _why(circuit: Circuit, claim: Claim, found: ToleranceBounds) -> str:
     worst, at = (found.low, found.low_at) if below else (found.high, found.high_at)
     text = f"{'Down' if below else 'Up'} to {format_quantity(worst, claim.measure.unit)}"
     if at:
+        from .question import values_text
+
         text += f" at {values_text(circuit, at)}"
     if found.limiting is None:
         return f"{text}."
@@ -141,7 +163,15 @@ def _sampled(circuit: Circuit, claim: Claim, exact: float, count: int, seed: int
 
     found = sample(circuit, claim, count, seed)
     low, high = found.quantile(0.0), found.quantile(1.0)
-    sure, unit = found.interval, claim.measure.unit
+    verdict: Verdict = "holds" if found.met == found.count else "fails"
+    margin = min(claim.bound.margin(low), claim.bound.margin(high))
+    told = _yield_told(found, claim.measure.unit)
+    return ClaimResult(claim, exact, None, verdict, margin, low, high, "sampled", told)
+
+
+def _yield_told(found: SampleResult, unit: str) -> str:
+    """The yield of samples, how sure it is, and where most of them lie."""
+    sure = found.interval
     why = (
         f"{found.met} of {found.count} samples meet it: a yield of {_share(found.yield_)},"
         f" with 95 % confidence {_share(sure[0])} to {_share(sure[1])};"
@@ -150,9 +180,7 @@ def _sampled(circuit: Circuit, claim: Claim, exact: float, count: int, seed: int
     )
     if found.undefined:
         why += f" For {found.undefined} of them the measure does not exist."
-    verdict: Verdict = "holds" if found.met == found.count else "fails"
-    margin = min(claim.bound.margin(low), claim.bound.margin(high))
-    return ClaimResult(claim, exact, None, verdict, margin, low, high, "sampled", why)
+    return why
 
 
 def _share(share: float) -> str:

@@ -63,7 +63,8 @@ def _more(result: ClaimResult) -> list[str]:
     """The range over the tolerances, and why the verdict is as it is, a sentence each."""
     told = []
     if result.low is not None and result.high is not None:
-        told.append(f"over tolerance {range_over_tolerance(result)}, {result.method}")
+        most = f"; {result.limiting} moves it most" if result.limiting and result.verdict == "holds" else ""
+        told.append(f"over tolerance {range_over_tolerance(result)}, {result.method}{most}")
     if result.why:
         told.append(result.why)
     return told

@@ -104,6 +104,8 @@ def claim_document(result: ClaimResult) -> dict[str, Any]:
         "margin": result.margin,
         "verdict": result.verdict,
         "why": result.why,
+        "limiting": result.limiting,
+        "needed": result.needed,
     }
 
 

@@ -352,6 +352,12 @@ def test_a_claim_that_no_single_part_can_save() -> None:
     assert "no tolerance of that part alone" in got.why
 
 
+def test_an_exact_part_is_no_tolerance_to_ask_for() -> None:
+    """Where only an exact C1 would do, no tolerance is named."""
+    got = judged(f'measure = "cutoff"\nat_least = {CORNER / 1.01 * (1 - 1e-12)}')
+    assert (got.verdict, got.limiting, got.needed) == ("fails", "C1", None)
+
+
 def test_both_ends_count() -> None:
     """A claim of a value within a share fails at either end; the tolerance needed mends both."""
     got = judged(f'measure = "cutoff"\nequals = {CORNER}\nwithin = "3 %"')
@@ -443,6 +449,22 @@ def test_envelope_around_a_notch() -> None:
     rng = np.random.default_rng(5)
     sides = np.concatenate([rng.uniform(-1, 1, (5000, 4)), list(itertools.product((-1.0, 1.0), repeat=4))])
     level = np.stack([NOTCH.decibels(NOTCH.at(sides), 2 * math.pi * f) for f in frequency], axis=1)
+    assert (lower <= level.min(axis=0) + 1e-9).all()
+    assert (upper >= level.max(axis=0) - 1e-9).all()
+    assert (upper - lower <= 1.02 * np.ptp(level, axis=0)).all()
+
+
+def test_envelope_of_many_parts() -> None:
+    """Twelve parts in three sections with dead ends: nowhere does one of the 4096 corners lie outside."""
+    parts: list[Part] = []
+    for k, (here, there) in enumerate([("in", "a"), ("a", "b"), ("b", "out")]):
+        parts += [(f"R{k}", here, there, 1e3 * (k + 1), 0.01), (f"C{k}", there, "0", 10e-9, 0.1)]
+        parts += [(f"Rx{k}", there, f"x{k}", 2e3, 0.05), (f"Cx{k}", f"x{k}", "0", 22e-9, 0.2)]
+    plain = Plain(parts)
+    frequency = np.geomspace(100, 1e5, 7)
+    lower, upper = response_envelope(plain.network(), frequency, "out")
+    values = plain.at(np.array(list(itertools.product((-1.0, 1.0), repeat=12))))
+    level = np.stack([plain.decibels(values, 2 * math.pi * f) for f in frequency], axis=1)
     assert (lower <= level.min(axis=0) + 1e-9).all()
     assert (upper >= level.max(axis=0) - 1e-9).all()
     assert (upper - lower <= 1.02 * np.ptp(level, axis=0)).all()

@@ -160,13 +160,12 @@ def test_noise_is_that_of_the_circuits_temperature() -> None:
 
 
 def test_claim_over_tolerances() -> None:
-    """Over tolerances, a claim that fails at the nominal values fails; one that holds there is undecided."""
+    """Parts without a tolerance do not move: the range is the nominal value, and it is proven."""
     fails = result('measure = "cutoff"\nat_least = "2 kHz"\nover = "tolerance"')
     assert fails.verdict == "fails"
     holds = result('measure = "cutoff"\nat_least = "1 kHz"\nover = "tolerance"')
-    assert holds.verdict == "undecided"
-    assert holds.why is not None
-    assert "tolerances" in holds.why
+    assert (holds.verdict, holds.method, holds.why) == ("holds", "proven", None)
+    assert holds.low == holds.high == holds.exact
 
 
 def test_overall() -> None:
