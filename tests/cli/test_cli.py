@@ -171,7 +171,7 @@ def test_check_document(rcnet: Rcnet) -> None:
     for claim in (holds, undecided):
         assert set(claim) == {
             *("says", "measure", "of", "unit", "exact", "hand", "low", "high"),
-            *("method", "margin", "verdict", "why"),
+            *("method", "margin", "verdict", "why", "limiting", "needed"),
         }
     assert (holds["says"], holds["measure"], holds["of"], holds["unit"]) == ("Corner", "cutoff", "out", "Hz")
     assert holds["exact"] == pytest.approx(1591.549430918953, rel=1e-12)
