@@ -4,10 +4,11 @@ Everyday names
   Network               a network built part by part; its methods answer for it
   load                  read a circuit file or a netlist
   check                 findings and verdicts
+  derive                the transfer function, poles and zeros, and what rules of thumb make of them
   write_netlist, read_netlist, read_results, compare
 Building blocks
   Circuit               a network with what is asked and claimed of it
-  Comparison, Curve, Curves, Finding
+  Comparison, Curve, Curves, Derivation, Finding
 Errors
   RcnetError and its kinds, see `rcnet.errors`
 """
@@ -24,6 +25,7 @@ if TYPE_CHECKING:
     from .circuit import Circuit, Network
     from .compare import Comparison
     from .curves import Curve, Curves, read_results
+    from .derive import Derivation, derive
     from .errors import (
         CircuitError,
         InputError,
@@ -46,6 +48,7 @@ _HOMES = {
     "Comparison": "compare",
     "Curve": "curves",
     "Curves": "curves",
+    "Derivation": "derive",
     "Finding": "findings",
     "InputError": "errors",
     "Network": "circuit",
@@ -58,6 +61,7 @@ _HOMES = {
     "UnsolvableError": "errors",
     "check": "check",
     "compare": "api",
+    "derive": "derive",
     "load": "loading",
     "read_netlist": "netlist",
     "read_results": "curves",
@@ -70,6 +74,7 @@ __all__ = [
     "Comparison",
     "Curve",
     "Curves",
+    "Derivation",
     "Finding",
     "InputError",
     "Network",
@@ -82,6 +87,7 @@ __all__ = [
     "UnsolvableError",
     "check",
     "compare",
+    "derive",
     "load",
     "read_netlist",
     "read_results",

@@ -15,6 +15,7 @@ import numpy.typing as npt
 from ..circuit import MEASURES, Network, measure_spec, parse_options
 from ..errors import UndecidedError
 from ..exact import (
+    dc_solvable,
     input_impedance,
     limit,
     node_pair,
@@ -314,9 +315,27 @@ def elmore_delay(network: Network, of: Pair, options: Options) -> float:
     if limit(network, of, high=False) == 0:
         _refuse_silence(network, of)
         raise UndecidedError("nothing passes at dc, so the impulse response has no area to divide by.")
+    if ord("I") in network.arrays().kinds and not dc_solvable(network):
+        return _delay_near_zero(network, of)
     value, slope = response_and_slope(network, np.zeros(1), of)
     _refuse_underflow(value)
     return -float((slope[0] / value[0]).real)
+
+
+def _delay_near_zero(network: Network, of: Pair) -> float:
+    """The delay where some voltage grows without bound towards dc, from two frequencies far below the modes.
+
+    At zero itself the slope would be the small difference of such voltages. -Re H'/H is even in frequency,
+    so that its value at zero follows from two others (Richardson 1911).
+    """
+    omega = span_of(network).low * np.array([1e-3, 1e-4])
+    value, slope = response_and_slope(network, omega, of)
+    _refuse_underflow(value)
+    far, near = (-(slope / value).real).tolist()
+    delay = float(near + (near - far) / 99)
+    if abs(near - far) > 1e-4 * abs(delay):
+        raise UndecidedError("the delay cannot be told from the voltages that grow without bound at dc.")
+    return delay
 
 
 # To add a measure: its line in circuit/measure_table.py, a function here (or in time_measures.py or

@@ -9,7 +9,7 @@ import click
 
 from ..errors import InputError
 from .options import OK, examples, file_argument, json_option, print_json, quiet_option, spare
-from .reading import load_asked, reading_options
+from .reading import load_asked, node_asked, reading_options
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -34,18 +34,17 @@ if TYPE_CHECKING:
     "-o", "--output", type=click.Path(), help="Write to a file; its suffix (.json, .md, .tex) says how."
 )
 def command(file: str, as_json: bool, quiet: bool, node: str | None, output: str | None) -> int:
-    """Derive the transfer function, poles and zeros, and what rules of thumb make of them."""
+    """Derive the transfer function; hold rules of thumb against it."""
     from ..derive import derive
     from ..report.derivation import show_derivation
     from ..report.derivation_document import derivation_document
     from ..report.terminal import console
     from ..system.files import write_file
-    from .response import _named as named
 
     as_text = None if output is None else _writer(output)
     spare(output, file)
     circuit = load_asked(file)
-    done = derive(circuit, None if node is None else named(circuit, node))
+    done = derive(circuit, None if node is None else node_asked(circuit, node))
     if output is not None and as_text is not None:
         write_file(output, as_text(done))
     if as_json:

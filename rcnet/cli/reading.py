@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable
 from typing import TYPE_CHECKING, Any, TypeVar
 
@@ -73,3 +74,13 @@ def load_asked(file: str) -> Circuit:
             raise InputError(f"--allow names {folder!r}, which is no folder.", remedy="Name a folder.")
     limits = raised(Limits(), asked["limit"])
     return load(file, Reading(tuple(Path(folder) for folder in asked["allow"]), asked["linear_part"], limits))
+
+
+def node_asked(circuit: Circuit, given: str) -> str:
+    """Nodes as the circuit calls them: `v(a,b)` is the pair "a b", and netlists know no case."""
+    voltage = re.fullmatch(r"\s*v\(([^()]*)\)\s*", given, re.IGNORECASE)
+    words = voltage[1].replace(",", " ").split() if voltage else given.split()
+    if circuit.origin == "netlist":
+        folded = {node.lower(): node for node in circuit.network.nodes}
+        words = [word if circuit.network.has_node(word) else folded.get(word.lower(), word) for word in words]
+    return " ".join(words) if words else given

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import re
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -10,7 +9,7 @@ import click
 
 from ..errors import InputError
 from .options import OK, examples, file_argument, json_option, print_json, spare
-from .reading import load_asked, reading_options
+from .reading import load_asked, node_asked, reading_options
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -63,7 +62,7 @@ def command(
     as_text = None if output is None else _writer(output)
     spare(output, file)
     circuit = load_asked(file)
-    named = [_named(circuit, node) for node in nodes]
+    named = [node_asked(circuit, node) for node in nodes]
     curves = _asked(circuit, named, **wanted)
     envelopes = _envelopes(circuit, named, curves) if tolerance else None
     if output is not None and as_text is not None:
@@ -165,13 +164,3 @@ def _no_points(circuit: Circuit) -> InputError:
         file=circuit.file,
         remedy="Mend it, or give --from and --to.",
     )
-
-
-def _named(circuit: Circuit, given: str) -> str:
-    """Nodes as the circuit calls them: `v(a,b)` is the pair "a b", and netlists know no case."""
-    voltage = re.fullmatch(r"\s*v\(([^()]*)\)\s*", given, re.IGNORECASE)
-    words = voltage[1].replace(",", " ").split() if voltage else given.split()
-    if circuit.origin == "netlist":
-        folded = {node.lower(): node for node in circuit.network.nodes}
-        words = [word if circuit.network.has_node(word) else folded.get(word.lower(), word) for word in words]
-    return " ".join(words) if words else given

@@ -763,3 +763,15 @@ def test_measures_of_a_part_are_plain_floats(name: str) -> None:
         got = measure(net, name, part="R2")
         assert type(got) is float
         close(got, {"peak_voltage": 0.5, "dissipation": 0.25e-3}[name], 1e-9)
+
+
+def test_elmore_delay_beside_a_voltage_that_grows_without_bound() -> None:
+    """A capacitor in series with a current source changes nothing downstream: R C3 C2/(C3 + C2)."""
+    network = Network("Flow meter: charge amplifier's test input")
+    network.add_current_source("Iin", "0", "in", ac=1)
+    network.add_capacitor("C0", "in", "c", 22e-6)
+    network.add_resistor("R4", "c", "0", 108772.0)
+    network.add_capacitor("C3", "c", "out", 13.18e-12)
+    network.add_capacitor("C2", "out", "0", 2e-9)
+    wanted = 108772.0 * 13.18e-12 * 2e-9 / (13.18e-12 + 2e-9)
+    assert network.measure("elmore_delay", of="out") == pytest.approx(wanted, rel=1e-9)
