@@ -353,6 +353,10 @@ class Assembly:
         return tuple(found)
 
 
+def _counted(count: int, noun: str) -> str:
+    return f"{count} {noun}{'s' * (count != 1)}"
+
+
 def _shown(size: int) -> str:
     return str(size) if size < 10**15 else "more than a thousand million million"
 
@@ -447,11 +451,13 @@ class Instance:
         call = self.assembly.call(line)
         inner = self.scope.subcircuit(call.of.lower())
         if inner is None:
+            if any(call.of.lower() in each.broken for each in self.scope.chain()):
+                return  # it is among the problems already
             raise self._unknown(call)
         if len(call.nodes) != len(inner.ports):
             raise CircuitError(
-                f"{call.name} connects {len(call.nodes)} nodes, but the subcircuit {call.of!r} has "
-                f"{len(inner.ports)} ports ({' '.join(inner.ports) or 'none'}).",
+                f"{call.name} connects {_counted(len(call.nodes), 'node')}, but the subcircuit {call.of!r} has "
+                f"{_counted(len(inner.ports), 'port')} ({' '.join(inner.ports) or 'none'}).",
                 remedy="Name one node for each port, in their order.",
                 code="pin-count",
             )

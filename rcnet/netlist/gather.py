@@ -13,6 +13,7 @@ from ..errors import CircuitError, InputError, Problem, RcnetError
 from ..system.files import read_bytes
 from .limits import Reading
 from .lines import Line, physical_lines
+from .refusals import unseen_character
 from .runs import Run, lines_and_runs
 
 KEPT_PROBLEMS = 1000  # of more than these only the number is kept
@@ -20,7 +21,7 @@ KEPT_PROBLEMS = 1000  # of more than these only the number is kept
 _COMMAND_TITLE = re.compile(r"\s*(\*#|\*ng_script|\.control|\.inc|\.lib)", re.IGNORECASE)
 # Commands that reach beyond the simulation: other programs, other files, native code.
 _REACHING = re.compile(
-    r"^\s*(?:shell|system|codemodel|pre_\w+|use|cd|chdir|source|load|write\w*|wr\w+|hardcopy|snsave|snload|"
+    r"^\s*(?:\*#\s*)?(?:shell|system|codemodel|pre_\w+|use|cd|chdir|source|load|write\w*|wr\w+|hardcopy|snsave|snload|"
     r"set\s+\w*(?:path|dir|shell|unixcom|editor)\w*|osdi|edit|alias|aspice|rspice|jobs)\b"
     r"|^\s*!|[>`|]",
     re.IGNORECASE,
@@ -270,6 +271,8 @@ class _Gatherer:
     ) -> None:
         if word == ".control":
             self.commands(line, source)
+        elif not line.text.isprintable():
+            raise unseen_character(line.text)
         elif word in (".include", ".inc"):
             self.include(line, folder, stack)
         elif word == ".lib":

@@ -42,13 +42,13 @@ def logical_lines(lines: Sequence[str], *, title: bool = True, file: int = 0) ->
 
     title: whether the first line is one; an included file has none
     """
-    number, pieces = 0, list[str]()
+    number, pieces, held = 0, list[str](), list[Line]()
     for count in range(1 if title else 0, len(lines)):
         line = uncommented(lines[count])
         if not line:
             continue
         if line[0] == "*":
-            yield Line(count + 1, line, file)  # as a comment it does not end the line before
+            held.append(Line(count + 1, line, file))  # as a comment it does not end the line before
             continue
         if line[0] == "+" and pieces:
             if piece := line[1:].strip(" "):
@@ -56,9 +56,11 @@ def logical_lines(lines: Sequence[str], *, title: bool = True, file: int = 0) ->
             continue
         if pieces:
             yield Line(number, pieces[0] if len(pieces) == 1 else " ".join(pieces), file)
-        number, pieces = count + 1, [line]
+        yield from held
+        number, pieces, held = count + 1, [line], []
     if pieces:
         yield Line(number, " ".join(pieces), file)
+    yield from held
 
 
 def uncommented(raw: str) -> str:

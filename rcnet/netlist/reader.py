@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
@@ -20,7 +21,7 @@ from ..circuit import (
     Subcircuit,
     circuit_name,
 )
-from ..errors import CircuitError, Problem, RcnetError
+from ..errors import CircuitError, Problem, QuantityError, RcnetError
 from ..values import parse_quantity, read_spice_number, write_spice_number
 from .assembly import Assembly, Setting
 from .cards import (
@@ -49,7 +50,7 @@ _BRACED = re.compile(r"\{(?:[^{}]|\{[^{}]*\})*\}")
 _EXPRESSION = re.compile(rf"{_BRACED.pattern}|'[^']*'")
 # Cards whose numbers may be expressions; a title may hold an apostrophe.
 _COMPUTED = frozenset(
-    [".ac", ".tran", ".noise", ".dc", ".four", ".temp", ".options", ".option", ".opt", ".ic"]
+    [".ac", ".tran", ".noise", ".dc", ".four", ".fourier", ".temp", ".options", ".option", ".opt", ".ic"]
 )
 
 
@@ -104,7 +105,7 @@ def with_parameters(circuit: Circuit, values: Mapping[str, str | float]) -> Circ
                 f"there is no parameter called {name!r}.",
                 remedy=f"Parameters here: {', '.join(circuit.parameters) or 'none'}.",
             )
-        overrides[name.lower()] = parse_quantity(value, _unit(circuit, known), name)
+        overrides[name.lower()] = _new_value(circuit, known, value)
     deck = circuit.definition
     changed = _Reader(deck, {**_overridden(circuit), **overrides}).circuit()
     # What was added to the circuit after it was read stays.
@@ -116,12 +117,22 @@ def _overridden(circuit: Circuit) -> dict[str, float]:
     return {name: each.value for name, each in circuit.parameters.items() if each.text == ""}
 
 
-def _unit(circuit: Circuit, parameter: Parameter) -> str:
-    """The unit of the parts whose value a parameter is, where they agree."""
+def _new_value(circuit: Circuit, parameter: Parameter, value: str | float) -> float:
+    """A number with the prefix and the unit of one of the parts that follow the parameter, or neither."""
     units = {
         KINDS[circuit.network.part(name).kind].unit for name in parameter.parts if name in circuit.network
-    }
-    return units.pop() if len(units) == 1 else "1"
+    } - {"1"}
+    found = None
+    for unit in (*sorted(units), "1"):
+        try:
+            found = parse_quantity(value, unit, parameter.name)
+            break
+        except QuantityError:
+            if unit == "1":
+                raise
+    if found is None or not math.isfinite(found):
+        raise CircuitError(f"{parameter.name} is {value!r}.", remedy="Give a finite number.")
+    return found
 
 
 def reads_as_part(text: str) -> bool:
@@ -170,6 +181,7 @@ class _Reader:
             self.deck.defined, self.gathered, self.deck.reading, self.shared, self.setting
         )
         network = self.assembly.assemble()
+        self.environment = self.assembly.top  # what is known there need not be computed again
         network.title = self.title
         parameters = self.parameters()
         self.check_requests()

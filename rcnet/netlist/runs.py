@@ -37,14 +37,16 @@ def lines_and_runs(lines: Sequence[str], *, title: bool, file: int) -> Iterator[
     """What `logical_lines` gives, with neighbouring plain lines gathered into runs."""
     plain = _PLAIN.fullmatch
     run = Run(file)
-    number, pieces = 0, list[str]()
+    number, pieces, held = 0, list[str](), list[Line]()
     last_is_plain = False
     for count in range(1 if title else 0, len(lines)):
         raw = lines[count]
         if (match := plain(raw)) is not None:
-            if pieces:
-                yield Line(number, " ".join(pieces), file)
-                pieces = []
+            if pieces or held:
+                if pieces:
+                    yield Line(number, " ".join(pieces), file)
+                yield from held
+                pieces, held = [], []
             run.rows.append(match.groups())  # type: ignore[arg-type]
             run.numbers.append(count + 1)
             last_is_plain = True
@@ -53,7 +55,7 @@ def lines_and_runs(lines: Sequence[str], *, title: bool, file: int) -> Iterator[
         if not line:
             continue
         if line[0] == "*":
-            yield Line(count + 1, line, file)  # as a comment it does not end the line before
+            held.append(Line(count + 1, line, file))  # as a comment it does not end the line before
             continue
         if line[0] == "+" and last_is_plain:
             # The line before goes on: it was not as plain as it looked.
@@ -68,8 +70,10 @@ def lines_and_runs(lines: Sequence[str], *, title: bool, file: int) -> Iterator[
             continue
         if pieces:
             yield Line(number, " ".join(pieces), file)
-        number, pieces = count + 1, [line]
+        yield from held
+        number, pieces, held = count + 1, [line], []
     if pieces:
         yield Line(number, " ".join(pieces), file)
+    yield from held
     if run.rows:
         yield run

@@ -53,6 +53,7 @@ class Scope:
     functions: dict[str, NetlistFunction] = field(default_factory=dict)
     models: dict[str, Model] = field(default_factory=dict)
     subcircuits: dict[str, Scope] = field(default_factory=dict)
+    broken: set[str] = field(default_factory=set)  # subcircuits whose first line cannot be read
     statements: list[Statement] = field(default_factory=list)
     cards: list[Line] = field(default_factory=list)
     uses: int = 0
@@ -88,7 +89,7 @@ def scopes_of(gathered: Gathered, limits: Limits) -> Defined:
     builder = _Builder(gathered, limits)
     for item in gathered.items:
         if isinstance(item, Run):
-            if not builder.conditions:
+            if not builder.conditions and not builder.skipped:
                 builder.here.statements.append(item)
             continue
         try:
@@ -109,6 +110,7 @@ class _Builder:
         self.global_nodes: set[str] = {"0", "gnd"}
         self.kept = 0
         self.conditions = 0  # how deep inside `.if`
+        self.skipped = 0  # how deep inside a subcircuit whose first line cannot be read
 
     def line(self, line: Line) -> None:
         if len(line.text) > self.limits.line:
@@ -121,6 +123,9 @@ class _Builder:
         word = line.text.split(" ", 1)[0].lower()
         if self.conditions or word == ".if":
             self.condition(word)
+            return
+        if self.skipped:
+            self.skipped += (word in _OPENING) - (word in _CLOSING)
             return
         if line.text[0] != ".":
             self.here.statements.append(line)
@@ -159,6 +164,16 @@ class _Builder:
     # -- subcircuits
 
     def subcircuit(self, line: Line) -> None:
+        try:
+            self.begin(line)
+        except RcnetError:
+            # What stands inside goes with it, and so does what uses it: one mistake, one message.
+            self.skipped = 1
+            if name := line.text.split()[1:2]:
+                self.here.broken.add(name[0].lower())
+            raise
+
+    def begin(self, line: Line) -> None:
         words = split_words(line.text)
         positional, defaults = assignments(words[1:])
         if not positional:
@@ -184,6 +199,7 @@ class _Builder:
         for key, text in defaults:
             _require_free(key)
             scope.defaults[key] = Definition(text, line)
+        self._look_at_ports(scope, line)
         first = self.here.subcircuits.get(name.lower())
         if first is None:
             self.here.subcircuits[name.lower()] = scope
@@ -197,7 +213,6 @@ class _Builder:
                 "Give it another name, or remove one of the two.",
                 name,
             )
-        self._look_at_ports(scope, line)
         self.here = scope
 
     def _look_at_ports(self, scope: Scope, line: Line) -> None:
@@ -332,6 +347,7 @@ def _require_free(key: str) -> None:
 # Model types that belong to linear parts -> the part's letter (measured: `cap` and `ind` are none).
 MODEL_KINDS = {"r": "R", "res": "R", "c": "C", "capacitor": "C", "l": "L", "inductor": "L"}
 
+_OPENING, _CLOSING = (".subckt", ".macro"), (".ends", ".eom")
 _CARDS: dict[str, Callable[[_Builder, Line], None]] = {
     ".subckt": _Builder.subcircuit,
     ".macro": _Builder.subcircuit,
