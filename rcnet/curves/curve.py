@@ -45,19 +45,30 @@ class Curve:
         return bool(np.iscomplexobj(self.values))
 
 
+@dataclass(frozen=True, slots=True)
+class Ports:
+    """The ports that scattering parameters are about: the reference resistance of each, ohm."""
+
+    reference: tuple[float, ...]
+
+
 @dataclass(frozen=True, eq=False)
 class Curves:
     """Every curve of one results file, in the file's order.
 
     source: the file's name, or the word for the solver that made them
     title: what the file calls itself, "" where it says nothing
-    remarks: what was assumed or passed over while reading, one sentence each
+    remarks: what was passed over while reading, or should make one look twice, one sentence each
+    assumed: how the columns of a table were read that does not say it in rcnet's own words, one clause each
+    ports: what the curves `s11`, `s21`, ... refer to; None where they are voltages and currents
     """
 
     source: str
     curves: tuple[Curve, ...]
     title: str = ""
     remarks: tuple[str, ...] = ()
+    assumed: tuple[str, ...] = ()
+    ports: Ports | None = None
 
     def __iter__(self) -> Iterator[Curve]:
         return iter(self.curves)
@@ -83,5 +94,7 @@ class Curves:
         parts = tuple(parts)
         curves = tuple(curve for part in parts for curve in part.curves)
         remarks = tuple(remark for part in parts for remark in part.remarks)
+        assumed = tuple(clause for part in parts for clause in part.assumed)
         title = next((part.title for part in parts if part.title), "")
-        return Curves(source, curves, title, remarks)
+        ports = next((part.ports for part in parts if part.ports is not None), None)
+        return Curves(source, curves, title, remarks, assumed, ports)

@@ -22,6 +22,11 @@ READ = {
     "results": RAW,
     "results.csv": CSV,
     "with a mark.csv": b"\xef\xbb\xbf" + CSV,
+    "wide.csv": CSV.decode().encode("utf-16"),
+    "results.tsv": CSV.replace(b",", b"\t"),
+    "results.txt": CSV,
+    "results.dat": CSV,
+    "RESULTS.DATA": CSV,
 }
 
 
@@ -36,10 +41,14 @@ def test_read_by_suffix_or_content(tmp_path: Path, name: str) -> None:
 
 
 REFUSED = {
-    "results.txt": (b"nothing known", "'.txt' is no suffix of a results file that is read"),
+    "results.xls": (b"nothing known", "'.xls' is no suffix of a results file that is read"),
+    "results.txt": (b"nothing known", "begins with 'nothing known', which is no axis"),
     "results": (b"", "'' is no suffix"),
-    "filter.s2p": (b"# Hz S RI R 50\n", "Touchstone files are not read yet"),
-    "filter.S1P": (b"", "Touchstone files are not read yet"),
+    "filter.s2p": (b"# Hz S RI R 50\n", "it holds no numbers"),
+    "filter.S1P": (b"", "it holds no option line"),
+    "filter.s3p": (b"", "named as a file of 3 ports"),
+    "nul.s2p": (b"# Hz\n\0", "NUL byte"),
+    "half wide.csv": (b"\xff\xfet", "begins as UTF-16, but is not"),
     "results.raw": (CSV, "not a raw file"),
     "results.csv": (RAW, "NUL byte"),
     "empty.csv": (b"", "no header row"),
@@ -57,6 +66,16 @@ def test_refused(tmp_path: Path, name: str) -> None:
         read_results(path)
     assert caught.value.file == str(path)
     assert caught.value.remedy
+
+
+def test_signs_of_older_instruments(tmp_path: Path) -> None:
+    """A degree sign or a micro in Latin-1 is read; the comments of a Touchstone file may hold anything."""
+    table = tmp_path / "pump.csv"
+    table.write_bytes("Frequency (Hz),Gain (dB),Phase (\xb0)\n1,0,90\n".encode("latin-1"))
+    np.testing.assert_allclose(read_results(table).curves[0].values, [1j], atol=1e-15)
+    port = tmp_path / "sonde.s1p"
+    port.write_bytes("! Pegelger\xe4t\n# Hz S RI R 50\n1 0.5 0.25\n".encode("latin-1"))
+    assert read_results(port).curves[0].values.tolist() == [0.5 + 0.25j]
 
 
 def test_a_file_that_is_not_there(tmp_path: Path) -> None:
