@@ -12,6 +12,7 @@ PACKAGE = Path(__file__).parents[1] / "rcnet"
 # A room may import rooms of a lower rank, and itself. DEVELOPERS.md draws the picture.
 RANKS = {
     "errors": 0,
+    "lazily": 0,
     "system": 1,
     "values": 2,
     "curves": 2,
@@ -25,9 +26,13 @@ RANKS = {
     "compare": 5,
     "opinion": 5,
     "check": 6,
+    "derive": 6,
+    "measuring": 6,
     "handover": 7,
     "answers": 8,
+    "forms": 8,
     "confirmation": 8,
+    "design": 8,
     "report": 9,
     "confirm": 10,
     "api": 11,

@@ -26,7 +26,7 @@ from .options import (
     print_json,
 )
 
-_VERBS = ("confirm", "check", "response", "netlist", "simulate", "compare", "derive", "new")
+_VERBS = ("confirm", "check", "response", "netlist", "simulate", "compare", "derive", "design", "new")
 _READER_GONE = 141  # what a shell reports for a program that wrote to a closed pipe
 
 

@@ -456,8 +456,8 @@ class Instance:
             raise self._unknown(call)
         if len(call.nodes) != len(inner.ports):
             raise CircuitError(
-                f"{call.name} connects {_counted(len(call.nodes), 'node')}, but the subcircuit {call.of!r} has "
-                f"{_counted(len(inner.ports), 'port')} ({' '.join(inner.ports) or 'none'}).",
+                f"{call.name} connects {_counted(len(call.nodes), 'node')}, but the subcircuit "
+                f"{call.of!r} has {_counted(len(inner.ports), 'port')} ({' '.join(inner.ports) or 'none'}).",
                 remedy="Name one node for each port, in their order.",
                 code="pin-count",
             )

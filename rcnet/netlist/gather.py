@@ -291,10 +291,8 @@ class _Gatherer:
         reaching = next((each for each in commands if _REACHING.search(each.text)), None)
         place = self.found.place(line)
         if reaching is None:
-            named = (
-                ", ".join(dict.fromkeys(each.text.split()[0].lower()[:20] for each in commands[:8]))
-                or "nothing"
-            )
+            first = [word[:20].lower() for each in commands[:8] for word in each.text.split()[:1]]
+            named = ", ".join(word for word in dict.fromkeys(first) if word.isprintable()) or "nothing"
             message = f"the commands of this .control section ({named}) were left out."
             remedy = "Ask for analyses with .ac, .tran, .op and .noise lines; rcnet executes nothing."
             self.found.seen.append(Seen("commands-dropped", message, remedy, place))
@@ -439,7 +437,7 @@ def _of_section(items: Iterator[Line | Run], section: str) -> list[Line | Run] |
     """What stands between `.lib section` and its `.endl`; None where there is no such section."""
     inside: list[Line | Run] | None = None
     for item in items:
-        words = item.text.split() if isinstance(item, Line) else [""]
+        words = (item.text.split() if isinstance(item, Line) else []) or [""]
         word = words[0].lower()
         if inside is None:
             if word == ".lib" and len(words) == 2 and words[1].lower().strip("'\"") == section:

@@ -12,6 +12,7 @@ from ..values import NetlistFunction, parse_netlist_function
 from .gather import Gathered
 from .limits import Limits
 from .lines import Line
+from .refusals import unseen_character
 from .runs import Run
 from .words import assignments, parameter_pairs, split_words
 
@@ -130,6 +131,10 @@ class _Builder:
         if line.text[0] != ".":
             self.here.statements.append(line)
             return
+        if "\r" in line.text:
+            return  # it is among the problems already
+        if not line.text.isprintable():
+            raise unseen_character(line.text)
         reader = _CARDS.get(word)
         if reader is not None:
             reader(self, line)

@@ -107,9 +107,9 @@ def test_arithmetic_has_a_limit_that_can_be_raised() -> None:
 # Text -> words of the refusal, or None where it is read.
 LARGE: dict[str, tuple[Callable[[], str], str | None]] = {
     "parameters": (lambda: numbered(".param p#=1\n", 300_000), "more than 100000 parameters, models and sub"),
-    "parameters on a line": (lambda: ".param " + many("x#=1", 50_000) + "\n", None),
+    "parameters on a line": (lambda: ".param " + many("x#=1", 20_000) + "\n", None),
     "parameters twice on a line": (
-        lambda: ".param " + f"{many('x#=1', 40_000)} {many('x#=2', 40_000)}\n",
+        lambda: ".param " + f"{many('x#=1', 20_000)} {many('x#=2', 20_000)}\n",
         None,
     ),
     "functions beside functions": (
@@ -155,20 +155,20 @@ LARGE: dict[str, tuple[Callable[[], str], str | None]] = {
         lambda: numbered(".subckt s# a\n.ends\n", 3_000) + numbered("X# in 0 nope#\n", 5_000),
         "no subcircuit 'nope0'",
     ),
-    "unknown cards": (lambda: ".foo\n" * 30_000, "'.foo' is not read"),
+    "unknown cards": (lambda: ".foo\n" * 15_000, "'.foo' is not read"),
     "couplings of nothing": (lambda: numbered("K# La# Lb# 0.5\n", 10_000), "K0 couples 'La0'"),
-    "names twice": (lambda: "R1 in 0 1k\n" * 30_000, "two parts called 'R1'"),
+    "names twice": (lambda: "R1 in 0 1k\n" * 15_000, "two parts called 'R1'"),
     "overrides of nothing": (
-        lambda: ".subckt s a b\nR1 a b 1\n.ends\nX1 in 0 s " + many("x#=1", 50_000) + "\n",
+        lambda: ".subckt s a b\nR1 a b 1\n.ends\nX1 in 0 s " + many("x#=1", 20_000) + "\n",
         None,
     ),
-    "options": (lambda: ".options " + many("o#=1", 50_000) + "\n", None),
-    "starts of nothing": (lambda: ".ic " + many("v(n#)=1", 30_000) + "\n", None),
+    "options": (lambda: ".options " + many("o#=1", 20_000) + "\n", None),
+    "starts of nothing": (lambda: ".ic " + many("v(n#)=1", 15_000) + "\n", None),
     "ports": (
-        lambda: ".subckt s " + many("n#", 50_000) + "\nR1 n1 n2 1\n.ends\nX1 " + many("n#", 50_000) + " s\n",
+        lambda: ".subckt s " + many("n#", 20_000) + "\nR1 n1 n2 1\n.ends\nX1 " + many("n#", 20_000) + " s\n",
         None,
     ),
-    "globals": (lambda: ".global " + many("n#", 50_000) + "\n", None),
+    "globals": (lambda: ".global " + many("n#", 20_000) + "\n", None),
     "braces": (lambda: "R1 in 0 " + "{" * 200_000 + "\n", "never closed"),
     "pairs of braces": (lambda: "R1 in 0 {" + "{}" * 300_000 + "\n", "never closed"),
     "braces on a card": (lambda: ".ac {" + "{}" * 300_000 + "\n", ".ac cannot be read|is empty"),
@@ -184,16 +184,16 @@ LARGE: dict[str, tuple[Callable[[], str], str | None]] = {
     "names of .include": (lambda: ".include " + "a " * 300_000 + "\n", "names no single file"),
     "commands": (lambda: ".control\n" + "run\n" * 100_000 + ".endc\n", None),
     "commands never closed": (lambda: ".control\n" * 100_000, None),
-    "hidden commands": (lambda: "*#x\n" * 30_000, None),
-    "ends of nothing": (lambda: ".ends\n" * 30_000, ".ends closes nothing"),
-    "subcircuits never closed": (lambda: ".subckt a b\n" * 30_000, "never closed|more than 40 deep"),
-    "conditions": (lambda: ".if (1)\n" * 30_000, "'.if' is not read"),
+    "hidden commands": (lambda: "*#x\n" * 15_000, None),
+    "ends of nothing": (lambda: ".ends\n" * 15_000, ".ends closes nothing"),
+    "subcircuits never closed": (lambda: ".subckt a b\n" * 15_000, "never closed|more than 40 deep"),
+    "conditions": (lambda: ".if (1)\n" * 15_000, "'.if' is not read"),
     "codes to silence": (lambda: "* rcnet: silence " + "a " * 100_000 + "\n", None),
-    "points": (lambda: "V2 x 0 PWL(" + many("# {1}", 30_000) + ")\n", None),
+    "points": (lambda: "V2 x 0 PWL(" + many("# {1}", 15_000) + ")\n", None),
     "continuations": (lambda: "R1 in 0\n" + "+\n" * 300_000 + "+1k\n", None),
-    "continuations of nothing": (lambda: "R1 a b 1k\n+" * 30_000, "behind the value"),
+    "continuations of nothing": (lambda: "R1 a b 1k\n+" * 15_000, "behind the value"),
     "measures": (lambda: ".ac dec 1 1 10\n" + numbered(".meas ac m# max vdb(in)\n", 10_000), None),
-    "voltages printed": (lambda: ".print ac " + "v(in) " * 30_000 + "\n", None),
+    "voltages printed": (lambda: ".print ac " + "v(in) " * 15_000 + "\n", None),
 }
 
 

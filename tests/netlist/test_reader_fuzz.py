@@ -23,7 +23,7 @@ from rcnet.errors import RcnetError
 from rcnet.netlist import Limits, Reading, parse_netlist, write
 
 # What a test may spend on the search for new lines; more where somebody sets it.
-SECONDS = float(os.environ.get("RCNET_FUZZ_SECONDS", "12"))
+SECONDS = float(os.environ.get("RCNET_FUZZ_SECONDS", "8"))
 LONGEST = 2.0  # seconds for one netlist
 SMALL = Limits(parts=2_000, depth=8, files=8, nesting=4, parameters=300, steps=200_000, line=20_000)
 READING = Reading(limits=SMALL)
@@ -207,7 +207,7 @@ def subcircuits() -> st.SearchStrategy[str]:
 NETLISTS = st.lists(statements() | cards() | subcircuits(), max_size=14).map(
     lambda lines: "* gauge\nV1 in 0 AC 1\nR1 in out 1k\n" + "\n".join(lines) + "\n.end\n"
 )
-SLOW = settings(deadline=None, max_examples=250, suppress_health_check=list(HealthCheck))
+SLOW = settings(deadline=None, max_examples=150, suppress_health_check=list(HealthCheck))
 
 
 @SLOW
