@@ -601,7 +601,7 @@ def _check_value(kind: Kind, name: str, value: float) -> None:
 def _many_values(
     letters: str, names: list[str], a: list[str], b: list[str], values: npt.ArrayLike
 ) -> npt.NDArray[np.float64]:
-    """The values of many resistors and capacitors as an array, once names and values are known to be right."""
+    """The values of many resistors and capacitors as an array, names and values known to be right."""
     try:
         numbers = np.asarray(values, dtype=np.float64)
     except (TypeError, ValueError) as exc:
