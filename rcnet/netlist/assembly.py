@@ -517,6 +517,8 @@ class Instance:
         ngspice 39 computes it inside, with whatever is known there by then (measured).
         """
         for key, text in call.given:
+            if key != "m" and key not in inside.scope.defaults and key not in inside.scope.parameters:
+                continue  # nobody asks for it
             for name in sorted(self.environment.needed(text)) if not text.isdigit() else ():
                 if name == key or not (name in inside.scope.defaults or name in inside.scope.parameters):
                     continue
@@ -570,6 +572,10 @@ class Instance:
     def evaluate(self, text: str) -> Known:
         """The value of an expression."""
         return self.environment.evaluate(text)
+
+    def is_warm(self, of: set[Depended]) -> bool:
+        """True if one of these depends on the temperature."""
+        return not self.environment.shared.warm.isdisjoint(of)
 
     def is_parameter(self, name: str) -> bool:
         """True if a bare name is a parameter here."""

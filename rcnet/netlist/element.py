@@ -80,6 +80,10 @@ class Site(Protocol):
         """The value of an expression."""
         ...
 
+    def is_warm(self, of: set[Depended]) -> bool:
+        """True if one of these depends on the temperature."""
+        ...
+
     def is_parameter(self, name: str) -> bool:
         """True if a bare name is a parameter."""
         ...
@@ -235,6 +239,8 @@ def _valued(line: _Line, site: Site) -> Element:
     model, text = _model_and_value(line, site)
     settings = _Settings(line, site, model)
     base = settings.from_model() if text is None else _written_value(line, text, site)
+    if text is not None and site.is_warm(line.of):
+        _require_cold(line, model, settings)
     if line.letter == "R" and base == 0:
         base = _least_resistance(line, site)
     value = _at_temperature(line, base, settings) if line.letter in "RCL" else base
@@ -247,6 +253,19 @@ def _valued(line: _Line, site: Site) -> Element:
     line.numbers[:] = [number for number in line.numbers if number != text]
     multiplied = (factor is not None and factor != 1) or site.multiplier is not None
     return Element(part, frozenset(line.of) or NOTHING, shown, line.numbers, start, multiplied)
+
+
+def _require_cold(line: _Line, model: Model | None, settings: _Settings) -> None:
+    """Refuse what ngspice 39 forgets about a part with `temper` in its value, a source inside (measured)."""
+    forgotten = "it has no current in ac" if line.letter == "C" else ""
+    if line.letter in "RL" and (model is not None or "scale" in settings.unread):
+        forgotten = "its model and scale= do not count"
+    if forgotten:
+        raise CircuitError(
+            f"{line.name} has temper in its value; in ngspice 39 {forgotten}, without a word.",
+            remedy="Give it tc1 and tc2 instead.",
+            code="unreadable",
+        )
 
 
 def _least_resistance(line: _Line, site: Site) -> float:

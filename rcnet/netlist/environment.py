@@ -16,6 +16,7 @@ from .words import bare
 
 Source = str | int  # the name of a top-level parameter, or the number of a joint
 NOTHING: frozenset[Source] = frozenset()
+TEMPERATURE = "temper"
 
 
 @dataclass(frozen=True, slots=True)
@@ -44,6 +45,7 @@ class Shared:
     parsed: dict[str, NetlistExpression] = field(default_factory=dict)
     uses: dict[Source, frozenset[Source]] = field(default_factory=dict)
     joints: dict[frozenset[Source], frozenset[Source]] = field(default_factory=dict)
+    warm: set[Source] = field(default_factory=lambda: {TEMPERATURE})  # what depends on the temperature
 
     def parse(self, text: str) -> NetlistExpression:
         """An expression with or without its braces, read once."""
@@ -72,6 +74,12 @@ class Shared:
 
         return next(iter(get_close_matches(word, list(islice(known, 2000)), 1)), None)
 
+    def note(self, source: Source, of: frozenset[Source]) -> None:
+        """Keep what a source depends on."""
+        self.uses[source] = of
+        if not self.warm.isdisjoint(of):
+            self.warm.add(source)
+
     def joined(self, of: frozenset[Source]) -> frozenset[Source]:
         """What a number depends on, several sources made one joint so that such sets stay small."""
         if len(of) <= 3:
@@ -79,7 +87,7 @@ class Shared:
         found = self.joints.get(of)
         if found is None:
             joint = len(self.joints)
-            self.uses[joint] = of
+            self.note(joint, of)
             found = self.joints[of] = frozenset([joint])
         return found
 
@@ -131,8 +139,8 @@ class Environment:
 
     def known(self, name: str) -> Known:
         """What a name (lower case) means here."""
-        if name == "temper":
-            return Known(self.shared.temperature)
+        if name == TEMPERATURE:
+            return Known(self.shared.temperature, frozenset([TEMPERATURE]))
         owner = self._owner(name)
         if owner is None:
             raise CircuitError(
@@ -253,7 +261,7 @@ class Environment:
             raise QuantityError(f"parameter {name}: {exc.message}", remedy=exc.remedy) from exc
         if self.outer is not None:
             return known
-        self.shared.uses[name] = known.of
+        self.shared.note(name, known.of)
         return Known(known.value, frozenset([name]))
 
     def _nearest(self, name: str) -> str:

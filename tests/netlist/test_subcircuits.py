@@ -248,6 +248,15 @@ def test_the_same_number_by_either_name_is_read(tmp_path: Path) -> None:
     both(tmp_path, V + body + AC).require_same()
 
 
+@pytest.mark.ngspice
+def test_an_override_that_nobody_asks_for_misleads_nobody(tmp_path: Path) -> None:
+    """Whatever it is made of, it is only noticed."""
+    body = ".subckt s a b r=1k\nR1 a b {r}\n.ends\n.param r=3k\nX1 out 0 s rr={r}\n"
+    pair = both(tmp_path, V + body + AC)
+    pair.require_same()
+    assert pair.seen == ["unknown-override"]
+
+
 # ---------------------------------------------------------------------- defined twice
 
 
