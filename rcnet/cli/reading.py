@@ -45,7 +45,7 @@ _OPTIONS = (
         metavar="NAME=NUMBER",
         expose_value=False,
         callback=_keep,
-        help="Raise a limit of reading netlists: parts, depth, files, nesting, bytes, line, parameters, steps.",
+        help="Raise a limit of reading: parts, depth, files, nesting, bytes, line, parameters, steps.",
     ),
 )
 
