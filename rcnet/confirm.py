@@ -8,7 +8,7 @@ from pathlib import Path
 
 from .check import Check, check
 from .circuit import Circuit
-from .compare import compare
+from .compare import Grant, compare
 from .confirmation import Confirmation
 from .curves import Curves, write_csv
 from .handover import sealed_netlist, with_analyses
@@ -37,9 +37,11 @@ def confirm(
     timeout: float = 60.0,
     anyway: bool = False,
     runner: LibraryRunner | None = None,
+    grant: Grant | None = None,
 ) -> Confirmation:
     """Check a circuit, write its netlist, get a second opinion, compare; keep the files in `folder`.
 
+    grant: how far the second opinion may lie off beyond what is predicted
     Files of an earlier run that this one does not write again are removed, so that a folder never tells two
     stories. Raises RcnetError: UnsolvableError, SimulatorError (netlist and log are kept), OutputError.
     """
@@ -53,7 +55,14 @@ def confirm(
         if opinion is not None:
             from .report.document import comparison_document, to_json
 
-            comparison = compare(whole, opinion.curves, written.names, opinion.who, may_be_empty=True)
+            comparison = compare(
+                whole,
+                opinion.curves,
+                written.names,
+                opinion.who,
+                may_be_empty=True,
+                grant=grant or Grant(),
+            )
             kept.keep("comparison.json", to_json(comparison_document(comparison)))
         return Confirmation(done, written, opinion, comparison, kept.path, tuple(kept.names))
 

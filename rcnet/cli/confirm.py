@@ -10,6 +10,7 @@ from typing import Any
 import click
 
 from ..errors import RcnetError
+from .granting import asked_grant, granting_options
 from .options import (
     FAILED,
     IMPOSSIBLE,
@@ -42,6 +43,7 @@ from .reading import load_asked, reading_options
 @files_argument
 @json_option
 @reading_options
+@granting_options
 @quiet_option
 @strict_option
 @silence_option
@@ -61,6 +63,7 @@ def command(files: tuple[str, ...], as_json: bool, quiet: bool, strict: bool, ou
     from ..report.document import confirmation_document
     from ..report.terminal import console, show_confirmation, show_total
 
+    ask["grant"] = asked_grant()
     documents: list[Any] = []
     words: list[str] = []
     code = OK

@@ -51,17 +51,7 @@ def rounding_allowance(
     """
     eqs = nodal.equations(network, plain=True)
     picks = np.unique(np.linspace(0, len(s) - 1, min(len(s), MOST_POINTS)).astype(int))
-    some = s[picks]
-    answer = _unknowns_at(network, eqs, some, drive)
-    sizes = _Sizes(eqs, some[0], tied=_ties_nodes(network))
-    loads = np.empty((eqs.size, len(some)))
-    floor = np.empty((len(unknowns), len(some)))
-    for number, point in enumerate(some):
-        own = np.abs(answer[:, number])
-        loads[:, number] = sizes.load(point, own)
-        floor[:, number] = FLOOR * sizes.greatest(point, own)[list(unknowns)]
-    bound = (_dense if eqs.size <= DENSE_LIMIT else _sparse)(eqs, some, loads, unknowns)
-    bound = CONSTANT * UNIT_ROUNDOFF * bound + floor
+    bound = rounding_of(network, s[picks], _unknowns_at(network, eqs, s[picks], drive), unknowns)
     if len(picks) == len(s):
         return bound
     # Between two computed points the larger neighbour, doubled, stands for both.
@@ -70,7 +60,53 @@ def rounding_allowance(
     return np.asarray(2 * np.maximum(bound[:, left], bound[:, right]))
 
 
-def _ties_nodes(network: Network) -> bool:
+def rounding_of(
+    network: Network, s: Numbers, answer: Numbers, unknowns: Sequence[int], *, good_pivots: bool = False
+) -> Float:
+    """The same bound where the answer is known, or how great each unknown may be: (unknowns, points).
+
+    answer: (all unknowns, points), nodes first, then the currents of parts that have one
+    good_pivots: take the simulator's pivots for good whatever ties nodes together
+    """
+    eqs = nodal.equations(network, plain=True)
+    sizes = _Sizes(eqs, s[0], tied=not good_pivots and ties_nodes(network))
+    loads = np.empty((eqs.size, len(s)))
+    floor = np.empty((len(unknowns), len(s)))
+    for number, point in enumerate(s):
+        own = np.abs(answer[:, number])
+        loads[:, number] = sizes.load(point, own)
+        floor[:, number] = FLOOR * sizes.greatest(point, own)[list(unknowns)]
+    bound = (_dense if eqs.size <= DENSE_LIMIT else _sparse)(eqs, s, loads, unknowns)
+    return np.asarray(CONSTANT * UNIT_ROUNDOFF * bound + floor)
+
+
+def influence_rounding(network: Network, s: Numbers, of: tuple[int, int]) -> Float:
+    """How far rounding may move what an ampere put into each node does to an output: (nodes, points), ohm.
+
+    The same bound for the transposed equations, which a simulator solves for noise; ground is row 0. For
+    networks of at most DENSE_LIMIT unknowns.
+    """
+    eqs = nodal.equations(network, plain=True)
+    constant, slope = eqs.dense(eqs.constant), eqs.dense(eqs.slope)
+    output = np.zeros(eqs.size)
+    for node, sign in zip(of, (1.0, -1.0), strict=True):
+        if node:
+            output[node - 1] += sign
+    bound = np.zeros((eqs.node_count, len(s)))
+    for number, point in enumerate(s):
+        try:
+            inverse = _inverse(constant + point * slope)
+        except np.linalg.LinAlgError:
+            bound[:, number] = np.inf
+            continue
+        found = np.abs(output @ inverse)
+        load = found @ (np.abs(constant) + abs(point) * np.abs(slope))
+        moved = CONSTANT * UNIT_ROUNDOFF * (load @ np.abs(inverse)) + FLOOR * found.max(initial=0.0)
+        bound[1:, number] = moved[: eqs.node_count - 1]
+    return bound
+
+
+def ties_nodes(network: Network) -> bool:
     """True if anything but R, C, current sources and voltage sources to ground stands in the network."""
     arrays = network.arrays()
     letters = {chr(code) for code in arrays.kinds.tolist()}

@@ -120,7 +120,8 @@ def remedy_for(line: str | None) -> str:
 
 def fault_of(plots: Sequence[Plot], expected: Expected) -> str | None:
     """Why these plots are not what was asked for, as a clause to follow `its results`; None if they are."""
-    names = [plot.name for plot in plots]
+    # Under `.options sqrnoise` ngspice 39 puts the unit behind the names of noise plots.
+    names = [plot.name.partition(" - ")[0] for plot in plots]
     allowed = [[expected.plotname]]
     if expected.plotname == NOISE_SPECTRUM:
         allowed.append([NOISE_SPECTRUM, NOISE_TOTALS])

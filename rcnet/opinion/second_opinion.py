@@ -14,6 +14,7 @@ from ..netlist.writer import AnalysisName
 from .ngspice import Expected, find_ngspice, install_hint, joined_raw, run_deck
 from .ngspice_library import LibraryRunner
 from .read_back import SOURCE, read_back
+from .sharpening import sharpened
 
 Which = Literal["auto", "ngspice", "ngspice-library", "read-back", "none"]
 CHOICES: tuple[Which, ...] = ("auto", "ngspice", "ngspice-library", "read-back", "none")
@@ -73,7 +74,7 @@ def _program(written: Written, program: str, timeout: float) -> Opinion:
     runs, log = [], []
     for name in _analyses(written):
         run = run_deck(
-            deck(written.circuit, written.names, name),
+            _deck(written, name),
             _expected(written, name),
             executable=program,
             timeout=timeout,
@@ -93,15 +94,18 @@ def _library(written: Written, timeout: float, runner: LibraryRunner | None) -> 
     answers: list[Curves] = []
     log: list[str] = []
     for name in _analyses(written):
-        curves, said = runner.run(
-            deck(written.circuit, written.names, name), _expected(written, name), timeout
-        )
+        curves, said = runner.run(_deck(written, name), _expected(written, name), timeout)
         answers.append(curves)
         log.append(f"---- {name} ----\n{said.rstrip()}\n")
     joined = Curves.joined("results.raw", answers)
     who = f"{runner.version} library"
     raw = write_raw(joined, title=written.circuit.title or written.circuit.name)
     return Opinion(who, joined, raw, "\n".join(log), time.perf_counter() - start)
+
+
+def _deck(written: Written, name: AnalysisName) -> str:
+    circuit = sharpened(written.circuit) if name == "transient" else written.circuit
+    return deck(circuit, written.names, name)
 
 
 def _analyses(written: Written) -> list[AnalysisName]:

@@ -121,7 +121,17 @@ def comparison_document(comparison: Comparison) -> dict[str, Any]:
             for curve in comparison.uncompared
         ],
         "remarks": list(comparison.remarks),
-        "causes": [],
+        "causes": [_cause(cause) for cause in comparison.causes],
+    }
+
+
+def _cause(cause: Any) -> dict[str, Any]:
+    return {
+        "kind": cause.kind,
+        "part": cause.part,
+        "factor": cause.factor,
+        "says": cause.says,
+        "explains": cause.explains,
     }
 
 
@@ -130,6 +140,7 @@ def _curve(curve: CurveComparison) -> dict[str, Any]:
     return {
         "name": curve.name,
         "analysis": curve.analysis,
+        "unit": curve.unit,
         "points": curve.points,
         "verdict": curve.verdict,
         "worst": _worst(curve.worst),
@@ -141,6 +152,7 @@ def _curve(curve: CurveComparison) -> dict[str, Any]:
                 "db": span.worst.db,
                 "deg": span.worst.deg,
                 "relative": span.worst.relative,
+                "shape": span.shape,
             }
             for span in curve.spans
         ],

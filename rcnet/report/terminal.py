@@ -21,16 +21,18 @@ if TYPE_CHECKING:
 
     from ..check import Check
     from ..circuit import Circuit
-    from ..compare import Comparison, CurveComparison, Difference
+    from ..compare import Comparison, CurveComparison, Difference, Span
     from ..confirmation import Confirmation
     from ..curves import Curve
     from ..findings import Finding
     from .envelope import Envelopes
 
 WIDTH = 80
+MOST_CAUSES = 4
 MOST_LISTED = 12  # curves or spans shown one by one; the JSON document holds them all
 # The remark about coarse curves names them and says why; the JSON document holds it, here a count is enough.
 _COARSE = "smaller differences do not count there."
+_STEPS = "the simulator's own steps hide more than 0.1 %"
 ROUNDING = 1e-9  # a difference below this share of the value is told as such; its decibels say nothing
 
 # A word always says what a colour says.
@@ -222,23 +224,48 @@ def _show_details(comparison: Comparison, out: Console) -> None:
     outputs = {f"v({','.join(comparison.circuit.output)})", *(f"v({n})" for n in comparison.circuit.output)}
     differing = [curve for curve in comparison.curves if curve.verdict == "differ"]
     differing.sort(key=lambda curve: (curve.name not in outputs, -curve.worst.relative))
-    for curve in differing[:MOST_LISTED]:
-        _show_curve(curve, out)
-    if len(differing) > MOST_LISTED:
-        _say(out, f"and {len(differing) - MOST_LISTED} more curves that differ", indent=4)
+    for analysis in dict.fromkeys(curve.analysis for curve in differing):
+        first, *others = (curve for curve in differing if curve.analysis == analysis)
+        _show_curve(first, out)
+        _show_others(others, out)
+    _show_causes(comparison, out)
     if comparison.curves and not differing:
-        worst = max(comparison.curves, key=lambda curve: curve.worst.relative)
-        amount = _amount(worst.worst)
-        _say(out, f"largest difference: {worst.name}{_where(worst)}: {amount}", indent=4, hang=2)
+        _show_largest(comparison, out)
     for why, names in _grouped(comparison).items():
         _say(out, f"not compared: {names}: {why}", indent=4, hang=2)
     for remark in comparison.remarks:
         if not remark.endswith(_COARSE):
             _say(out, f"note: {remark}", indent=4, hang=2)
-    coarse = sum(curve.coarse is not None for curve in comparison.curves)
-    if coarse:
-        total = _counted(len(comparison.curves), "curve")
-        _say(out, f"note: in {coarse} of {total} rounding hides more than 0.01 dB in places", indent=4)
+    for timed, what in ((False, "rounding hides more than 0.01 dB"), (True, _STEPS)):
+        some = [curve for curve in comparison.curves if (curve.analysis == "transient") == timed]
+        coarse = sum(curve.coarse is not None for curve in some)
+        if coarse:
+            total = _counted(len(some), "transient curve" if timed else "curve")
+            _say(out, f"note: in {coarse} of {total} {what} in places", indent=4, hang=2)
+
+
+def _show_causes(comparison: Comparison, out: Console) -> None:
+    """What would explain the differences, best first; several that explain them alike are a tie."""
+    for cause in comparison.causes[:MOST_CAUSES]:
+        share = f"{100 * max(cause.explains, 0.0):.3g} %"
+        explains = "" if cause.kind == "unexplained" else f" (explains {share} of the squared difference)"
+        _say(out, _styled(f"cause {cause.kind}", "bold"), f": {cause.says}{explains}", indent=4, hang=2)
+    if len(comparison.causes) > MOST_CAUSES:
+        _say(out, f"and {len(comparison.causes) - MOST_CAUSES} more that explain as much", indent=4)
+
+
+def _show_largest(comparison: Comparison, out: Console) -> None:
+    """The largest difference in each analysis, and what would have been allowed there."""
+    groups: dict[str, list[CurveComparison]] = {}
+    for curve in comparison.curves:
+        groups.setdefault(curve.analysis, []).append(curve)
+    for analysis, curves in groups.items():
+        worst = max(curves, key=lambda curve: curve.worst.relative)
+        if worst.worst.relative == 0 and len(groups) > 1:
+            continue
+        named = f" in {analysis}" if len(groups) > 1 else ""
+        told = f"{_amount(worst)}{_allowance(worst.worst)}"
+        _say(out, f"largest difference{named}: {worst.name}{_where(worst)}: {told}", indent=4, hang=2)
 
 
 def _grouped(comparison: Comparison) -> dict[str, str]:
@@ -256,42 +283,112 @@ def _grouped(comparison: Comparison) -> dict[str, str]:
 def _show_curve(curve: CurveComparison, out: Console) -> None:
     worst = curve.worst
     look = f"; FSV {curve.fsv.grade.lower()}" if curve.fsv is not None else ""
-    _say(out, f"{curve.name} {curve.analysis}: {_amount(worst)}{_where(curve)}{look}", indent=4, hang=2)
-    _say(out, f"exact {_value(worst.exact)}", indent=6)
-    _say(out, f"other {_value(worst.other)}", indent=6)
-    if curve.analysis == "operating point":
+    told = f"{_amount(curve)}{_where(curve)}{_allowance(worst)}{look}"
+    _say(out, f"{curve.name} {curve.analysis}: {told}", indent=4, hang=2)
+    _say(out, f"exact {_value(worst.exact, curve.unit)}", indent=6)
+    _say(out, f"other {_value(worst.other, curve.unit)}", indent=6)
+    if curve.single:
         return
     for span in curve.spans[:MOST_LISTED]:
-        low, high, at = (format_quantity(f, "Hz") for f in (span.start, span.stop, span.worst.at))
-        _say(out, f"from {low} to {high}: up to {_amount(span.worst)} at {at}", indent=6, hang=2)
+        shape = f"; {span.shape}" if span.shape else ""
+        at = _place(span.worst.at, curve)
+        told = f"up to {_amount(curve, span.worst)} at {at}{shape}"
+        _say(out, f"{_from_to(span.start, span.stop, curve)}: {told}", indent=6, hang=2)
     if len(curve.spans) > MOST_LISTED:
         _say(out, f"and {len(curve.spans) - MOST_LISTED} more spans", indent=6)
 
 
+def _show_others(curves: Sequence[CurveComparison], out: Console) -> None:
+    """Further curves of one analysis that differ, those with overlapping spans in one paragraph."""
+    groups = _overlapping(curves)
+    for start, stop, group in groups[:MOST_LISTED]:
+        worst, span = max(group, key=lambda pair: pair[1].worst.relative)
+        names = list(dict.fromkeys(curve.name for curve, _ in group))
+        listed = ", ".join(names[:6]) + (f" and {len(names) - 6} more" if len(names) > 6 else "")
+        where = "" if worst.single else f"{_from_to(start, stop, worst)} "
+        at = "" if worst.single else f" at {_place(span.worst.at, worst)}"
+        in_which = f" in {worst.name}" if len(names) > 1 else ""
+        told = f"up to {_amount(worst, span.worst)}{at}{in_which}"
+        _say(out, f"{where}also {listed} {worst.analysis}: {told}", indent=4, hang=2)
+    if len(groups) > MOST_LISTED:
+        _say(out, f"and {len(groups) - MOST_LISTED} more spans", indent=4)
+
+
+def _overlapping(
+    curves: Sequence[CurveComparison],
+) -> list[tuple[float, float, list[tuple[CurveComparison, Span]]]]:
+    """(from, to, curves with their spans there) where spans overlap, in the order of the axis."""
+    every = sorted(
+        ((span.start, span.stop, k, span) for k, curve in enumerate(curves) for span in curve.spans)
+    )
+    groups: list[tuple[float, float, list[tuple[CurveComparison, Span]]]] = []
+    for start, stop, number, span in every:
+        if groups and start <= groups[-1][1]:
+            first, last, members = groups[-1]
+            groups[-1] = (first, max(last, stop), [*members, (curves[number], span)])
+        else:
+            groups.append((start, stop, [(curves[number], span)]))
+    return groups
+
+
+def _unit_along(curve: CurveComparison) -> str:
+    return "s" if curve.analysis == "transient" else "Hz"
+
+
+def _place(at: float, curve: CurveComparison) -> str:
+    return format_quantity(at, _unit_along(curve))
+
+
+def _from_to(start: float, stop: float, curve: CurveComparison) -> str:
+    low, high = _place(start, curve), _place(stop, curve)
+    return f"from {low} to {high}" if low != high else f"near {low}"
+
+
 def _where(curve: CurveComparison) -> str:
-    return "" if curve.analysis == "operating point" else f" at {format_quantity(curve.worst.at, 'Hz')}"
+    return "" if curve.single else f" at {_place(curve.worst.at, curve)}"
 
 
-def _value(value: complex | float) -> str:
+def _value(value: complex | float, unit: str) -> str:
     if not isinstance(value, complex):
-        return f"{value:.7g}"
+        return f"{value:.7g} {unit}"
     if value == 0:
         return "0"
     angle = math.degrees(math.atan2(value.imag, value.real))
     return f"{20 * math.log10(abs(value)):10.4f} dB {angle:10.3f} deg"
 
 
-def _amount(worst: Difference) -> str:
+def _amount(curve: CurveComparison, worst: Difference | None = None) -> str:
+    """A difference with its sign: in dB and degrees, in a transient as a share of the greatest value."""
+    worst = worst or curve.worst
+    of = "the greatest" if curve.analysis == "transient" else "the value"
     if worst.relative == 0:
         return "none"
     if worst.relative < ROUNDING:
-        return f"{worst.relative:.1e} of the value (rounding)"
+        return f"{worst.relative:.1e} of {of} (rounding)"
     parts = []
     if worst.db is not None:
         parts.append(f"{worst.db:+.4g} dB")
     if worst.deg is not None:
         parts.append(f"{worst.deg:+.4g} deg")
-    return ", ".join(parts) if parts else f"{100 * worst.relative:.4g} %"
+    if parts:
+        return ", ".join(parts)
+    more = isinstance(worst.exact, complex) or abs(worst.other) >= abs(worst.exact)
+    if curve.analysis == "transient":
+        more = complex(worst.other).real >= complex(worst.exact).real
+    return f"{100 * worst.relative * (1 if more else -1):+.4g} % of {of}"
+
+
+def _allowance(worst: Difference) -> str:
+    """What was allowed there, in the same measure as the difference; nothing where that is rounding."""
+    distance = abs(worst.other - worst.exact)
+    if worst.relative < ROUNDING or not distance or not math.isfinite(worst.allowed):
+        return ""
+    share = worst.allowed * (worst.relative / distance)
+    if share < ROUNDING:
+        return f"; allowed {share:.1e}"
+    if worst.db is not None:
+        return f"; allowed {20 * math.log10(1 + share):.2g} dB"
+    return f"; allowed {100 * share:.2g} %"
 
 
 # ---------------------------------------------------------------------- confirm, simulate

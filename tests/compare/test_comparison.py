@@ -98,13 +98,15 @@ def test_a_part_off_by_a_hundredth_of_a_decibel_differs(part: str) -> None:
 
 
 def test_span_and_worst_place() -> None:
-    """A dip between two frequencies is one span with these ends, its worst place the deepest point."""
+    """A dip is one span around its points and short of its neighbours, its worst place the deepest point."""
     values = h()
     values[40:50] *= 0.99
     values[44] *= 0.5
     curve = the_one(held(ac(values)))
     (span,) = curve.spans
-    assert (span.start, span.stop, span.worst.at) == (GRID[40], GRID[49], GRID[44])
+    assert GRID[39] < span.start <= GRID[40]
+    assert GRID[49] <= span.stop < GRID[50]
+    assert span.worst.at == GRID[44]
     assert span.worst.db == pytest.approx(20 * math.log10(0.495), rel=1e-9)
     assert span.worst.relative == pytest.approx(1 - 0.495, rel=1e-9)
     assert curve.worst == span.worst
@@ -115,7 +117,9 @@ def test_several_spans() -> None:
     values = h()
     values[[3, 4, 80]] *= [1.01, 1.01, 1.1]
     curve = the_one(held(ac(values)))
-    assert [(span.start, span.stop) for span in curve.spans] == [(GRID[3], GRID[4]), (GRID[80], GRID[80])]
+    for span, first, last in zip(curve.spans, (3, 80), (4, 80), strict=True):
+        assert GRID[first - 1] < span.start <= GRID[first]
+        assert GRID[last] <= span.stop < GRID[last + 1]
     assert curve.worst.at == GRID[80]
 
 
@@ -237,26 +241,28 @@ def test_a_trace_without_a_name_is_the_outputs() -> None:
     assert found.verdict == "differ"
 
 
-def test_results_not_compared_yet_may_be_all_there_is() -> None:
-    """The main job lists transients and noise as not compared where a circuit asks for nothing else."""
-    slow = Curve("v(out)", "transient", np.array([0.0, 1e-3]), np.array([0.0, 1.0]), "V")
-    found = compare(circuit(), Curves("results.raw", (slow,)), may_be_empty=True)
+def test_results_that_are_not_compared_may_be_all_there_is() -> None:
+    """The main job lists what is not compared where a circuit asks for nothing else."""
+    other = Curve("v(out)", "other", np.array([0.0, 1e-3]), np.array([0.0, 1.0]), "V")
+    found = compare(circuit(), Curves("results.raw", (other,)), may_be_empty=True)
     assert (found.verdict, found.curves) == ("agree", ())
     assert [left.name for left in found.uncompared] == ["v(out)"]
 
 
 def test_what_cannot_be_compared_is_told() -> None:
     """Curves of other kinds, and of nodes there are none of, are listed with the reason and spoil nothing."""
-    slow = Curve("v(out)", "transient", np.array([0.0, 1e-3]), np.array([0.0, 1.0]), "V")
-    loud = Curve("onoise_spectrum", "noise", GRID, np.abs(h()), "V/sqrt(Hz)")
-    found = held(ac(h()), ac(h(), "v(elsewhere)"), ac(h(), "i(r1)"), ac(h(), "power"), slow, loud)
+    early = Curve("v(out)", "transient", np.array([-1e-3, 1e-3]), np.array([0.0, 1.0]), "V")
+    loud = Curve("onoise_r9", "noise", GRID, np.abs(h()), "V/sqrt(Hz)")
+    sweep = Curve("v(out)", "other", np.array([0.0, 1.0]), np.array([0.0, 1.0]), "V")
+    found = held(ac(h()), ac(h(), "v(elsewhere)"), ac(h(), "i(r1)"), ac(h(), "power"), early, loud, sweep)
     assert found.verdict == "agree"
     why = {curve.name + " " + curve.analysis: curve.why for curve in found.uncompared}
     assert "no node 'elsewhere'" in why["v(elsewhere) ac"]
     assert "no source 'r1'" in why["i(r1) ac"]
     assert "only voltages" in why["power ac"]
-    assert "transients" in why["v(out) transient"]
-    assert "noise" in why["onoise_spectrum noise"]
+    assert "time begins below zero" in why["v(out) transient"]
+    assert "of noise the spectra" in why["onoise_r9 noise"]
+    assert "kind of plot" in why["v(out) other"]
 
 
 # ---------------------------------------------------------------------- operating points
@@ -372,12 +378,12 @@ def test_results_without_the_output() -> None:
         held(ac(np.ones(101), "v(in)"), point(2.5))
 
 
-def test_only_a_transient() -> None:
-    """Results of a transient alone cannot be compared yet, and that is said."""
-    slow = Curve("v(out)", "transient", np.array([0.0, 1e-3]), np.array([0.0, 1.0]), "V")
-    with pytest.raises(ResultsError, match="neither an ac analysis nor an operating point"):
-        held(slow)
-    with pytest.raises(ResultsError, match="neither an ac analysis nor an operating point"):
+def test_nothing_that_is_compared() -> None:
+    """Results of a sweep alone, or none at all, cannot be compared, and that is said."""
+    sweep = Curve("v(out)", "other", np.array([0.0, 1.0]), np.array([0.0, 1.0]), "V")
+    with pytest.raises(ResultsError, match="no analysis that is compared"):
+        held(sweep)
+    with pytest.raises(ResultsError, match="no analysis that is compared"):
         compare(circuit(), Curves("empty.raw", ()))
 
 
@@ -390,7 +396,12 @@ REQUIRED = {
     "span": {"from", "to", "worst_at", "db", "deg", "relative"},
     "fsv": {"adm", "fdm", "gdm", "grade"},
 }
-ADDED = {"document": {"not_compared", "remarks"}, "worst": {"allowed"}}
+ADDED = {
+    "document": {"not_compared", "remarks"},
+    "curve": {"unit"},
+    "worst": {"allowed"},
+    "span": {"shape"},
+}
 
 
 def keys(what: str, table: dict[str, Any]) -> None:
@@ -408,14 +419,18 @@ def test_document() -> None:
     document = json.loads(text, parse_constant=lambda word: pytest.fail(f"{word} is no JSON"))
     keys("document", document)
     assert (document["circuit"], document["second_opinion"]) == ("float-gauge", "bench.raw")
-    assert (document["verdict"], document["causes"]) == ("differ", [])
+    assert document["verdict"] == "differ"
+    # One point gone and a hundredth missing over a stretch: no one change of the circuit does that.
+    assert [cause["kind"] for cause in document["causes"]] == ["unexplained"]
+    assert set(document["causes"][0]) == {"kind", "part", "factor", "says", "explains"}
     curve, at_dc = document["curves"]
     for table in (curve, at_dc):
         keys("curve", table)
         keys("worst", table["worst"])
     assert (curve["name"], curve["analysis"], curve["points"]) == ("v(out)", "ac", 101)
     keys("fsv", _fsv_of(h() * 1.01))
-    assert [span["from"] for span in curve["spans"]] == [GRID[7], GRID[40]]
+    assert curve["spans"][0]["worst_at"] == GRID[7]
+    assert GRID[39] < curve["spans"][1]["from"] <= GRID[40]
     for span in curve["spans"]:
         keys("span", span)
     worst = curve["worst"]
