@@ -3,12 +3,19 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from .granting import asked_grant, granting_options
 from .options import FAILED, OK, examples, file_argument, json_option, print_json, quiet_option, spare
 from .reading import load_asked, reading_options
+
+if TYPE_CHECKING:
+    from ..compare import Comparison
+    from ..report.comparison_picture import Kind
+
+_PICTURES: dict[str, Kind] = {".png": "png", ".svg": "svg", ".pdf": "pdf"}
 
 
 @click.command(
@@ -23,7 +30,12 @@ from .reading import load_asked, reading_options
 @reading_options
 @granting_options
 @quiet_option
-@click.option("-o", "--output", type=click.Path(), help="Write the comparison there as JSON.")
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(),
+    help="Write the comparison there as JSON; to a name in .png, .svg or .pdf, a picture of it.",
+)
 def command(file: str, results: str, as_json: bool, quiet: bool, output: str | None) -> int:
     """Hold a results file (.raw, .csv) against the exact curves.
 
@@ -32,18 +44,28 @@ def command(file: str, results: str, as_json: bool, quiet: bool, output: str | N
     """
     from ..compare import compare
     from ..curves import read_results
-    from ..report.document import comparison_document, to_json
+    from ..report.document import comparison_document
     from ..report.terminal import console, show_comparison
     from ..system.files import write_file
 
     spare(output, file, results)
     grant = asked_grant()
     comparison = compare(load_asked(file), read_results(results), who=Path(results).name, grant=grant)
-    document = comparison_document(comparison)
     if output is not None:
-        write_file(output, to_json(document))
+        write_file(output, _written(comparison, output))
     if as_json:
-        print_json(document)
+        print_json(comparison_document(comparison))
     else:
         show_comparison(comparison, console(), quiet=quiet)
     return OK if comparison.verdict == "agree" else FAILED
+
+
+def _written(comparison: Comparison, output: str) -> str | bytes:
+    """What goes into a file of that name: a picture or a JSON document."""
+    from ..report.comparison_picture import comparison_picture
+    from ..report.document import comparison_document, to_json
+
+    kind = _PICTURES.get(Path(output).suffix.lower())
+    if kind is None:
+        return to_json(comparison_document(comparison))
+    return comparison_picture(comparison, kind)
