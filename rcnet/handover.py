@@ -244,6 +244,9 @@ def findings_told(done: Check) -> list[str]:
     severities = [finding.severity for finding in done.findings]
     counted = ", ".join(_counted(severities.count(word), word) for word in ("error", "warning", "note"))
     lines.append(f"checked: {counted}")
+    if done.silenced:  # whoever is handed the netlist should know what was not told
+        codes = ", ".join(sorted({finding.code for finding in done.silenced}))
+        lines.append(f"silenced: {_counted(len(done.silenced), 'finding')} ({codes})")
     if done.claims:
         verdicts = [result.verdict for result in done.claims]
         hold, fail, open_ = (verdicts.count(word) for word in ("holds", "fails", "undecided"))

@@ -349,3 +349,11 @@ def test_a_netlist_with_errors_leaves_no_file(tmp_path: Path) -> None:
     assert write_netlist(bad_network(), path, anyway=True).seal
     with pytest.raises(OutputError):
         write_netlist(low_pass(), tmp_path / "none" / "x.cir")
+
+
+def test_the_seal_tells_what_was_silenced() -> None:
+    """Whoever is handed the netlist learns which findings were not told, and how many."""
+    text = "* t\n* rcnet: silence odd-number\nV1 in 0 AC 1\nR1 in out 1M\nC1 out 0 1u\n.ac dec 10 1 1k\n"
+    sealed = sealed_netlist(parse_netlist(text, "gauge.cir")).text
+    assert "*   silenced: 1 finding (odd-number)\n" in sealed
+    assert "silenced" not in sealed_netlist(parse_netlist(text.replace("1M", "1Meg"), "gauge.cir")).text
