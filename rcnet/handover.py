@@ -211,6 +211,10 @@ def header(circuit: Circuit, written: Written) -> list[str]:
     # The file's own name: the folder it lies in is nobody else's business.
     origin = Path(circuit.file).name if circuit.file else "a network built in Python"
     lines = [f"Netlist written by rcnet {package_version()} from {origin}."]
+    if circuit.left_out:
+        named = ", ".join(left.name for left in circuit.left_out[:20])
+        more = f" and {len(circuit.left_out) - 20} more" if len(circuit.left_out) > 20 else ""
+        lines.append(f"Only the linear part of it; left out as not linear: {named}{more}.")
     if circuit.analyses.chosen:
         lines.append("The circuit asks for no analysis; those below were chosen by rcnet.")
     held, names = written.circuit.network.sources, written.names.parts

@@ -26,7 +26,7 @@ from rcnet.circuit import (
 )
 from rcnet.errors import CircuitError, OutputError
 from rcnet.handover import sealed_netlist, with_analyses
-from rcnet.netlist import parse_netlist, read_netlist, writer
+from rcnet.netlist import Reading, parse_netlist, read_netlist, writer
 
 
 def low_pass(r: float = 1e3, c: float = 1e-6, **drive: object) -> Network:
@@ -357,3 +357,10 @@ def test_the_seal_tells_what_was_silenced() -> None:
     sealed = sealed_netlist(parse_netlist(text, "gauge.cir")).text
     assert "*   silenced: 1 finding (odd-number)\n" in sealed
     assert "silenced" not in sealed_netlist(parse_netlist(text.replace("1M", "1Meg"), "gauge.cir")).text
+
+
+def test_a_netlist_of_the_linear_part_says_so() -> None:
+    """The header names what was left out, so that nobody takes the rest for the whole."""
+    text = "* clamp\nV1 in 0 AC 1\nR1 in out 1k\nC1 out 0 1u\nD1 out 0 dm\n.ac dec 10 1 1k\n"
+    sealed = sealed_netlist(parse_netlist(text, "gauge.cir", Reading(linear_part=True))).text
+    assert "* Only the linear part of it; left out as not linear: D1.\n" in sealed

@@ -171,6 +171,8 @@ def _summary(check: Check) -> str:
         details.append(", ".join(named))
     if check.silenced:
         details.append(f"{len(check.silenced)} silenced")
+    if check.circuit.left_out:
+        details.append(f"linear part, {_counted(len(check.circuit.left_out), 'part')} left out")
     return "; ".join(details)
 
 
@@ -407,6 +409,7 @@ def show_confirmation(done: Confirmation, out: Console, *, strict: bool = False,
     _headline(done.check.circuit.name, [verdict], "; ".join(details), out, quiet=quiet)
     if quiet:
         return
+    show_left_out(done.check.circuit, out)
     show_findings(done.check.findings, out)
     show_claims(done.check.claims, out, _say)
     if done.comparison is not None:
