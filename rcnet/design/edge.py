@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from .ladder import Ladder
+from .ladder import Ladder, OfLadder
 from .limits import least_sum, sum_of_modes
 from .stock import Stock
 from .target import Target
@@ -22,7 +22,7 @@ _SECANTS = 4
 
 
 @dataclass(frozen=True)
-class Edge:
+class Edge(OfLadder):
     """The question for one number of sections.
 
     omega: rad/s, where power is to be down by `level` at nominal values
@@ -41,24 +41,6 @@ class Edge:
     stop: tuple[float, float] | None = None
     least_gain: float = 0.0
     cost: float = 1.0
-
-    @property
-    def sections(self) -> int:
-        """Of the ladder."""
-        return self.ladder.sections
-
-    @property
-    def rising(self) -> bool:
-        """The time constants of a low-pass grow with each part, the rates of a high-pass fall."""
-        return self.ladder.low
-
-    def weights(self, r: Float) -> Float:
-        """See Ladder."""
-        return self.ladder.weights(r)
-
-    def columns(self, c: Float) -> Float:
-        """See Ladder."""
-        return self.ladder.columns(c)
 
     @property
     def sums(self) -> tuple[float, float]:

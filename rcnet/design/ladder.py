@@ -127,3 +127,27 @@ class Ladder:
 
 
 __all__ = ["Ladder"]
+
+
+class OfLadder:
+    """What every question about a ladder takes from it."""
+
+    ladder: Ladder
+
+    @property
+    def sections(self) -> int:
+        """Of the ladder."""
+        return self.ladder.sections
+
+    @property
+    def rising(self) -> bool:
+        """The time constants of a low-pass grow with each part, the rates of a high-pass fall."""
+        return self.ladder.low
+
+    def weights(self, r: Float) -> Float:
+        """See Ladder."""
+        return self.ladder.weights(r)
+
+    def columns(self, c: Float) -> Float:
+        """See Ladder."""
+        return self.ladder.columns(c)

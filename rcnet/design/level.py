@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from .ladder import Ladder
+from .ladder import Ladder, OfLadder
 from .stock import Stock
 from .target import Target
 
@@ -25,7 +25,7 @@ def band_of(target: Target) -> float:
 
 
 @dataclass(frozen=True)
-class Level:
+class Level(OfLadder):
     """The question for one number of sections.
 
     The wave runs from 0 to the supply, half the time each: at that duty a ladder's ripple is greatest, as is
@@ -44,24 +44,6 @@ class Level:
     def cost(self) -> float:
         """Several last resistors come into question, and each takes its modes."""
         return 4 * len(self.resistors) / max(math.log(self.resistors.range), 1.0)
-
-    @property
-    def sections(self) -> int:
-        """Of the ladder."""
-        return self.ladder.sections
-
-    @property
-    def rising(self) -> bool:
-        """The time constants of a low-pass grow with each part, the rates of a high-pass fall."""
-        return self.ladder.low
-
-    def weights(self, r: Float) -> Float:
-        """See Ladder."""
-        return self.ladder.weights(r)
-
-    def columns(self, c: Float) -> Float:
-        """See Ladder."""
-        return self.ladder.columns(c)
 
     @property
     def sums(self) -> tuple[float, float]:

@@ -19,10 +19,11 @@ from .runs import Run, lines_and_runs
 KEPT_PROBLEMS = 1000  # of more than these only the number is kept
 # ngspice 39 obeys these even in the line that is the title.
 _COMMAND_TITLE = re.compile(r"\s*(\*#|\*ng_script|\.control|\.inc|\.lib)", re.IGNORECASE)
-# Commands that reach beyond the simulation: other programs, other files, native code.
+# Commands of ngspice that reach beyond the simulation: other programs (`jobs` and the two that end in spice
+# start simulators elsewhere), other files, native code. See its manual, "Interactive Interpreter".
 _REACHING = re.compile(
     r"^\s*(?:\*#\s*)?(?:shell|system|codemodel|pre_\w+|use|cd|chdir|source|load|write\w*|wr\w+|hardcopy|snsave|snload|"
-    r"set\s+\w*(?:path|dir|shell|unixcom|editor)\w*|osdi|edit|alias|aspice|rspice|jobs)\b"
+    r"set\s+\w*(?:path|dir|shell|unixcom|editor)\w*|osdi|edit|alias|[ar]spice|jobs)\b"
     r"|^\s*!|[>`|]",
     re.IGNORECASE,
 )
